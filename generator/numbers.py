@@ -111,17 +111,27 @@ def exact_places(value: Fraction) -> int | None:
 def percent_shares(shares: Mapping[str, Fraction], places: int) -> dict[str, Fraction]:
     """Percent values of ``shares``, rounded to ``places`` decimals so that they sum to exactly 100.
 
-    Largest remainder (Hamilton's method); of equal remainders the earlier share is raised.  No value
-    is further than one unit of its last place from the exact percentage.  All zero stays all zero;
-    ValueError for a negative share.
+    Shares that don't sum to 1 exactly (floats once) are taken in proportion; see :func:`apportioned`.
+    """
+    return apportioned(shares, Fraction(100), places)
+
+
+def apportioned(shares: Mapping[str, Fraction], total: Fraction, places: int) -> dict[str, Fraction]:
+    """``total`` divided in proportion to ``shares``, each part rounded, their sum exact.
+
+    Largest remainder (Hamilton's method); of equal remainders the earlier share is raised.  No part
+    is further than one unit of its last place from the exact one.  All zero stays all zero.  ``total``
+    must itself have no more than ``places`` decimals, and no share be negative: else ValueError.
     """
     if any(share < 0 for share in shares.values()):
         raise ValueError("a share is negative")
-    total = sum(shares.values(), Fraction(0))
-    if total == 0:
+    if (total * 10**places).denominator != 1:
+        raise ValueError(f"the total {total} has more than {places} decimals")
+    whole = sum(shares.values(), Fraction(0))
+    if whole == 0:
         return dict.fromkeys(shares, Fraction(0))
-    units = 100 * 10**places
-    wanted = {name: share * units / total for name, share in shares.items()}
+    units = int(total * 10**places)
+    wanted = {name: share * units / whole for name, share in shares.items()}
     printed = {name: int(amount) for name, amount in wanted.items()}
     by_remainder = sorted(wanted, key=lambda name: printed[name] - wanted[name])
     for name in by_remainder[: units - sum(printed.values())]:

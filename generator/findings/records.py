@@ -1,7 +1,7 @@
 """The nouns of the answers.  A Campaign goes in, Findings come out; pages and history read these.
 
 Numbers are floats, correctly rounded from the exact values; what is published as proof is exact
-(``Fraction``).  ``results.to_json`` and ``results.from_json`` carry every field (blueprint 9), and
+(``Fraction``).  ``results.to_json`` and ``results.from_json`` carry every field, and
 from_json(to_json(f)) == f, so that pages drawn from an archived revision are the same bytes.
 """
 
@@ -25,7 +25,7 @@ RECIPE_NAMES = ("cheapest", "roomiest", "closest", "fewest", "assured")
 class Multiplier:
     """A weight on one side of one limit; ``on`` is a quantity's name or "share of LOT".
 
-    ``bound`` is the limit's value on that side; ``terms`` is the row of blueprint 4.1 by usable lot:
+    ``bound`` is the limit's value on that side; ``terms`` is the row by usable lot:
     how much each lot alone breaks the limit (positive = breaks it).
     """
 
@@ -105,7 +105,7 @@ class CostBound:
     """Why nothing is cheaper: for every usable lot cost ≥ Σ y·row + ``floor`` (exact, per unit of
     amount), so that every blend within the limits costs at least ``floor``.
 
-    ``multipliers`` hold −y of blueprint's rows as weights ≥ 0: cost_i + Σ weight·row_i ≥ floor.
+    ``multipliers`` hold weights ≥ 0 on the rows: cost_i + Σ weight·row_i ≥ floor.
     """
 
     multipliers: tuple[Multiplier, ...]

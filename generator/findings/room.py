@@ -1,0 +1,204 @@
+"""Room: how far all limits of an order can tighten together before it is lost; and what room costs.
+
+Every limit that is not exact moves inwards by t times its scale.  ``room`` is the greatest t; below 0
+where the order is lost already.  With equal carriers it is one linear program; else Dinkelbach's steps
+(1967): each solves a linear program at t and moves t to what its shares allow, until nothing is gained.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from fractions import Fraction
+from typing import Literal
+
+from generator.findings.measures import own_value
+from generator.findings.model import OrderModel, Row
+from generator.findings.programs import ONE, ZERO, capped_upper, share_program, share_rows
+from generator.findings.rules import OutsideDomain
+from generator.geometry.decide import decide
+from generator.geometry.program import Bound, Infeasible, Optimum, Vector
+from generator.intake.records import Component
+
+#: Dinkelbach's steps stop when t grows by less than this: far below what any page shows.
+STEP = Fraction(1, 10**9)
+#: He converges superlinearly; a few steps are usual.
+MOST_STEPS = 40
+
+
+@dataclass(frozen=True, slots=True)
+class Scales:
+    """The scale of each model row in the limit's own unit, and whether all that can move are sds."""
+
+    by_row: tuple[Fraction, ...]
+    unit: Literal["sd", "scale"]
+
+
+@dataclass(frozen=True, slots=True)
+class Room:
+    """The greatest t, and shares that stand at it."""
+
+    t: Fraction
+    shares: Vector
+
+
+def scales_of(model: OrderModel, components: dict[str, Component]) -> Scales:
+    """Laboratory sd (relative: of the limit), else half the window, else 1 % of the limit, else of the lots' range."""
+    scales, known = [], []
+    for row in model.rows:
+        component = components.get(row.on)
+        sd = component.sd if component else None
+        own = None if sd is None else (sd.value * abs(row.typed) if sd.relative else sd.value)
+        if row.side != "exact":
+            known.append(bool(own))
+        scales.append(own or _other_scale(model, row))
+    return Scales(tuple(scales), "sd" if all(known) else "scale")
+
+
+def _other_scale(model: OrderModel, row: Row) -> Fraction:
+    limit = model.limits[row.on]
+    if limit.low is not None and limit.high is not None and limit.low != limit.high:
+        return abs(limit.high - limit.low) / 2
+    if row.typed != 0:
+        return abs(row.typed) / 100
+    rule = model.measures[row.on].rule
+    pairs = zip(model.numerators[row.on], model.denominators[row.on], strict=True)
+    values = [value for above, below in pairs if below and (value := own_value(rule, above / below)) is not None]
+    return (max(values) - min(values)) / 100 if values and max(values) != min(values) else ONE
+
+
+def tightened(model: OrderModel, scales: Scales, t: Fraction) -> OrderModel | None:
+    """The order with every limit that is not exact moved inwards by t scales (outwards where t < 0).
+
+    None where a limit leaves the domain of its blend rule: no blend is there.
+    """
+    rows = []
+    for row, scale in zip(model.rows, scales.by_row, strict=True):
+        if row.side == "exact":
+            rows.append(row)
+            continue
+        rule = model.measures[row.on].rule
+        typed = row.typed + t * scale * (1 if (row.side == "low") != rule.decreases else -1)
+        try:
+            rows.append(row.moved(rule.index(typed), typed))
+        except OutsideDomain:
+            if t > 0:
+                return None
+            # Wider than the domain: no limit at all on this side.
+            continue
+    return replace(model, rows=tuple(rows))
+
+
+def room_of(model: OrderModel, scales: Scales, *, in_amount: bool) -> Room | None:
+    """The greatest t, exactly with equal carriers; None where nothing can move or exact limits alone block.
+
+    ``in_amount`` keeps the stock's caps on the shares in the order's amount.
+    """
+    upper = capped_upper(model, model.amount) if in_amount else model.upper
+    movable = [k for k, row in enumerate(model.rows) if row.side != "exact"]
+    if not movable:
+        return None
+    if is_linear(model):
+        step = _step(model, model, scales, upper)
+        return None if step is None else Room(step[0], step[1])
+    exact_only = replace(model, rows=tuple(row for row in model.rows if row.side == "exact"))
+    start = decide(share_program(model, share_rows(exact_only), (ZERO,) * len(model.lots), upper=upper))
+    if not isinstance(start, Optimum):
+        return None
+    best = allowed(model, scales, start.x)
+    return None if best is None else _dinkelbach(model, scales, upper, Room(best, start.x))
+
+
+def _dinkelbach(model: OrderModel, scales: Scales, upper: tuple[Bound, ...], best: Room) -> Room:
+    for _ in range(MOST_STEPS):
+        # Floor to a coarse grid: the next program's numbers stay short, and t still stands.
+        at = _floored(best.t)
+        moved = tightened(model, scales, at)
+        if moved is None:
+            return best
+        step = _step(model, moved, scales, upper)
+        reached = None if step is None else allowed(model, scales, step[1])
+        if step is None or reached is None or reached <= best.t:
+            return best
+        gained = reached - best.t
+        best = Room(reached, step[1])
+        if gained < STEP:
+            break
+    return best
+
+
+def _floored(t: Fraction) -> Fraction:
+    return Fraction((t / STEP).__floor__()) * STEP
+
+
+def is_linear(model: OrderModel) -> bool:
+    """Whether moving all limits at once is linear: linear rules, and denominators alike in all lots."""
+    return all(
+        model.measures[row.on].rule.name == "linear" and len(set(row.base)) == 1
+        for row in model.rows
+        if row.side != "exact"
+    )
+
+
+def _step(
+    model: OrderModel, moved: OrderModel, scales: Scales, upper: tuple[Bound, ...]
+) -> tuple[Fraction, Vector] | None:
+    """The greatest μ with terms·x + μ·weight ≤ 0 over the rows of ``moved``; with equal carriers, t itself.
+
+    μ = free column: up minus down.
+    """
+    weight_of = {
+        (row.on, row.side): weight_of_scale(model, row, scale)
+        for row, scale in zip(model.rows, scales.by_row, strict=True)
+    }
+    n = len(model.lots)
+    extra: list[tuple[Vector, Bound, Bound]] = []
+    for row in moved.rows:
+        weight = weight_of[row.on, row.side]
+        if row.side == "exact":
+            extra.append(((*row.terms, ZERO, ZERO), ZERO, ZERO))
+        else:
+            extra.append(((*row.terms, weight, -weight), None, ZERO))
+    bare = replace(model, rows=())
+    program = share_program(
+        bare,
+        share_rows(bare),
+        (*((ZERO,) * n), -ONE, ONE),
+        upper=(*upper, None, None),
+        extra=extra,
+    )
+    answer = decide(program)
+    if isinstance(answer, Infeasible) or not isinstance(answer, Optimum):
+        return None
+    return -answer.value, answer.x[:n]
+
+
+def weight_of_scale(model: OrderModel, row: Row, scale: Fraction) -> Fraction:
+    """The scale in index values, times the mean denominator."""
+    rule = model.measures[row.on].rule
+    mean = sum(row.base, ZERO) / len(row.base) or ONE
+    if rule.name == "linear":
+        return scale * mean
+    slope = Fraction(abs(rule.slope(row.typed))).limit_denominator(10**12)
+    return (scale * slope or ONE) * mean
+
+
+def allowed(model: OrderModel, scales: Scales, x: Sequence[Fraction]) -> Fraction | None:
+    """The greatest t at which these shares still stand; None where nothing can move or has a value."""
+    least: Fraction | None = None
+    for row, scale in zip(model.rows, scales.by_row, strict=True):
+        if row.side == "exact":
+            continue
+        base = sum((b * share for b, share in zip(row.base, x, strict=True)), ZERO)
+        over = sum((a * share for a, share in zip(row.terms, x, strict=True)), ZERO)
+        if base <= 0:
+            return None
+        rule = model.measures[row.on].rule
+        index = row.bound + over / base * (-1 if row.side == "low" else 1)
+        value = own_value(rule, index)
+        if value is None:
+            return None
+        inward = value - row.typed if (row.side == "low") != rule.decreases else row.typed - value
+        t = inward / scale
+        least = t if least is None else min(least, t)
+    return least

@@ -1,0 +1,100 @@
+"""The cost–room curve of one order: what each further bit of room costs."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+
+from generator.findings.model import OrderModel
+from generator.findings.programs import ZERO, share_rows
+from generator.findings.recipes import best_shares
+from generator.findings.room import Scales, is_linear, tightened
+
+#: Samples of a curve that has no straight corners (carriers that differ, blend rules).
+SAMPLES = 9
+#: Corners of a curve at most; a curve has about as many as the order has lots.
+MOST_CORNERS = 60
+
+
+@dataclass(frozen=True, slots=True)
+class CostPoint:
+    """The cheapest shares with room ``t``: cost per unit of amount, and its rise for one unit of room."""
+
+    t: Fraction
+    cost: Fraction
+    slope: Fraction
+    shares: tuple[tuple[str, Fraction], ...]
+
+
+def cost_at(model: OrderModel, scales: Scales, t: Fraction) -> CostPoint | None:
+    """The cheapest shares at room t; None where there are none.  Every cost must be known."""
+    moved = tightened(model, scales, t)
+    if moved is None:
+        return None
+    rows = share_rows(moved)
+    try:
+        staged = best_shares(moved, rows, [tuple(cost or ZERO for cost in model.cost)])
+    except ValueError:
+        return None
+    first = staged.stages[0]
+    by_row = {(row.on, row.side): scale for row, scale in zip(model.rows, scales.by_row, strict=True)}
+    slope = ZERO
+    for k, weight in rows.weights(first.multipliers).items():
+        row = moved.rows[k]
+        if row.side != "exact":
+            slope += weight * by_row[row.on, row.side] * row.base[0]
+    shares = tuple((name, x) for name, x in zip(model.names, staged.x, strict=False) if x)
+    return CostPoint(t, first.value, slope, shares)
+
+
+def curve(model: OrderModel, scales: Scales, first: Fraction, last: Fraction) -> tuple[CostPoint, ...]:
+    """The curve from room ``first`` to ``last``: exact corners with equal carriers, else samples.
+
+    With equal carriers the cost is convex and piecewise linear in t: tangents from two ends meet at a
+    corner, or at a point that splits the search.
+    """
+    if first >= last:
+        only = cost_at(model, scales, last)
+        return () if only is None else (only,)
+    if not is_linear(model):
+        steps = [first + (last - first) * k / (SAMPLES - 1) for k in range(SAMPLES)]
+        return tuple(point for t in steps if (point := cost_at(model, scales, t)) is not None)
+    left, right = cost_at(model, scales, first), cost_at(model, scales, last)
+    if left is None or right is None:
+        return ()
+    points = [left, *_between(model, scales, left, right, MOST_CORNERS), right]
+    return tuple(_bends(points))
+
+
+def _between(model: OrderModel, scales: Scales, left: CostPoint, right: CostPoint, budget: int) -> list[CostPoint]:
+    if budget <= 0 or left.slope == right.slope:
+        return []
+    # left.cost + left.slope·(t − left.t) = right.cost + right.slope·(t − right.t)
+    t = (right.cost - left.cost + left.slope * left.t - right.slope * right.t) / (left.slope - right.slope)
+    if not left.t < t < right.t:
+        return []
+    middle = cost_at(model, scales, t)
+    assert middle is not None, "between two rooms there is a blend"
+    if middle.cost == left.cost + left.slope * (t - left.t):
+        return [middle]
+    half = (budget - 1) // 2
+    return [
+        *_between(model, scales, left, middle, half),
+        middle,
+        *_between(model, scales, middle, right, half),
+    ]
+
+
+def _bends(points: Sequence[CostPoint]) -> list[CostPoint]:
+    """The points at which the line through them bends, with both ends."""
+    kept: list[CostPoint] = []
+    for point in points:
+        while len(kept) >= 2 and _is_straight(kept[-2], kept[-1], point):
+            kept.pop()
+        kept.append(point)
+    return kept
+
+
+def _is_straight(a: CostPoint, b: CostPoint, c: CostPoint) -> bool:
+    return (b.cost - a.cost) * (c.t - b.t) == (c.cost - b.cost) * (b.t - a.t)

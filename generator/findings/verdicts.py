@@ -1,0 +1,251 @@
+"""Verdict and proof of one order: unreachable, short, edge or makeable.
+
+Every answer comes from :func:`generator.geometry.decide.decide_many`, which has proven it; here the
+exact shares and multipliers are put in the order's own terms.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+from typing import Literal
+
+from generator.findings.model import OrderModel, Row
+from generator.findings.programs import (
+    ONE,
+    ZERO,
+    Rows,
+    amount_rows,
+    combined,
+    least_over_shares,
+    share_bound_rows,
+    share_program,
+    share_rows,
+)
+from generator.findings.records import BlockingProof, Cap, Face, Multiplier, Verdict
+from generator.geometry.decide import decide
+from generator.geometry.program import Bound, Infeasible, Optimum, Program, Unbounded, Vector
+from generator.geometry.proofs import fewest_rows, tidy
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Greatest:
+    """The greatest amount (None: no bound), with shares that make it and the proof of its bound."""
+
+    amount: Fraction | None
+    shares: Mapping[str, Fraction]
+    runs_out: tuple[str, ...]
+    cap: Cap | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Judgement:
+    """The verdict with its parts: ``blocking`` if unreachable, else ``greatest`` where stock is given,
+    and the ``face`` of an edge."""
+
+    verdict: Verdict
+    blocking: BlockingProof | None = None
+    face: Face | None = None
+    greatest: Greatest | None = None
+
+
+def judge(model: OrderModel) -> Judgement:
+    """The first verdict that applies, proven: unreachable, short, edge, makeable."""
+    rows = share_rows(model)
+    program = share_program(model, rows, (ZERO,) * len(model.lots))
+    answer = decide(program)
+    if isinstance(answer, Infeasible):
+        return Judgement(verdict="unreachable", blocking=blocking_proof(model, rows, program, answer))
+    greatest = greatest_amount(model)
+    if greatest and greatest.amount is not None and model.amount is not None and greatest.amount < model.amount:
+        return Judgement(verdict="short", greatest=greatest)
+    face = face_of(model)
+    return Judgement(verdict="edge" if face else "makeable", face=face, greatest=greatest)
+
+
+def multipliers_of(
+    rows: Sequence[Row], weights: Mapping[int, Fraction], names: Sequence[str]
+) -> tuple[Multiplier, ...]:
+    """Weights on rows as they are published, in row order."""
+    return tuple(
+        Multiplier(
+            on=rows[k].on,
+            side=rows[k].side,
+            weight=weights[k],
+            bound=rows[k].bound,
+            terms=dict(zip(names, rows[k].terms, strict=True)),
+        )
+        for k in sorted(weights)
+        if weights[k] != 0
+    )
+
+
+def blocking_proof(model: OrderModel, rows: Rows, program: Program, answer: Infeasible) -> BlockingProof:
+    """The readable form of a proof that no shares meet the limits."""
+    short = fewest_rows(program, answer, uncounted=(len(rows.entries),))
+    weights = _tidied(rows.weights(short.multipliers))
+    scores = combined(model.rows, weights, len(model.lots))
+    least = least_over_shares(scores, model.lower, model.upper)
+    assert least > 0, "a blocking proof has a positive least score"
+    return BlockingProof(
+        multipliers=multipliers_of(model.rows, weights, model.names),
+        scores=dict(zip(model.names, scores, strict=True)),
+        least=least if model.has_share_bounds else None,
+    )
+
+
+def _tidied(weights: Mapping[int, Fraction]) -> dict[int, Fraction]:
+    return dict(zip(weights, tidy(tuple(weights.values())), strict=True))
+
+
+def greatest_amount(model: OrderModel) -> Greatest | None:
+    """The most that the stock makes within the limits; None where no stock is given.
+
+    An order that some blend meets has a greatest amount above 0: a little of that blend.
+    """
+    if all(stock is None for stock in model.stock):
+        return None
+    rows = amount_rows(model)
+    bound_rows = share_bound_rows(model)
+    n = len(model.lots)
+    program = Program(
+        rows=(*(entry.terms for entry in rows.entries), *(terms for _, terms in bound_rows)),
+        row_low=(*(entry.low for entry in rows.entries), *(None for _ in bound_rows)),
+        row_high=(*(entry.high for entry in rows.entries), *(ZERO for _ in bound_rows)),
+        lower=(ZERO,) * n,
+        upper=model.stock,
+        cost=(-ONE,) * n,
+    )
+    answer = decide(program)
+    if isinstance(answer, Unbounded):
+        return Greatest(amount=None, shares=_shares(model, answer.ray), runs_out=(), cap=None)
+    assert isinstance(answer, Optimum), "nothing at all is always within homogeneous limits"
+    amount = -answer.value
+    if amount == 0:
+        return Greatest(amount=ZERO, shares={}, runs_out=(), cap=_cap(model, rows, bound_rows, answer))
+    return Greatest(
+        amount=amount,
+        shares=_shares(model, answer.x),
+        runs_out=tuple(
+            name
+            for name, x, stock in zip(model.names, answer.x, model.stock, strict=True)
+            if stock is not None and x == stock
+        ),
+        cap=_cap(model, rows, bound_rows, answer),
+    )
+
+
+def _shares(model: OrderModel, amounts: Vector) -> dict[str, Fraction]:
+    total = sum(amounts, ZERO)
+    return {name: x / total for name, x in zip(model.names, amounts, strict=True) if x}
+
+
+def _cap(model: OrderModel, rows: Rows, bound_rows: Sequence[tuple[Row, Vector]], answer: Optimum) -> Cap:
+    """For every lot Σ y·row + w ≥ 1 with w the weight of its stock, and Σ w·stock = the amount."""
+    every = (*model.rows, *(row for row, _ in bound_rows))
+    weights = rows.weights(answer.multipliers)
+    for k, y in enumerate(answer.multipliers[len(rows.entries) :]):
+        if y != 0:
+            weights[len(model.rows) + k] = -y
+    scores = combined(every, weights, len(model.lots))
+    stock_weights = {name: ONE - score for name, score in zip(model.names, scores, strict=True) if score < 1}
+    spent = sum(
+        (stock_weights.get(name, ZERO) * (stock or ZERO) for name, stock in zip(model.names, model.stock, strict=True)),
+        ZERO,
+    )
+    assert spent == -answer.value, "the cap proves the amount"
+    return Cap(
+        multipliers=multipliers_of(every, weights, model.names), stock_weights=stock_weights, greatest=-answer.value
+    )
+
+
+def face_of(model: OrderModel) -> Face | None:
+    """The face on which a reachable order lies, or None where no share is stuck.
+
+    One program finds all stuck shares at once: x = bound·λ + t + s with t ≤ 1, most Σ t.  As λ may
+    grow, each t comes out 1 if that share can leave its bound in some blend, else 0 (the strict
+    complementarity of Goldman and Tucker 1956); its multipliers are those of the face.
+    """
+    free = _varying(model)
+    if not free:
+        return None
+    program = _face_program(model, free)
+    answer = decide(program)
+    assert isinstance(answer, Optimum), "the sum of the t is bounded"
+    n = len(model.lots)
+    stuck: dict[str, Literal["zero", "min", "max"]] = {}
+    for column, (i, side) in enumerate(free):
+        if answer.x[column] == 0:
+            stuck[model.names[i]] = "max" if side == "upper" else ("min" if model.lower[i] else "zero")
+    if not stuck:
+        return None
+    weights = _tidied(amount_rows(model).weights(answer.multipliers))
+    scores = combined(model.rows, weights, n)
+    return Face(
+        multipliers=multipliers_of(model.rows, weights, model.names),
+        scores=dict(zip(model.names, scores, strict=True)),
+        stuck=stuck,
+        on_face=tuple(name for name in model.names if stuck.get(name) != "zero"),
+    )
+
+
+def _varying(model: OrderModel) -> list[tuple[int, Literal["lower", "upper"]]]:
+    """The bounds that a lot's share could leave if there were no limits."""
+    tops = [ONE if bound is None else bound for bound in model.upper]
+    low_sum, top_sum = sum(model.lower, ZERO), sum(tops, ZERO)
+    varying: list[tuple[int, Literal["lower", "upper"]]] = []
+    for i, (low, top) in enumerate(zip(model.lower, tops, strict=True)):
+        least, most = max(low, ONE - (top_sum - top)), min(top, ONE - (low_sum - low))
+        if least == most:
+            continue
+        if least == low:
+            varying.append((i, "lower"))
+        if model.upper[i] is not None and most == top:
+            varying.append((i, "upper"))
+    return varying
+
+
+def _face_program(model: OrderModel, free: Sequence[tuple[int, Literal["lower", "upper"]]]) -> Program:
+    """Columns: t for each entry of ``free``, then the excess s of each lot, λ, and the gaps of upper bounds."""
+    n = len(model.lots)
+    uppers = [i for i in range(n) if model.upper[i] is not None]
+    entries = amount_rows(model).entries
+    width = len(free) + n + 1 + len(uppers)
+    lam = len(free) + n
+
+    def spread(vector: Sequence[Fraction]) -> list[Fraction]:
+        """A row over lots' amounts as a row over the columns (x_i = lower_i·λ + t_i + s_i)."""
+        row = [ZERO] * width
+        for column, (i, side) in enumerate(free):
+            if side == "lower":
+                row[column] = vector[i]
+        row[len(free) : lam] = vector
+        row[lam] = sum((a * low for a, low in zip(vector, model.lower, strict=True)), ZERO)
+        return row
+
+    rows: list[Vector] = [tuple(spread(entry.terms)) for entry in entries]
+    low: list[Bound] = [entry.low for entry in entries]
+    high: list[Bound] = [entry.high for entry in entries]
+    total = spread((ONE,) * n)
+    total[lam] -= ONE
+    rows.append(tuple(total))
+    for k, i in enumerate(uppers):
+        # upper·λ − x − (gap + t) = 0
+        row = [-value for value in spread(tuple(ONE if j == i else ZERO for j in range(n)))]
+        row[lam] += model.upper[i] or ZERO
+        row[lam + 1 + k] = -ONE
+        for column, (j, side) in enumerate(free):
+            if j == i and side == "upper":
+                row[column] = -ONE
+        rows.append(tuple(row))
+    equal = [ZERO] * (1 + len(uppers))
+    ones = len(free)
+    return Program(
+        rows=tuple(rows),
+        row_low=(*low, *equal),
+        row_high=(*high, *equal),
+        lower=(ZERO,) * width,
+        upper=(*((ONE,) * ones), *((None,) * (width - ones))),
+        cost=(*((-ONE,) * ones), *((ZERO,) * (width - ones))),
+    )

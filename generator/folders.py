@@ -1,0 +1,160 @@
+"""The folder of campaigns on disk: which campaigns there are, what they hold, when they were touched."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+
+from generator import disk
+from generator.disk import Stamp
+from generator.intake.campaign import input_name
+from generator.problems import HullbookError, Problem
+from generator.report.addresses import slugify, slugs
+
+SITE = "site.toml"
+#: What makes a folder a campaign; notes alone don't.
+_TELLING = frozenset({"assays.csv", "targets.csv", "stock.csv", "campaign.toml"})
+#: Addresses in the output folder that no campaign can have.
+_TAKEN = ("assets", "index.html", "method.html")
+#: A file is read up to here; ``intake`` refuses what is longer than its limit, which is less.
+MOST_BYTES = 64_000_000
+
+
+class NoCampaignsError(HullbookError):
+    """The folder of campaigns is not there."""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Folder:
+    """One campaign's folder: its slug, its name as pages show it, where it is, and where site.toml is."""
+
+    slug: str
+    name: str
+    path: Path
+    site: Path
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Inputs:
+    """The input files of a campaign by canonical name, and what was wrong with reading them."""
+
+    files: Mapping[str, bytes]
+    problems: tuple[Problem, ...] = ()
+    unreadable: frozenset[str] = field(default_factory=frozenset)
+
+
+def find_campaigns(root: Path) -> tuple[Folder, ...]:
+    """Find the campaigns in ``root``, by name; ``root`` may be one campaign itself.
+
+    NoCampaignsError if there is no such folder.
+    """
+    if not root.is_dir():
+        raise NoCampaignsError(f"there is no folder {root}")
+    if _is_campaign(root):
+        real = Path(os.path.realpath(root))
+        name = _shown(real.name)
+        return (Folder(slug=slugs([name], _TAKEN)[name], name=name, path=root, site=real.parent),)
+    try:
+        inner = [path for path in root.iterdir() if not path.name.startswith(".")]
+    except OSError as error:
+        raise NoCampaignsError(f"the folder {root} can't be read ({disk.reason(error)})") from error
+    paths = {_shown(path.name): path for path in sorted(inner) if path.is_dir() and _is_campaign(path)}
+    # A folder whose name is a slug already keeps it, whatever comes before it.
+    by_claim = sorted(paths, key=lambda name: (slugify(name) != name, name))
+    found = slugs(by_claim, _TAKEN)
+    return tuple(Folder(slug=found[name], name=name, path=path, site=root) for name, path in paths.items())
+
+
+def read_inputs(folder: Folder) -> Inputs:
+    """Read a campaign's files, and the site.toml that applies to it."""
+    own = disk.read_folder(folder.path, _own_name, at_most=MOST_BYTES)
+    site = disk.read_folder(folder.site, _site_name, at_most=MOST_BYTES)
+    unreadable = {**own.unreadable, **site.unreadable}
+    problems = [_unreadable(folder.name if name == "." else name, why) for name, why in unreadable.items()]
+    problems += [_shadowed(name) for name in (*own.shadowed, *site.shadowed)]
+    problems += _misplaced_site(folder)
+    return Inputs(
+        files=dict(sorted({**own.files, **site.files}.items())),
+        problems=tuple(problems),
+        unreadable=frozenset(unreadable),
+    )
+
+
+def scan(root: Path) -> dict[Path, tuple[tuple[str, Stamp], ...]]:
+    """Stamp every input file below ``root``, by campaign folder; ``site.toml`` under its own folder.
+
+    A file that is there and can't be asked is left out.  NoCampaignsError if ``root`` is gone.
+    """
+    folders = find_campaigns(root)
+    stamps = {folder.path: _stamps(folder.path, _own_name) for folder in folders}
+    for site in sorted({folder.site for folder in folders} or {root}):
+        found = _stamps(site, _site_name)
+        if found:
+            stamps[site / SITE] = found
+    return stamps
+
+
+def _stamps(folder: Path, wanted: disk.Wanted) -> tuple[tuple[str, Stamp], ...]:
+    try:
+        entries, _ = disk.wanted_entries(folder, wanted)
+    except OSError:
+        return ()
+    stamped = ((path.name, disk.stamp(path)) for path in entries.values())
+    return tuple((name, stamp) for name, stamp in stamped if stamp is not None)
+
+
+def _own_name(name: str) -> str | None:
+    canonical = input_name(name)
+    return None if canonical == SITE else canonical
+
+
+def _site_name(name: str) -> str | None:
+    return SITE if input_name(name) == SITE else None
+
+
+def _is_campaign(path: Path) -> bool:
+    """Whether a folder holds a campaign; one that can't be read is taken for one, so that it is told."""
+    try:
+        entries, _ = disk.wanted_entries(path, _own_name)
+    except OSError:
+        return True
+    return not _TELLING.isdisjoint(entries)
+
+
+def _shown(name: str) -> str:
+    """A folder's name as text, also where the file system holds bytes that are none."""
+    return os.fsencode(name).decode("utf-8", "replace")
+
+
+def _unreadable(name: str, why: str) -> Problem:
+    return Problem(
+        file=name,
+        message=f"it can't be read: {why}",
+        remedy="close the program that holds it, or allow this program to read it",
+        severity="stops",
+    )
+
+
+def _shadowed(name: str) -> Problem:
+    return Problem(
+        file=name,
+        message="it is not read, since another file has this name in other letters",
+        remedy="keep one of the two",
+        severity="note",
+    )
+
+
+def _misplaced_site(folder: Folder) -> list[Problem]:
+    """A site.toml inside a campaign would be read by nobody, and its house rules with it."""
+    if folder.path == folder.site or not disk.read_folder(folder.path, _site_name, at_most=1).files:
+        return []
+    return [
+        Problem(
+            file=SITE,
+            message="it is not read, since it stands inside the campaign",
+            remedy="put it beside the campaign's folder, or its settings into campaign.toml",
+            severity="note",
+        )
+    ]

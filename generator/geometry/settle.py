@@ -1,0 +1,135 @@
+"""From float stacks to exact answers: what floats could not decide is decided here, and proofs are written out.
+
+A basis is data enough: the exact point and multipliers on it come from one small system in whole
+numbers.  Where the basis leads nowhere, ``decide`` searches (HiGHS, then the exact simplex).
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from fractions import Fraction
+
+import numpy as np
+
+from generator.geometry.checks import proves_infeasible
+from generator.geometry.decide import decide
+from generator.geometry.elimination import solve_square
+from generator.geometry.exact import solve_on_basis
+from generator.geometry.integral import Integral, integral
+from generator.geometry.program import Answer, Basis, Infeasible, Optimum, Program
+from generator.geometry.rigour import Certified, solve_certified
+from generator.geometry.simplex import INFEASIBLE, OPTIMAL, Solved
+from generator.geometry.stack import Flags, stack_of
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Tally:
+    """How many programs each step decided: ``floats`` with a proven error bound, exact arithmetic on the
+    ``basis`` that the stack ended in, or a further ``search`` (HiGHS, then the exact simplex)."""
+
+    floats: int = 0
+    basis: int = 0
+    search: int = 0
+
+    def __add__(self, other: Tally) -> Tally:
+        """Both together."""
+        return Tally(
+            floats=self.floats + other.floats, basis=self.basis + other.basis, search=self.search + other.search
+        )
+
+
+def basis_of(solved: Solved, k: int) -> Basis:
+    """The ending basis of program k of a stack."""
+    basic = tuple(sorted(int(column) for column in solved.basic[k]))
+    resting = frozenset(int(column) for column in np.flatnonzero(solved.at_upper[k]))
+    return Basis(basic, resting - frozenset(basic))
+
+
+def blocking_on_basis(program: Program, basis: Basis, blocked: int, form: Integral | None = None) -> Infeasible | None:
+    """The proof that the basic column or slack ``blocked`` can't keep its bounds, checked; else None.
+
+    Its multipliers are a row of the inverse of the basis, in whole numbers: they use at most as many
+    rows as are tight, and one more.
+    """
+    form = form or integral(program)
+    m, n = len(form.rows), len(form.cost)
+    if len(basis.basic) != m or blocked not in basis.basic:
+        return None
+    basic = set(basis.basic)
+    inside = [column for column in basis.basic if column < n]
+    tight = [k for k in range(m) if n + k not in basic]
+    given = [0] * m
+    if blocked >= n:
+        given[blocked - n] = 1
+    # yᵀ·(basic columns) is 0 but for the blocked one; a basic slack's multiplier is 0 but for the blocked one
+    right = [int(j == blocked) - sum(g * form.rows[k][j] for k, g in enumerate(given) if g) for j in inside]
+    solved = solve_square([[form.rows[k][j] for k in tight] for j in inside], right)
+    if solved is None:
+        return None
+    weights = [weight * solved[1] for weight in given]
+    for k, weight in zip(tight, solved[0], strict=True):
+        weights[k] = weight
+    for sign in (1, -1):
+        proof = Infeasible(tuple(Fraction(sign * w * s) for w, s in zip(weights, form.row_scale, strict=True)))
+        if proves_infeasible(program, proof):
+            return proof
+    return None
+
+
+def publish(solved: Solved, k: int, program: Program) -> Answer:
+    """The exact, checked answer to program k, whose float image was solved in a stack."""
+    return _published(solved, k, program)[0]
+
+
+def _published(solved: Solved, k: int, program: Program) -> tuple[Answer, bool]:
+    """The answer, and whether the stack's basis led to it."""
+    basis = basis_of(solved, k)
+    answer: Optimum | Infeasible | None = None
+    if solved.status[k] == OPTIMAL:
+        answer = solve_on_basis(program, basis)
+    elif solved.status[k] == INFEASIBLE:
+        answer = blocking_on_basis(program, basis, int(solved.blocked[k]))
+    return (answer, True) if answer is not None else (decide(program), False)
+
+
+def settle(
+    certified: Certified,
+    program_of: Callable[[int], Program],
+    *,
+    ask_best: bool = True,
+    doubtful: Flags | None = None,
+) -> tuple[dict[int, Answer], Tally]:
+    """Exact answers, by place, for whatever floats did not prove.
+
+    ``ask_best`` false: a proven verdict is enough, the optimum may be a tie.  ``doubtful`` (K,) marks
+    programs whose bounds are equal as floats but not in truth: they are decided here in any case.
+    """
+    solved = certified.solved
+    proven = certified.decided.copy()
+    if ask_best:
+        proven &= certified.best | (solved.status != OPTIMAL)
+    if doubtful is not None:
+        proven &= ~doubtful
+    answers: dict[int, Answer] = {}
+    on_basis = 0
+    for k in np.flatnonzero(~proven):
+        answers[int(k)], led = _published(solved, int(k), program_of(int(k)))
+        on_basis += led
+    return answers, Tally(floats=int(proven.sum()), basis=on_basis, search=len(answers) - on_basis)
+
+
+def answer_many(programs: Sequence[Program]) -> tuple[list[Answer], Tally]:
+    """The exact answers to programs of any shapes, in their order; those of one shape are solved side by side."""
+    groups: dict[object, list[int]] = {}
+    for place, program in enumerate(programs):
+        groups.setdefault((len(program.rows), len(program.cost)), []).append(place)
+    answers: dict[int, Answer] = {}
+    on_basis = 0
+    for places in groups.values():
+        certified = solve_certified(stack_of([programs[place] for place in places]))
+        for k, place in enumerate(places):
+            answers[place], led = _published(certified.solved, k, programs[place])
+            on_basis += led
+    tally = Tally(basis=on_basis, search=len(programs) - on_basis)
+    return [answers[place] for place in range(len(programs))], tally

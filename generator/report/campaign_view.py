@@ -1,0 +1,315 @@
+"""The campaign's page: every order's answer, the lots, the hull, what changed, what was read."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping, Sequence
+
+from generator import numbers
+from generator.findings.records import HalfPlane, HullFinding, LotFinding, OrderFinding
+from generator.intake.records import Lot
+from generator.problems import Problem
+from generator.report import words
+from generator.report.lookup import Lookup, as_typed, order_of
+from generator.report.order_view import amount_text, room_text
+from generator.report.parts import Cell, Column, Row, Section, Table, aligned, text_cell
+from generator.report.planes import Planes
+from generator.report.shares import amount_places, lot_cell
+from generator.report.wholes import Wholes
+
+_SEVERITIES = {"stops": "stops the campaign", "drops": "left out", "note": "note"}
+
+
+def campaign_sections(lookup: Lookup, planes: Planes, wholes: Wholes) -> tuple[Section, ...]:
+    """All parts of a campaign's page that have something to show, but for the notes, in reading order."""
+    page = lookup.home
+    found = (
+        _orders(lookup, page),
+        _changes(lookup),
+        _hull(lookup, planes, wholes),
+        _plan(lookup, page),
+        _lots(lookup, page),
+    )
+    return tuple(section for section in found if section is not None)
+
+
+def record_sections(lookup: Lookup) -> tuple[Section, ...]:
+    """What stands at the end of a campaign's page: revisions, what was read, problems."""
+    found = (_revisions(lookup), _read(lookup), problems_section(lookup.campaign.problems))
+    return tuple(section for section in found if section is not None)
+
+
+# --- orders
+
+
+def _orders(lookup: Lookup, page: str) -> Section | None:
+    findings = lookup.book.findings.orders
+    if not findings:
+        return None
+    settings = lookup.campaign.settings
+    clients = any(order.client for order in lookup.campaign.orders)
+    rooms = any(finding.room is not None for finding in findings)
+    columns = [Column(title="Order"), Column(title="Verdict")]
+    if clients:
+        columns.append(Column(title="Client"))
+    columns += [
+        Column(title="Amount", unit=settings.quantity_unit, kind="number"),
+        Column(title="Least cost", unit=f"{settings.currency} per {settings.quantity_unit}", kind="number"),
+    ]
+    if rooms:
+        columns.append(Column(title="Room", kind="number"))
+    columns.append(Column(title="In a sentence"))
+    rows = [_order_row(lookup, finding, page, clients, rooms) for finding in findings]
+    table = Table(anchor="orders-table", caption="Orders, each taken alone", columns=tuple(columns), rows=tuple(rows))
+    return Section(anchor="orders", title="Orders", tables=(table,))
+
+
+def _order_row(lookup: Lookup, finding: OrderFinding, page: str, clients: bool, rooms: bool) -> Row:
+    order, cheapest = order_of(lookup, finding), finding.recipes.get("cheapest")
+    verdict = finding.verdict or "none"
+    amount = amount_text(finding, "") if (finding.amount_low, finding.amount_high) != (None, None) else ""
+    cost = numbers.money(cheapest.cost) if cheapest and cheapest.cost is not None else numbers.UNKNOWN
+    cells = [
+        Cell(text=finding.order, href=lookup.link(page, lookup.order_addresses.get(finding.order, ""))),
+        Cell(text=words.VERDICT_WORDS[verdict], mark=verdict),
+    ]
+    if clients:
+        cells.append(text_cell(order.client if order else ""))
+    cells += [text_cell(amount or numbers.UNKNOWN), text_cell(cost)]
+    if rooms:
+        cells.append(text_cell(room_text(finding) if finding.room is not None else numbers.UNKNOWN))
+    cells.append(text_cell(finding.sentence, tone="sentence"))
+    return Row(cells=tuple(cells))
+
+
+def _changes(lookup: Lookup) -> Section | None:
+    if not lookup.book.revisions:
+        return None
+    last = lookup.book.revisions[-1]
+    sentences = lookup.book.changes
+    if not sentences:
+        if len(lookup.book.revisions) == 1:
+            sentences = ("This is the first revision: there is none before it to compare with.",)
+        else:
+            sentences = (f"No answer changed from revision {last.number - 1} to revision {last.number}.",)
+    return Section(anchor="changes", title="What changed last", sentences=sentences)
+
+
+# --- hull and lots
+
+
+def _hull(lookup: Lookup, planes: Planes, wholes: Wholes) -> Section | None:
+    hulls = lookup.book.findings.hulls
+    triangle = wholes.of_campaign()
+    figures = (*planes.of_campaign(), *([triangle] if triangle else []))
+    if not hulls and not figures:
+        return None
+    sentences = tuple(_hull_sentence(lookup, hull) for hull in hulls)
+    tables = tuple(
+        table for number, hull in enumerate(hulls, 1) if (table := _facets_table(lookup, hull, number)) is not None
+    )
+    return Section(
+        anchor="hull",
+        title="Hull",
+        sentences=sentences,
+        figures=figures,
+        tables=tables,
+        layout="beside" if tables else "plain",
+    )
+
+
+def _hull_sentence(lookup: Lookup, hull: HullFinding) -> str:
+    names = words.listed(lookup.labels.get(name, name) for name in hull.over)
+    corners = words.plural(len(hull.corners), "corner lot")
+    text = f"Over {names} ({hull.basis} basis) the hull has {corners} and {words.plural(hull.dimension, 'dimension')}"
+    text += f", volume {numbers.significant(hull.volume, 4)}." if hull.volume is not None else "."
+    if hull.dimension < len(hull.over):
+        text += " It is flat: the lots' values depend on each other."
+    return text + " Stock and cost are disregarded."
+
+
+def _facets_table(lookup: Lookup, hull: HullFinding, number: int) -> Table | None:
+    if not hull.facets:
+        return None
+    rows = [
+        Row(cells=(text_cell(_form_text(lookup, half_plane)), text_cell(numbers.significant(half_plane.at_most, 5))))
+        for half_plane in hull.facets
+    ]
+    return Table(
+        anchor=f"half-planes-{number}",
+        caption="The hull as inequalities",
+        columns=(Column(title="Every blend has"), Column(title="At most", kind="number")),
+        rows=tuple(rows),
+    )
+
+
+def _form_text(lookup: Lookup, half_plane: HalfPlane) -> str:
+    """Words such as "3 N − 4 K"."""
+    text = ""
+    for name, coefficient in half_plane.coefficients.items():
+        if not coefficient:
+            continue
+        sign = numbers.MINUS if coefficient < 0 else "+"
+        size = numbers.significant(abs(coefficient), 5)
+        term = ("" if size == "1" else size + "\N{NO-BREAK SPACE}") + lookup.labels.get(name, name)
+        text += f" {sign} {term}" if text else (sign if coefficient < 0 else "") + term
+    return text
+
+
+def _lots(lookup: Lookup, page: str) -> Section | None:
+    lots = lookup.campaign.lots
+    if not lots:
+        return None
+    settings = lookup.campaign.settings
+    columns = [Column(title="Lot"), Column(title="Role")]
+    texts: list[list[str]] = []
+    if lookup.campaign.has_stock:
+        columns.append(Column(title="Stock", unit=settings.quantity_unit, kind="number"))
+        texts.append(aligned(_stock_text(lot) for lot in lots))
+    if any(lot.cost is not None for lot in lots):
+        unit = f"{settings.currency} per {settings.quantity_unit}"
+        columns.append(Column(title="Cost", unit=unit, kind="number"))
+        texts.append(aligned(lot.cost.text if lot.cost else "unknown" for lot in lots))
+    for component in lookup.campaign.components:
+        columns.append(Column(title=component.label or component.name, unit=component.unit, kind="number"))
+        texts.append(aligned(as_typed(lot.assay.get(component.name)) for lot in lots))
+    rows = [
+        Row(
+            cells=(
+                lot_cell(lookup, lot.name, page),
+                text_cell(_role(lookup.lot_findings.get(lot.name))),
+                *(text_cell(column[position]) for column in texts),
+            )
+        )
+        for position, lot in enumerate(lots)
+    ]
+    note = (
+        "A corner lot is one that the others can't imitate; an inner lot could be blended from them. "
+        "Assays stand as typed."
+    )
+    if any(reading.below for lot in lots for measured in lot.assay.values() for reading in measured.readings):
+        rule = {"half": "half of it", "zero": "0", "limit": "whichever end is safe"}[settings.below_detection]
+        note += f" “<” is below the detection limit, and counts as {rule}."
+    table = Table(anchor="lots-table", caption="Lots", columns=tuple(columns), rows=tuple(rows), note=note)
+    return Section(anchor="lots", title="Lots", tables=(table,))
+
+
+def _stock_text(lot: Lot) -> str:
+    return "unlimited" if lot.is_unlimited else lot.stock.text if lot.stock else numbers.UNKNOWN
+
+
+def _role(finding: LotFinding | None) -> str:
+    return finding.role if finding and finding.role else numbers.UNKNOWN
+
+
+# --- plan
+
+
+def _plan(lookup: Lookup, page: str) -> Section | None:
+    plan = lookup.book.findings.plan
+    if plan is None:
+        return None
+    unit = lookup.campaign.settings.quantity_unit
+    served = sum(1 for order in plan.orders.values() if order.accepted > 0)
+    alone = sum(1 for finding in lookup.book.findings.orders if finding.verdict in ("makeable", "edge"))
+    sentence = f"{alone} makeable alone, {served} served together."
+    if plan.runs_out:
+        sentence += f" {words.listed(plan.runs_out)} {'runs' if len(plan.runs_out) == 1 else 'run'} out."
+    rows = []
+    for name, planned in plan.orders.items():
+        places = amount_places(planned.accepted)
+        parts = ", ".join(f"{lot} {numbers.text(amount, places)}" for lot, amount in planned.amounts.items())
+        cells = (
+            Cell(text=name, href=lookup.link(page, lookup.order_addresses.get(name, ""))),
+            text_cell(numbers.text(planned.accepted, places)),
+            text_cell(parts or numbers.UNKNOWN),
+        )
+        rows.append(Row(cells=cells))
+    columns = (
+        Column(title="Order"),
+        Column(title="Accepted", unit=unit, kind="number"),
+        Column(title=f"Amounts, {unit}"),
+    )
+    table = Table(anchor="plan-table", caption="All orders together", columns=columns, rows=tuple(rows))
+    return Section(anchor="plan", title="Plan", sentences=(sentence,), tables=(table,))
+
+
+# --- records
+
+
+def _revisions(lookup: Lookup) -> Section | None:
+    if not lookup.book.revisions:
+        return None
+    rows = [
+        Row(
+            cells=(
+                text_cell(str(line.number)),
+                text_cell(words.moment(line.recorded)),
+                text_cell(line.headline),
+                text_cell(line.program),
+                text_cell(line.digest[:12], tone="code"),
+            )
+        )
+        for line in reversed(lookup.book.revisions)
+    ]
+    columns = (
+        Column(title="Revision"),
+        Column(title="Recorded"),
+        Column(title="What happened"),
+        Column(title="Program"),
+        Column(title="Digest"),
+    )
+    table = Table(anchor="revisions-table", caption="Revisions, newest first", columns=columns, rows=tuple(rows))
+    return Section(anchor="revisions", title="Revisions", tables=(table,))
+
+
+def _read(lookup: Lookup) -> Section | None:
+    notes = lookup.campaign.read
+    if not notes:
+        return None
+    rows = [
+        Row(
+            cells=(
+                text_cell(note.file),
+                text_cell("" if note.row is None else str(note.row)),
+                text_cell(note.what),
+            )
+        )
+        for note in notes
+    ]
+    columns = (Column(title="File"), Column(title="Row", kind="number"), Column(title="What was read"))
+    table = Table(
+        anchor="read-table", caption="Rows left out or read in a special way", columns=columns, rows=tuple(rows)
+    )
+    return Section(anchor="read", title="What was read", tables=(table,))
+
+
+def problems_section(problems: Sequence[Problem], anchor: str = "problems") -> Section | None:
+    """Problems as a table: where, what was found, what is wrong, what to write instead."""
+    if not problems:
+        return None
+    rows = [
+        Row(
+            cells=(
+                text_cell(problem.file),
+                text_cell("" if problem.row is None else str(problem.row)),
+                text_cell(problem.column or ""),
+                text_cell(problem.found or "", tone="code"),
+                text_cell(problem.message),
+                text_cell(problem.remedy),
+                text_cell(_SEVERITIES[problem.severity], tone="" if problem.severity == "note" else "bad"),
+            )
+        )
+        for problem in problems
+    ]
+    titles: Iterable[str] = ("File", "Row", "Column", "Found", "What is wrong", "What to write instead", "Effect")
+    columns = tuple(Column(title=title, kind="number" if title == "Row" else "text") for title in titles)
+    table = Table(anchor=f"{anchor}-table", caption="Problems of the input", columns=columns, rows=tuple(rows))
+    return Section(anchor=anchor, title="Problems", tables=(table,))
+
+
+def verdict_counts(findings: Iterable[OrderFinding]) -> Mapping[str, int]:
+    """How many orders have each verdict ("none": no answer)."""
+    counts: dict[str, int] = {}
+    for finding in findings:
+        counts[finding.verdict or "none"] = counts.get(finding.verdict or "none", 0) + 1
+    return counts

@@ -1,0 +1,164 @@
+"""The hull seen in a plane: lots as points, and over it what belongs to one order."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+from matplotlib.patches import Polygon
+
+from generator.report.figures import canvas, labels
+from generator.report.figures.frame import Axis, Frame, framed
+
+Pair = tuple[float, float]
+Bounds = tuple[float | None, float | None]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class LotPoint:
+    """A lot in the plane; ``name`` may join several lots of one place."""
+
+    name: str
+    x: float
+    y: float
+    is_corner: bool
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Separation:
+    """The line across·x + up·y = level that parts all lots from what the limits ask together."""
+
+    across: float
+    up: float
+    level: float
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Overlay:
+    """What one order adds to the plane; None where it doesn't apply."""
+
+    x_window: Bounds = (None, None)
+    y_window: Bounds = (None, None)
+    blend: Pair | None = None
+    nearest: Pair | None = None
+    separation: Separation | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class Base:
+    """A drawn plane with its lots, to lay overlays on; ``unlabelled`` lots found no room for a name.
+
+    ``labels`` are SVG to draw last, above any overlay."""
+
+    text: str
+    frame: Frame
+    labels: str
+    unlabelled: int
+
+
+def draw_base(points: Sequence[LotPoint], x_axis: Axis, y_axis: Axis) -> Base:
+    """The plane with the hull's shadow and the lots: corners as filled squares, inner lots as rings."""
+    frame = framed(x_axis, y_axis)
+    outline = shadow([(point.x, point.y) for point in points])
+    if len(outline) > 1:
+        frame.axes.add_patch(
+            Polygon(outline, closed=True, facecolor=canvas.FILL, edgecolor=canvas.LOT, linewidth=1.2, zorder=1)
+        )
+    for is_corner, mark, fill, edge in ((False, "o", canvas.PAPER, canvas.INNER), (True, "s", canvas.LOT, canvas.LOT)):
+        chosen = [point for point in points if point.is_corner == is_corner]
+        frame.axes.plot(
+            [point.x for point in chosen],
+            [point.y for point in chosen],
+            linestyle="none",
+            marker=mark,
+            markersize=6.5,
+            markerfacecolor=fill,
+            markeredgecolor=edge,
+            markeredgewidth=1.5,
+            zorder=3,
+        )
+    return Base(canvas.markup(frame.figure), frame, *_labels(frame, points))
+
+
+def _labels(frame: Frame, points: Sequence[LotPoint]) -> tuple[str, int]:
+    """Names beside points as SVG, corners first; and how many found no room."""
+    left, top, right, bottom = frame.box
+    first = sorted(points, key=lambda point: not point.is_corner)
+    at = [(frame.x(point.x), bottom - frame.y(point.y)) for point in first]
+    placed, left_over = labels.place(at, [point.name for point in first], (left, 0, right, bottom - top))
+    return labels.markup(placed, bottom), left_over
+
+
+def shadow(points: Sequence[Pair]) -> list[Pair]:
+    """Corners of the convex hull of points in the plane, counter-clockwise (Andrew's monotone chain, 1979).
+
+    One corner for one place, two for points in a line.  For drawing only: in floating point.
+    """
+    ordered = sorted(set(points))
+    if len(ordered) < 3:
+        return ordered
+    chains = []
+    for run in (ordered, ordered[::-1]):
+        chain: list[Pair] = []
+        for point in run:
+            while len(chain) > 1 and _turn(chain[-2], chain[-1], point) <= 0:
+                chain.pop()
+            chain.append(point)
+        chains.append(chain[:-1])
+    return chains[0] + chains[1]
+
+
+def _turn(a: Pair, b: Pair, c: Pair) -> float:
+    return (b[0] - a[0]) * (c[1] - a[1]) - (b[1] - a[1]) * (c[0] - a[0])
+
+
+def overlay_markup(frame: Frame, overlay: Overlay) -> str:
+    """SVG for one order: its window as a box, the separating line, the blend as a diamond."""
+    parts = []
+    if (*overlay.x_window, *overlay.y_window) != (None,) * 4:
+        parts.append(_window(frame, overlay))
+    if overlay.separation is not None:
+        parts.append(_line(frame, overlay.separation))
+    for place, name in ((overlay.nearest, "fig-nearest"), (overlay.blend, "fig-blend")):
+        if place is not None:
+            x, y = frame.x(place[0]), frame.y(place[1])
+            parts.append(f'<path class="{name}" d="M{x:.1f} {y - 7:.1f}l7 7-7 7-7-7z"/>')
+    return "".join(parts)
+
+
+def _window(frame: Frame, overlay: Overlay) -> str:
+    left, top, right, bottom = frame.box
+    (x_low, x_high), (y_low, y_high) = overlay.x_window, overlay.y_window
+    x0 = left if x_low is None else min(max(frame.x(x_low), left), right)
+    x1 = right if x_high is None else min(max(frame.x(x_high), left), right)
+    y0 = bottom if y_low is None else min(max(frame.y(y_low), top), bottom)
+    y1 = top if y_high is None else min(max(frame.y(y_high), top), bottom)
+    return f'<path class="fig-window" d="M{x0:.1f} {y0:.1f}H{x1:.1f}V{y1:.1f}H{x0:.1f}z"/>'
+
+
+def _line(frame: Frame, line: Separation) -> str:
+    ends = clipped(line, frame.x_axis.ends, frame.y_axis.ends)
+    if ends is None:
+        return ""
+    (x0, y0), (x1, y1) = ends
+    return (
+        f'<path class="fig-separation" d="M{frame.x(x0):.1f} {frame.y(y0):.1f}L{frame.x(x1):.1f} {frame.y(y1):.1f}"/>'
+    )
+
+
+def clipped(line: Separation, x_ends: Pair, y_ends: Pair) -> tuple[Pair, Pair] | None:
+    """The two ends of a line inside a rectangle, or None where it passes by."""
+    found: list[Pair] = []
+    if line.up:
+        found += [(x, (line.level - line.across * x) / line.up) for x in x_ends]
+    if line.across:
+        found += [((line.level - line.up * y) / line.across, y) for y in y_ends]
+    slack_x, slack_y = ((ends[1] - ends[0]) * 1e-9 for ends in (x_ends, y_ends))
+    inside = sorted(
+        {
+            (x, y)
+            for x, y in found
+            if x_ends[0] - slack_x <= x <= x_ends[1] + slack_x and y_ends[0] - slack_y <= y <= y_ends[1] + slack_y
+        }
+    )
+    return (inside[0], inside[-1]) if len(inside) > 1 else None

@@ -1,0 +1,81 @@
+"""Labels beside points, placed so that none covers another label, a point or the frame."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from html import escape
+
+from generator.report.figures.canvas import SMALL_SIZE, width_of
+
+Box = tuple[float, float, float, float]
+
+#: Where a label may stand around its point: (horizontal, vertical) side, best first.
+_SIDES = ((1, 1), (-1, 1), (1, -1), (-1, -1), (1, 0), (-1, 0), (0, 1), (0, -1))
+#: Distances from the point at which all sides are tried in turn, in SVG units.
+_GAPS = (5.0, 9.0, 14.0)
+_MARK = 5.0
+#: From the middle of a line of small text down to its base line.
+_BELOW_MIDDLE = 4.0
+
+
+@dataclass(frozen=True, slots=True)
+class Placed:
+    """A label's text and the left end and middle height of where it stands, in SVG units."""
+
+    text: str
+    x: float
+    y: float
+
+
+def place(
+    points: Sequence[tuple[float, float]],
+    texts: Sequence[str],
+    frame: Box,
+    obstacles: Sequence[Box] = (),
+    most: int = 25,
+) -> tuple[list[Placed], int]:
+    """Labels for ``points`` (SVG units, y upwards), and how many found no room.
+
+    Greedy, in the order given, at most ``most``: a label that would overlap a point, an obstacle, an
+    earlier label or leave the frame tries the next place, and is left out when there is none.
+    Boxes are (left, bottom, right, top).
+    """
+    taken: list[Box] = [(x - _MARK, y - _MARK, x + _MARK, y + _MARK) for x, y in points]
+    taken.extend(obstacles)
+    placed: list[Placed] = []
+    for (x, y), text in zip(points, texts, strict=True):
+        if len(placed) == most:
+            break
+        box = next((box for box in _candidates(x, y, text) if _is_free(box, taken, frame)), None)
+        if box is not None:
+            taken.append(box)
+            placed.append(Placed(text, box[0], (box[1] + box[3]) / 2))
+    return placed, len(points) - len(placed)
+
+
+def markup(placed: Sequence[Placed], floor: float) -> str:
+    """SVG of placed labels, whose heights count upwards from ``floor`` (in SVG units, y downwards)."""
+    return "".join(
+        f'<text class="fig-label" x="{label.x:.1f}" y="{floor - label.y + _BELOW_MIDDLE:.1f}">'
+        f"{escape(label.text)}</text>"
+        for label in placed
+    )
+
+
+def _candidates(x: float, y: float, text: str) -> list[Box]:
+    wide, high = width_of(text), SMALL_SIZE * 1.1
+    boxes = []
+    for gap in _GAPS:
+        for across, up in _SIDES:
+            left = x + across * gap + (0 if across > 0 else -wide if across < 0 else -wide / 2)
+            bottom = y + up * gap + (-high / 2 + up * high / 2 if across == 0 or up == 0 else up * high / 2 - high / 2)
+            boxes.append((left, bottom, left + wide, bottom + high))
+    return boxes
+
+
+def _is_free(box: Box, taken: Sequence[Box], frame: Box) -> bool:
+    left, bottom, right, top = box
+    if left < frame[0] or bottom < frame[1] or right > frame[2] or top > frame[3]:
+        return False
+    return all(right <= other[0] or other[2] <= left or top <= other[1] or other[3] <= bottom for other in taken)

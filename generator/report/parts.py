@@ -1,0 +1,122 @@
+"""What pages are made of: tables, figures, sentences.  Values only, ready to be laid out by a template."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable
+from dataclasses import dataclass, field
+from typing import Literal
+
+FIGURE_SPACE = "\N{FIGURE SPACE}"
+PUNCTUATION_SPACE = "\N{PUNCTUATION SPACE}"
+
+Kind = Literal["text", "number"]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Cell:
+    """One cell: its text, where it leads, and what it is.
+
+    ``mark`` is the name of a small drawn sign that stands before the text (a verdict, a lot's role);
+    ``tone`` is ``good``, ``bad`` or ``quiet``; ``detail`` is a second, smaller line.
+    """
+
+    text: str
+    href: str = ""
+    mark: str = ""
+    tone: str = ""
+    detail: str = ""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Column:
+    """A column: its header, unit, and whether it holds numbers (right-aligned)."""
+
+    title: str
+    unit: str = ""
+    kind: Kind = "text"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Row:
+    """A row; the first cell is its header.  ``is_total`` sets it apart as a sum."""
+
+    cells: tuple[Cell, ...]
+    is_total: bool = False
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Table:
+    """A table with a caption, an anchor and headers; ``note`` is a sentence below it."""
+
+    anchor: str
+    caption: str
+    columns: tuple[Column, ...]
+    rows: tuple[Row, ...]
+    note: str = ""
+    is_caption_shown: bool = True
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Legend:
+    """One entry of a figure's legend: the name of a drawn sign and what it stands for."""
+
+    mark: str
+    text: str
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class FigureView:
+    """A figure: SVG markup drawn by the program, its caption, its legend."""
+
+    anchor: str
+    title: str
+    svg: str
+    caption: str
+    legend: tuple[Legend, ...] = ()
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Fact:
+    """A name and a value, as in "Client: …"."""
+
+    name: str
+    value: str
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Section:
+    """A part of a page: heading, sentences, tables, figures; ``is_folded`` shows the heading only."""
+
+    anchor: str
+    title: str
+    sentences: tuple[str, ...] = ()
+    tables: tuple[Table, ...] = ()
+    figures: tuple[FigureView, ...] = ()
+    folded: tuple[Section, ...] = ()
+    layout: Literal["plain", "beside", "grid"] = "plain"
+    facts: tuple[Fact, ...] = field(default=())
+
+
+def text_cell(text: str, **more: str) -> Cell:
+    """A cell of text."""
+    return Cell(text=text, **more)
+
+
+def aligned(texts: Iterable[str]) -> list[str]:
+    """Texts of one column padded behind, so that right-aligned their decimal points stand in one line.
+
+    For values shown as typed, whose number of decimals differs; a comma counts as the point.
+    """
+    column = list(texts)
+    behind = [_behind_point(text) for text in column]
+    widest = max(behind, default=0)
+    return [
+        text + (PUNCTUATION_SPACE if widest and not own else "") + FIGURE_SPACE * (widest - own)
+        for text, own in zip(column, behind, strict=True)
+    ]
+
+
+def _behind_point(text: str) -> int:
+    """How many characters stand behind the last decimal point or comma."""
+    place = max(text.rfind("."), text.rfind(","))
+    return len(text) - place - 1 if place >= 0 else 0

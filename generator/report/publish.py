@@ -1,0 +1,387 @@
+"""Publishing: files by address become an output folder that is never half-published.
+
+A new campaign's folder comes whole.  In one that is there, new files come first, then those that
+replace others, its index last of all; the output folder's own index after all campaigns, and the
+manifest after everything, as the record of what was written.  Only files that a manifest or a journal
+names are ever replaced or removed.  The journal is written before the pages: a process killed at any
+moment leaves old or new pages with working links, and the next one knows which files are its own and
+what to do again.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import json
+import os
+import shutil
+import time
+from collections.abc import Callable, Iterable, Mapping
+from dataclasses import dataclass, field, replace
+from datetime import UTC, datetime, timedelta
+from pathlib import Path, PurePosixPath
+
+from generator.disk import HeldError, WriteError, create, is_held, reason, sha256, sweep, unfinished, write_whole
+from generator.problems import Problem
+
+FORMAT = "hullbook-manifest-1"
+MANIFEST_NAME = ".hullbook-manifest.json"
+JOURNAL_NAME = ".hullbook-journal"
+#: The name under which the files that belong to no campaign are recorded.
+SHARED = ""
+
+#: Pages are open in browsers: what they load stays this long after no page names it any more.
+ASSET_GRACE = timedelta(days=1)
+#: All waiting for files that others hold, in one publication.
+LONGEST_WAIT = 20.0
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Published:
+    """What was written for one campaign.
+
+    ``files`` maps addresses to SHA-256 digests; ``about`` is JSON that ``book`` keeps with it;
+    ``fingerprint`` is of everything that the files were made of, "" where they must be made again.
+    """
+
+    fingerprint: str
+    files: Mapping[str, str]
+    about: Mapping[str, object] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Manifest:
+    """What an output folder holds by right: files by campaign, and files that are no longer used.
+
+    ``retired`` maps addresses to (digest, moment in ISO text since when, "" = remove at once).
+    """
+
+    campaigns: Mapping[str, Published] = field(default_factory=dict)
+    retired: Mapping[str, tuple[str, str]] = field(default_factory=dict)
+
+    def files(self) -> dict[str, str]:
+        """Every address in use, with its digest."""
+        return {path: digest for published in self.campaigns.values() for path, digest in published.files.items()}
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Written:
+    """What one step of a publication did: addresses written, those still held, what was in the way."""
+
+    paths: tuple[str, ...] = ()
+    pending: tuple[str, ...] = ()
+    problems: tuple[Problem, ...] = ()
+
+
+@dataclass(frozen=True, slots=True)
+class _Journal:
+    """What a killed publication was about to write (digests by address), and for which campaigns."""
+
+    files: Mapping[str, frozenset[str]]
+    campaigns: frozenset[str]
+
+
+class Publication:
+    """One publication, from the first campaign to the manifest; its user holds the writer's lock.
+
+    ``put`` or ``keep`` each campaign, then ``finish``.  A campaign that gets neither is gone, and its
+    files are removed.  ``before_replace`` is called before every rename (tests put faults there).
+    """
+
+    def __init__(
+        self,
+        output: Path,
+        *,
+        moment: datetime,
+        before_replace: Callable[[Path], None] | None = None,
+        sleep: Callable[[float], None] = time.sleep,
+    ) -> None:
+        self._output = output
+        self._moment = moment.astimezone(UTC)
+        self._before_replace = before_replace
+        self._sleep = sleep
+        self._wait_left = LONGEST_WAIT
+        journal = _read_journal(output)
+        sweep({output, *((output / path).parent for path in journal.files)})
+        self.old = _void(read_manifest(output), journal.campaigns)
+        self._owned = _owned(self.old, journal)
+        self._new: dict[str, Published] = {}
+        self._pending: list[str] = []
+
+    def keep(self, campaign: str) -> None:
+        """Leave a campaign as it is published."""
+        self._new[campaign] = self.old.campaigns[campaign]
+
+    def is_complete(self, campaign: str) -> bool:
+        """Whether every file of a published campaign is still there (its content is not read)."""
+        return not _missing(self._output, self.old.campaigns[campaign].files)
+
+    def put(self, campaign: str, published: Published, files: Mapping[str, bytes]) -> Written:
+        """Write a campaign's files; ``published.files`` is filled in here.
+
+        Files that hold these bytes already are not touched; foreign files in the way are not either,
+        and each is a problem.  WriteError where the disk is full, read-only or gone.
+        """
+        free, problems = self._free(files)
+        digests = {path: sha256(data) for path, data in free.items()}
+        due = [path for path in free if not _holds(self._output / path, digests[path], len(free[path]))]
+        self._announce(campaign, {path: digests[path] for path in due})
+        in_order = {path: free[path] for path in _in_order(self._output, campaign, due)}
+        written = self._write_new_folder(campaign, in_order)
+        rest = {path: data for path, data in in_order.items() if path not in written}
+        more, pending = self._write(rest)
+        written += more
+        for path in pending:
+            digests[path] = sha256((self._output / path).read_bytes())
+        self._pending += pending
+        again = bool(pending or problems)
+        self._new[campaign] = replace(
+            published, files=dict(sorted(digests.items())), fingerprint="" if again else published.fingerprint
+        )
+        return Written(paths=tuple(written), pending=tuple(pending), problems=tuple(problems))
+
+    def finish(self) -> Written:
+        """Write the manifest and remove what is no longer used; returns what was removed."""
+        in_use = {path for published in self._new.values() for path in published.files}
+        leftover = {path: digests for path, digests in self._owned.items() if path not in in_use}
+        retired = self._retired(leftover)
+        gone = sorted(path for path in leftover if path not in retired)
+        if gone:
+            self._announce(SHARED, {path: min(leftover[path], default="") for path in gone})
+        manifest = Manifest(campaigns=self._new, retired=retired)
+        try:
+            write_whole(
+                self._output / MANIFEST_NAME, _dump(manifest), durable=True, before_replace=self._before_replace
+            )
+        except HeldError:
+            return Written(pending=(MANIFEST_NAME,))
+        removed = [path for path in gone if self._remove(path, leftover[path])]
+        with contextlib.suppress(FileNotFoundError):
+            (self._output / JOURNAL_NAME).unlink()
+        return Written(paths=tuple(removed))
+
+    def _free(self, files: Mapping[str, bytes]) -> tuple[dict[str, bytes], list[Problem]]:
+        """Split off files whose place is taken by something that this program did not write."""
+        free: dict[str, bytes] = {}
+        problems: list[Problem] = []
+        for path, data in files.items():
+            blocker = _blocker(self._output, path, is_owned=path in self._owned, data=data)
+            if blocker is None:
+                free[path] = data
+            else:
+                problems.append(_foreign(blocker))
+        return free, problems
+
+    def _announce(self, campaign: str, files: Mapping[str, str]) -> None:
+        """Note in the journal what is about to happen, before it does."""
+        if not files:
+            return
+        line = json.dumps({"campaign": campaign, "files": dict(files)}, ensure_ascii=False)
+        try:
+            self._output.mkdir(parents=True, exist_ok=True)
+            with (self._output / JOURNAL_NAME).open("a", encoding="utf-8", newline="\n") as stream:
+                stream.write(line + "\n")
+                stream.flush()
+                os.fsync(stream.fileno())
+        except OSError as error:
+            raise WriteError(f"the output folder can't be written ({reason(error)})") from error
+        for path, digest in files.items():
+            self._owned[path] = self._owned.get(path, frozenset()) | {digest}
+
+    def _write_new_folder(self, campaign: str, files: Mapping[str, bytes]) -> list[str]:
+        """Rename a new campaign's folder into place with all its pages, since these link to each other.
+
+        Returns what was written; where the folder can't be renamed its pages are left to come one by one.
+        """
+        pages = {path: data for path, data in files.items() if path.startswith(f"{campaign}/")}
+        target = self._output / campaign
+        if campaign == SHARED or not pages or os.path.lexists(target):
+            return []
+        assets, _ = self._write({path: data for path, data in files.items() if path not in pages})
+        beside = unfinished(self._output)
+        try:
+            for path, data in pages.items():
+                file = beside / path.removeprefix(f"{campaign}/")
+                file.parent.mkdir(parents=True, exist_ok=True)
+                create(file, data)
+            if self._before_replace is not None:
+                self._before_replace(target)
+            beside.rename(target)
+        except OSError as error:
+            shutil.rmtree(beside, ignore_errors=True)
+            if not is_held(error):
+                raise WriteError(f"the output folder can't be written ({reason(error)})") from error
+            return assets
+        return [*assets, *pages]
+
+    def _write(self, files: Mapping[str, bytes]) -> tuple[list[str], list[str]]:
+        written: list[str] = []
+        pending: list[str] = []
+        for path, data in files.items():
+            try:
+                write_whole(self._output / path, data, before_replace=self._before_replace, pause=self._pause)
+                written.append(path)
+            except HeldError:
+                pending.append(path)
+        return written, pending
+
+    def _pause(self, seconds: float) -> None:
+        if self._wait_left > 0:
+            self._wait_left -= seconds
+            self._sleep(seconds)
+
+    def _retired(self, leftover: Mapping[str, frozenset[str]]) -> dict[str, tuple[str, str]]:
+        """What is no longer used but has to stay for a while.
+
+        Assets stay for the readers of pages that are open; while a page is held, everything stays
+        that it may link to.
+        """
+        now = self._moment.replace(tzinfo=None, microsecond=0)
+        retired: dict[str, tuple[str, str]] = {}
+        for path, digests in sorted(leftover.items()):
+            digest, since = self.old.retired.get(path, (min(digests, default=""), ""))
+            if path.startswith("assets/"):
+                since = since or f"{now.isoformat()}Z"
+                is_due = now - datetime.fromisoformat(since.removesuffix("Z")) > ASSET_GRACE
+            else:
+                is_due = True
+            if self._pending or not is_due:
+                retired[path] = (digest, since)
+        return retired
+
+    def _remove(self, path: str, digests: frozenset[str]) -> bool:
+        """Remove a file that still is as it was written, and folders that it leaves empty."""
+        file = self._output / path
+        try:
+            if sha256(file.read_bytes()) not in digests:
+                return False  # someone has made it their own since
+            file.unlink()
+        except OSError:
+            return False
+        for parent in PurePosixPath(path).parents[:-1]:
+            try:
+                (self._output / parent).rmdir()
+            except OSError:
+                break
+        return True
+
+
+def read_manifest(output: Path) -> Manifest:
+    """Read the manifest of an output folder; an empty one where there is none that can be read."""
+    try:
+        content = json.loads((output / MANIFEST_NAME).read_bytes())
+        if content["format"] != FORMAT:
+            return Manifest()
+        return Manifest(
+            campaigns={
+                name: Published(fingerprint=item["fingerprint"], files=item["files"], about=item["about"])
+                for name, item in content["campaigns"].items()
+            },
+            retired={path: (digest, since) for path, (digest, since) in content["retired"].items()},
+        )
+    except (OSError, ValueError, TypeError, KeyError, AttributeError):
+        return Manifest()
+
+
+def _dump(manifest: Manifest) -> bytes:
+    content = {
+        "format": FORMAT,
+        "campaigns": {
+            name: {"fingerprint": item.fingerprint, "files": item.files, "about": item.about}
+            for name, item in sorted(manifest.campaigns.items())
+        },
+        "retired": manifest.retired,
+    }
+    return json.dumps(content, indent=0, ensure_ascii=False, sort_keys=True).encode() + b"\n"
+
+
+def _read_journal(output: Path) -> _Journal:
+    files: dict[str, frozenset[str]] = {}
+    campaigns: set[str] = set()
+    try:
+        text = (output / JOURNAL_NAME).read_bytes().decode("utf-8", "replace")
+    except OSError:
+        return _Journal({}, frozenset())
+    for line in text.splitlines():
+        with contextlib.suppress(ValueError, TypeError, KeyError, AttributeError):  # a line that a kill cut off
+            entry = json.loads(line)
+            for path, digest in entry["files"].items():
+                files[path] = files.get(path, frozenset()) | {digest}
+            campaigns.add(entry["campaign"])
+    return _Journal(files, frozenset(campaigns))
+
+
+def _void(manifest: Manifest, campaigns: Iterable[str]) -> Manifest:
+    """The manifest with the fingerprints of these campaigns emptied: they must be made again."""
+    emptied = {
+        name: replace(manifest.campaigns[name], fingerprint="") for name in campaigns if name in manifest.campaigns
+    }
+    return replace(manifest, campaigns={**manifest.campaigns, **emptied})
+
+
+def _owned(manifest: Manifest, journal: _Journal) -> dict[str, frozenset[str]]:
+    """Every address that this program has written, with the digests that its content may have."""
+    owned = {path: frozenset({digest}) for path, digest in manifest.files().items()}
+    owned |= {path: frozenset({digest}) for path, (digest, _) in manifest.retired.items()}
+    for path, digests in journal.files.items():
+        owned[path] = owned.get(path, frozenset()) | digests
+    return owned
+
+
+def _missing(output: Path, files: Iterable[str]) -> bool:
+    """Whether one of the files is gone, at the cost of one listing per folder."""
+    wanted: dict[str, set[str]] = {}
+    for path in files:
+        folder, _, name = path.rpartition("/")
+        wanted.setdefault(folder, set()).add(name)
+    for folder, names in wanted.items():
+        try:
+            if not names <= set(os.listdir(output / folder)):  # noqa: PTH208 - names are all that is wanted
+                return True
+        except OSError:
+            return True
+    return False
+
+
+def _holds(path: Path, digest: str, size: int) -> bool:
+    try:
+        return path.stat().st_size == size and sha256(path.read_bytes()) == digest
+    except OSError:
+        return False
+
+
+def _in_order(output: Path, campaign: str, paths: Iterable[str]) -> list[str]:
+    """New files first: what links to them comes later.  Assets before pages, the index at the end."""
+
+    def rank(path: str) -> tuple[int, str]:
+        if path in (f"{campaign}/index.html", "index.html"):
+            return 3, path
+        if path.startswith("assets/"):
+            return 0, path
+        return (2 if (output / path).exists() else 1), path
+
+    return sorted(paths, key=rank)
+
+
+def _blocker(output: Path, path: str, *, is_owned: bool, data: bytes) -> str | None:
+    """The address of what stands in the way of a file and is not this program's; None if nothing does."""
+    for parent in reversed(PurePosixPath(path).parents[:-1]):
+        if (output / parent).exists() and not (output / parent).is_dir():
+            return parent.as_posix()
+    file = output / path
+    if file.is_dir():
+        return path
+    if is_owned or not os.path.lexists(file):
+        return None
+    try:
+        return None if file.read_bytes() == data else path
+    except OSError:
+        return path
+
+
+def _foreign(path: str) -> Problem:
+    return Problem(
+        file=path,
+        message="this file in the output folder was not written by this program and stands in the way of a page",
+        remedy="move it away, or choose another output folder",
+        severity="drops",
+    )

@@ -1,0 +1,349 @@
+"""When to build: events are hints, a scan decides.
+
+An observer only wakes the loop.  The loop stamps every input file, waits until a campaign is quiet
+and its files are whole, and builds what changed; events during a build wake the next round.  Now and
+then everything is looked at anew by content, whatever the events and stamps said.
+"""
+
+from __future__ import annotations
+
+import contextlib
+import logging
+import os
+import signal
+import sys
+import threading
+import time
+import warnings
+from collections.abc import Callable, Iterator
+from dataclasses import replace
+from datetime import datetime
+from pathlib import Path
+from types import FrameType
+from typing import TYPE_CHECKING, Literal
+
+from generator import disk, folders
+from generator.book import Job, Log, build, writer_lock
+from generator.disk import WriteError
+from generator.folders import SITE, NoCampaignsError
+from generator.intake.campaign import input_name, is_whole
+from generator.lock import OwnerLock
+from generator.report.publish import MANIFEST_NAME
+from generator.settling import Scan, Settling
+
+if TYPE_CHECKING:
+    from watchdog.observers.api import BaseObserver
+
+Poll = Literal["auto", "always", "never"]
+
+#: Scans without any event: the first catches lost events soon, the second is all there is.
+RESCAN_EVERY = 10.0
+POLL_EVERY = 1.0
+#: Polling takes at most this part of the time: a slow share is asked less often.
+_POLL_SHARE = 0.05
+#: Everything is read and compared by content so often: for a change that left size and time alike.
+FULL_LOOK_EVERY = 300.0
+#: Pauses before what failed is tried again (a full disk, a page held by a reader), then the last one.
+RETRY_PAUSES = (2.0, 4.0, 8.0, 16.0, 32.0, 60.0)
+#: An endless stream of events makes no more than so many scans per second.
+_LEAST_PAUSE = 0.05
+#: So soon the end is noticed when it was asked for without waking the loop.
+_LONGEST_WAIT = 0.25
+
+_NETWORK_TYPES = ("nfs", "cifs", "smb", "fuse.sshfs", "9p", "afs", "ncpfs", "fuse.rclone", "davfs", "fuse.davfs")
+_IDLE_EVENTS = frozenset({"opened", "closed_no_write"})
+
+
+class Hints:
+    """An observer that wakes the loop, restarted when it dies; without one the loop polls."""
+
+    def __init__(self, root: Path, wake: threading.Event) -> None:
+        self._root = os.path.realpath(root)  # an observer gets no events through a link
+        self._wake = wake
+        self._observer: BaseObserver | None = None
+
+    def ensure(self) -> bool:
+        """Start observing if that is not going on; False where the system refuses."""
+        observer = self._observer
+        if observer is not None and observer.is_alive() and all(emitter.is_alive() for emitter in observer.emitters):
+            return True
+        self.stop()
+        from watchdog.events import FileSystemEvent, FileSystemEventHandler
+        from watchdog.observers import Observer
+
+        # It warns, at length, of folders that come with folders inside, as a revision does.
+        warnings.filterwarnings("ignore", category=RuntimeWarning, module=r"watchdog\.")
+        wake = self._wake
+
+        class Handler(FileSystemEventHandler):
+            """Set the event and return: an error or a delay here would lose events."""
+
+            def on_any_event(self, event: FileSystemEvent) -> None:
+                """Wake the loop, but not for a file that was only read."""
+                if event.event_type not in _IDLE_EVENTS:
+                    wake.set()
+
+        observer = Observer()
+        try:
+            observer.schedule(Handler(), self._root, recursive=True)
+            observer.start()
+        except OSError:
+            return False
+        self._observer = observer
+        self._wake.set()  # what happened before the start gave no event
+        return True
+
+    def stop(self) -> None:
+        """End the observer's threads."""
+        observer, self._observer = self._observer, None
+        if observer is not None and observer.is_alive():
+            observer.stop()
+            observer.join(5)
+
+
+class _WakeOnWarning(logging.Handler):
+    """The observer tells of lost events in its log only."""
+
+    def __init__(self, wake: threading.Event) -> None:
+        super().__init__(logging.WARNING)
+        self._wake = wake
+
+    def emit(self, record: logging.LogRecord) -> None:  # noqa: ARG002 - what is said does not matter
+        """Wake the loop: a scan finds what was lost."""
+        self._wake.set()
+
+
+def watch(
+    job: Job,
+    log: Log,
+    *,
+    settle_seconds: float,
+    poll: Poll,
+    clock: Callable[[], datetime],
+    stop: threading.Event | None = None,
+) -> int:
+    """Build now and after every change until a signal comes, or ``stop`` is set; returns 0.
+
+    Raises LockedError where another process is the writer of the output folder.
+    """
+    wake = threading.Event()
+    ending = stop or threading.Event()
+    listener = _WakeOnWarning(wake)
+    with writer_lock(job.output) as lock, _signals(ending, wake) if stop is None else contextlib.nullcontext():
+        logging.getLogger("watchdog").addHandler(listener)
+        watcher = _Watcher(job, log, lock, Settling(settle_seconds), settle_seconds, clock, wake, ending)
+        try:
+            watcher.run(has_events=wants_events(job.campaigns, poll))
+        finally:
+            logging.getLogger("watchdog").removeHandler(listener)
+    log.say("stopped watching")
+    return 0
+
+
+class _Watcher:
+    """The loop and what it remembers from round to round."""
+
+    def __init__(
+        self,
+        job: Job,
+        log: Log,
+        lock: OwnerLock,
+        settling: Settling,
+        settle_seconds: float,
+        clock: Callable[[], datetime],
+        wake: threading.Event,
+        ending: threading.Event,
+    ) -> None:
+        self._job = job
+        self._log = log
+        self._lock = lock
+        self._settling = settling
+        self._glance = min(max(settle_seconds / 2, _LEAST_PAUSE), 1.0)
+        self._clock = clock
+        self._wake = wake
+        self._ending = ending
+        self._hints = Hints(job.campaigns, wake)
+        self._is_gone = False
+        self._device: int | None = None
+        self._scan_seconds = 0.0
+        self._full_look_at = time.monotonic() + FULL_LOOK_EVERY
+        self._retry_at: float | None = None
+        self._blocked_until = 0.0
+        self._failures = 0
+        self._is_published = False
+
+    def run(self, *, has_events: bool) -> None:
+        """Go round until the end is asked for."""
+        how = "events" if has_events else "polling"
+        self._log.say(f"watching {self._job.campaigns} by {how}, pages go to {self._job.output}; Ctrl-C ends it")
+        try:
+            while not self._ending.is_set():
+                if has_events and not self._is_gone and not self._hints.ensure():
+                    has_events = False
+                    self._log.warn("the system gives no events for this folder: polling instead")
+                self._lock.beat()
+                self._round()
+                self._rest(self._timeout(has_events))
+        finally:
+            self._hints.stop()
+
+    def _rest(self, seconds: float) -> None:
+        """Wait for an event, or the end, or so long; in short waits, which Ctrl-C ends everywhere."""
+        until = time.monotonic() + seconds
+        while not self._ending.is_set():
+            left = until - time.monotonic()
+            if left <= 0 or self._wake.wait(min(left, _LONGEST_WAIT)):
+                break
+        self._wake.clear()
+        self._ending.wait(_LEAST_PAUSE)
+
+    def _timeout(self, has_events: bool) -> float:
+        """Say how long to wait for an event, in seconds."""
+        if self._settling.waiting:
+            return self._glance
+        slow = self._scan_seconds / _POLL_SHARE
+        longest = max(RESCAN_EVERY if has_events else POLL_EVERY, slow)
+        if self._is_gone:
+            longest = POLL_EVERY
+        now = time.monotonic()
+        due = [at - now for at in (self._full_look_at, self._retry_at) if at is not None]
+        return max(min([longest, *due]), 0.0)
+
+    def _round(self) -> None:
+        """Scan once, and build what is ready."""
+        began = time.monotonic()
+        scan = self._scan()
+        if scan is None:
+            return
+        self._scan_seconds = time.monotonic() - began
+        ready = self._settling.look(time.monotonic(), scan)
+        if time.monotonic() < self._blocked_until:
+            return
+        chosen = frozenset(folder for folder in ready.quiet if self._is_whole(folder)) | ready.overdue
+        if any(folder.name == SITE for folder in self._settling.waiting - chosen):
+            return  # every campaign reads it
+        if self._is_full_look_due():
+            self._build(scan, chosen, everything=True)
+        elif chosen:
+            self._build(scan, chosen, everything=any(folder.name == SITE for folder in chosen))
+
+    def _scan(self) -> Scan | None:
+        """Stamp all files; None while the campaigns folder is away."""
+        try:
+            scan = folders.scan(self._job.campaigns)
+            device = self._job.campaigns.stat().st_dev
+        except (NoCampaignsError, OSError):
+            self._tell_gone()
+            return None
+        if not scan and self._device not in (None, device):  # the empty folder in which a share was mounted
+            self._tell_gone()
+            return None
+        self._device = device
+        if self._is_gone:
+            self._is_gone = False
+            self._log.say(f"{self._job.campaigns} is back")
+        return scan
+
+    def _tell_gone(self) -> None:
+        """Keep every page while the campaigns folder is away; tell it once."""
+        if not self._is_gone:
+            self._is_gone = True
+            self._hints.stop()
+            self._log.warn(f"{self._job.campaigns} is not there: waiting for it, pages stay as they are")
+
+    def _is_whole(self, folder: Path) -> bool:
+        """Whether no file of the folder looks as if it were still being written."""
+        place = folder.parent if folder.name == SITE else folder
+        snapshot = disk.read_folder(place, input_name, at_most=folders.MOST_BYTES)
+        return not snapshot.unreadable and all(is_whole(name, data) for name, data in snapshot.files.items())
+
+    def _is_full_look_due(self) -> bool:
+        now = time.monotonic()
+        is_retry = self._retry_at is not None and now >= self._retry_at
+        is_lost = self._is_published and not (self._job.output / MANIFEST_NAME).exists()
+        return is_retry or is_lost or now >= self._full_look_at
+
+    def _build(self, scan: Scan, chosen: frozenset[Path], *, everything: bool) -> None:
+        """Build, and remember what is built and what has to be tried again."""
+        began = time.monotonic()
+        without = self._settling.waiting - chosen
+        try:
+            outcome = build(
+                replace(self._job, moment=self._clock()),
+                self._lock,
+                self._log,
+                only=None if everything else chosen,
+                without=without,
+                is_wanted=lambda: not self._ending.is_set(),
+            )
+        except NoCampaignsError:
+            return  # gone this very moment: the next scan tells
+        except WriteError as error:
+            self._is_published = False
+            self._blocked_until = self._fail(f"{error}; the pages stay as they were")
+            return
+        self._settling.built({*chosen, *(scan if everything else ())} - without, scan)
+        self._is_published = True
+        if everything:
+            self._full_look_at = time.monotonic() + FULL_LOOK_EVERY
+        if outcome.pending:
+            self._fail(f"{len(outcome.pending)} files are held by other programs")
+        else:
+            self._retry_at, self._failures = None, 0
+        if outcome.made or outcome.written or outcome.removed:
+            self._log.say(f"{outcome.sentence()} in {time.monotonic() - began:.2f} s")
+
+    def _fail(self, what: str) -> float:
+        """Tell of a failure, and return when to try again."""
+        pause = RETRY_PAUSES[min(self._failures, len(RETRY_PAUSES) - 1)]
+        self._failures += 1
+        self._retry_at = time.monotonic() + pause
+        self._log.warn(f"{what}; trying again in {pause:.0f} s")
+        return self._retry_at
+
+
+def wants_events(root: Path, poll: Poll) -> bool:
+    """Whether to wait for events: ``auto`` polls on network folders, which give none for others' edits."""
+    if poll != "auto":
+        return poll == "never"
+    real = os.path.realpath(root)
+    if sys.platform == "win32":
+        return not real.startswith("\\\\")
+    try:
+        mounts = Path("/proc/mounts").read_text(encoding="utf-8", errors="replace")
+    except OSError:
+        return True
+    return not mount_type(real, mounts).startswith(_NETWORK_TYPES)
+
+
+def mount_type(path: str, mounts: str) -> str:
+    """Find the file system type of an absolute path in the text of ``/proc/mounts``; "" if unknown."""
+    found, longest = "", -1
+    for line in mounts.splitlines():
+        fields = line.split(" ")
+        if len(fields) < 3:
+            continue
+        point = fields[1].replace("\\040", " ")
+        is_above = path == point or path.startswith(point.rstrip("/") + "/")
+        if is_above and len(point) >= longest:
+            found, longest = fields[2], len(point)
+    return found
+
+
+@contextlib.contextmanager
+def _signals(ending: threading.Event, wake: threading.Event) -> Iterator[None]:
+    """End the loop cleanly at SIGINT and SIGTERM; a second one ends the program at once."""
+
+    def end(number: int, _frame: FrameType | None) -> None:
+        if ending.is_set():
+            signal.signal(number, signal.SIG_DFL)
+            signal.raise_signal(number)
+        ending.set()
+        wake.set()
+
+    before = {number: signal.signal(number, end) for number in (signal.SIGINT, signal.SIGTERM)}
+    try:
+        yield
+    finally:
+        for number, handler in before.items():
+            signal.signal(number, handler)

@@ -1,0 +1,206 @@
+from dataclasses import replace
+from fractions import Fraction
+
+import pytest
+from hypothesis import given
+from hypothesis import strategies as st
+
+from generator.findings.records import Findings, HullFinding, LotFinding, OrderFinding, Plan, PlannedOrder, Recipe
+from generator.history.compare import NO_CHANGE, Change, changes, from_bytes, headline, to_bytes
+
+
+def make_recipe(cost: float | None = 100.0, **shares: float) -> Recipe:
+    shares = shares or {"A": 0.5, "B": 0.5}
+    exact = {lot: Fraction(share) for lot, share in shares.items()}
+    return Recipe(shares=shares, exact=exact, amounts=None, cost=cost, values={})
+
+
+def make_order(name: str = "1042", **fields: object) -> OrderFinding:
+    given_fields = {"sentence": "", "verdict": "makeable", "recipes": {"cheapest": make_recipe()}, **fields}
+    return OrderFinding(order=name, **given_fields)
+
+
+def make_lot(name: str = "A", role: str | None = "corner") -> LotFinding:
+    return LotFinding(lot=name, role=role, stock=None, cost=None, assay={})
+
+
+def make_findings(*orders: OrderFinding, **fields: object) -> Findings:
+    return Findings(slug="s", title="S", quantity_unit="t", currency="EUR", orders=orders, **fields)
+
+
+def sentences(old: Findings, new: Findings) -> list[str]:
+    return [change.sentence for change in changes(old, new)]
+
+
+VERDICTS = st.sampled_from(["makeable", "edge", "short", "barred", "unreachable", None])
+COSTS = st.one_of(st.none(), st.floats(0, 1000))
+ORDERS = st.builds(
+    lambda name, verdict, cost, room, amount: make_order(
+        name,
+        verdict=verdict,
+        room=room,
+        room_unit="sd",
+        greatest_amount=amount,
+        recipes={"cheapest": make_recipe(cost)} if verdict else {},
+    ),
+    st.sampled_from("1234"),
+    VERDICTS,
+    COSTS,
+    st.one_of(st.none(), st.floats(-3, 3)),
+    COSTS,
+)
+FINDINGS = st.builds(
+    lambda orders, lots: make_findings(*orders, lots=tuple(lots)),
+    st.lists(ORDERS, unique_by=lambda order: order.order),
+    st.lists(
+        st.builds(make_lot, st.sampled_from("ABC"), st.sampled_from(["corner", "inner", None])),
+        unique_by=lambda lot: lot.lot,
+    ),
+)
+
+
+@given(FINDINGS)
+def test_nothing_changes_from_itself(findings: Findings) -> None:
+    """changes(a, a) is empty, and the headline says so."""
+    assert changes(findings, findings) == ()
+    assert headline(changes(findings, findings)) == NO_CHANGE
+
+
+@given(FINDINGS, FINDINGS)
+def test_changes_back_are_of_the_same_things(old: Findings, new: Findings) -> None:
+    """Going back changes the same subjects, with old and new exchanged."""
+    there = {(change.subject, change.old, change.new) for change in changes(old, new)}
+    back = {(change.subject, change.new, change.old) for change in changes(new, old)}
+    assert there == back
+
+
+@given(FINDINGS, FINDINGS)
+def test_changes_survive_their_file(old: Findings, new: Findings) -> None:
+    """What changes.json holds is what was written."""
+    found = changes(old, new)
+    assert from_bytes(to_bytes(found)) == found
+
+
+@given(FINDINGS, FINDINGS)
+def test_every_changed_verdict_is_told(old: Findings, new: Findings) -> None:
+    """An order in both whose verdict differs has a change of kind verdict, and no other has."""
+    before = {order.order: order.verdict for order in old.orders}
+    differ = {order.order for order in new.orders if before.get(order.order, order.verdict) != order.verdict}
+    assert {change.subject for change in changes(old, new) if change.kind == "verdict"} == differ
+
+
+def test_a_lost_verdict_in_words() -> None:
+    """A verdict that changed is one sentence, and hides the smaller changes of that order."""
+    old, new = make_order(), make_order(verdict="unreachable", recipes={}, greatest_amount=0.0)
+    assert sentences(make_findings(old), make_findings(new)) == ["Order 1042 is now unreachable; it was makeable."]
+
+
+@pytest.mark.parametrize(
+    "fields, old, new, sentence",
+    [
+        ("greatest_amount", 120.0, 80.5, "Order 1042: greatest amount fell to 80.5 t from 120 t."),
+        ("greatest_amount", None, 80.5, "Order 1042: the greatest amount is now 80.5 t; it had no bound."),
+        ("greatest_amount", 80.5, None, "Order 1042: the amount has no bound now."),
+        ("room", 0.8, 1.25, "Order 1042: room rose to 1.25 from 0.8."),
+    ],
+)
+def test_numbers_in_words(fields: str, old: float | None, new: float | None, sentence: str) -> None:
+    """A number that changed is told with its unit, the newer value first."""
+    before, after = make_order(**{fields: old}), make_order(**{fields: new})
+    assert sentences(make_findings(before), make_findings(after)) == [sentence]
+
+
+@pytest.mark.parametrize(
+    "old, new, sentence",
+    [
+        (100.0, 112.5, "Order 1042: cheapest cost rose to 112.5 EUR per t from 100 EUR per t."),
+        (100.0, None, "Order 1042: the cheapest cost is not known any more."),
+        (None, 99.0, "Order 1042: the cheapest cost is now known: 99 EUR per t."),
+    ],
+)
+def test_costs_in_words(old: float | None, new: float | None, sentence: str) -> None:
+    """A cost that moved, got lost or became known is told as such."""
+    before = make_order(recipes={"cheapest": make_recipe(old)})
+    after = make_order(recipes={"cheapest": make_recipe(new)})
+    assert sentences(make_findings(before), make_findings(after)) == [sentence]
+
+
+def test_a_moved_recipe_in_words() -> None:
+    """Of a recipe that moved the share that moved most is told; less than is printed is no move."""
+    before = make_findings(make_order(recipes={"cheapest": make_recipe(A=0.5, B=0.5)}))
+    after = make_findings(make_order(recipes={"cheapest": make_recipe(A=0.7, B=0.25, C=0.05)}))
+    near = make_findings(make_order(recipes={"cheapest": make_recipe(A=0.5004, B=0.4996)}))
+    assert sentences(before, after) == [
+        "Order 1042: the cheapest recipe moved, most of all lot B, to 25.0 % from 50.0 %."
+    ]
+    assert sentences(before, near) == []
+
+
+def test_what_prints_alike_is_no_change() -> None:
+    """A difference behind the printed digits is not told."""
+    before = make_order(recipes={"cheapest": make_recipe(100.0)})
+    after = make_order(recipes={"cheapest": make_recipe(100.000001)})
+    assert changes(make_findings(before), make_findings(after)) == ()
+
+
+def test_what_an_older_program_did_not_answer_is_no_change() -> None:
+    """Room, recipe and plan that only the newer findings have are not changed answers."""
+    before = make_findings(make_order(recipes={}))
+    planned = Plan(value=1.0, orders={}, left={}, runs_out=(), status="optimal", gap=0.0)
+    assert changes(before, make_findings(make_order(room=1.0, room_unit="sd"), plan=planned)) == ()
+
+
+def test_orders_and_lots_that_come_and_go() -> None:
+    """New and gone orders and lots are told, orders before lots."""
+    before = make_findings(make_order("1"), lots=(make_lot("A"), make_lot("B")))
+    after = make_findings(make_order("2", verdict="short"), lots=(make_lot("A", "inner"), make_lot("C")))
+    assert sentences(before, after) == [
+        "Order 1 is no longer in the campaign. It was makeable.",
+        "Order 2 is new: short.",
+        "Lot B is no longer there.",
+        "Lot C is new, a corner lot.",
+        "Lot A is now an inner lot; it was a corner lot.",
+    ]
+
+
+def test_the_plan_in_words() -> None:
+    """An order that the plan serves with another amount is told."""
+
+    def plan(accepted: float) -> Plan:
+        orders = {"1042": PlannedOrder(accepted=accepted, amounts={})}
+        return Plan(value=0.0, orders=orders, left={}, runs_out=(), status="optimal", gap=0.0)
+
+    before, after = make_findings(make_order(), plan=plan(50.0)), make_findings(make_order(), plan=plan(0.0))
+    assert sentences(before, after) == ["Order 1042: amount in the plan fell to 0 t from 50 t."]
+
+
+def test_a_flat_hull_in_words() -> None:
+    """A hull that lost a dimension is told."""
+
+    def hull(dimension: int) -> HullFinding:
+        return HullFinding(basis="dry", over=("N", "K"), dimension=dimension, corners=())
+
+    before, after = make_findings(hulls=(hull(2),)), make_findings(hulls=(hull(1),))
+    assert sentences(before, after) == ["The hull over N, K (dry) is now of dimension 1; it was of dimension 2."]
+
+
+def test_the_headline_is_the_gravest_change() -> None:
+    """Lost verdicts head the list, before gained ones; the others are counted."""
+    before = make_findings(make_order("1", verdict="short"), make_order("2"), lots=(make_lot("A"),))
+    after = make_findings(make_order("1"), make_order("2", verdict="unreachable"))
+    found = changes(before, after)
+    assert headline(found) == "Order 2 is now unreachable; it was makeable, and 2 more changes."
+    assert headline(found[:1]) == "Order 2 is now unreachable; it was makeable."
+
+
+def test_a_strange_file_is_a_value_error() -> None:
+    """changes.json with other content raises ValueError and nothing else."""
+    for data in (b"", b"{", b"[1]", b'[{"kind": "verdict"}]', b"3"):
+        with pytest.raises(ValueError, match=r"changes|Expecting"):
+            from_bytes(data)
+
+
+def test_changes_are_frozen() -> None:
+    """A change can be replaced, not edited."""
+    change = Change(kind="cost", subject="1", old=1.0, new=2.0, sentence="")
+    assert replace(change, new=3.0) != change

@@ -1,0 +1,360 @@
+import errno
+import json
+import os
+import shutil
+import signal
+import subprocess
+import sys
+import threading
+import time
+from collections.abc import Callable, Iterator
+from pathlib import Path
+
+import pytest
+
+from generator import watch as watching
+from generator.lock import LockedError
+from generator.watch import mount_type, wants_events, watch
+from tests.sample import ASSAYS, NOON, TARGETS, Told, light_pages, make_job, put_campaign, run
+
+#: Far more than anything here takes, so that a busy machine fails no test.
+PATIENCE = 60.0
+SETTLE = 0.1
+
+
+def eventually(claim: Callable[[], bool], what: str = "it never came true") -> None:
+    deadline = time.monotonic() + PATIENCE
+    while not claim():
+        assert time.monotonic() < deadline, what
+        time.sleep(0.02)
+
+
+class Watched:
+    """A watcher at work in a thread, with light pages."""
+
+    def __init__(self, root: Path, poll: str) -> None:
+        self.root = root
+        self.campaigns = root / "campaigns"
+        self.output = root / "output"
+        self.log = Told()
+        self._stop = threading.Event()
+        self._errors: list[BaseException] = []
+        self._thread = threading.Thread(target=self._watch, args=(poll,))
+        self._thread.start()
+
+    def _watch(self, poll: str) -> None:
+        try:
+            watch(make_job(self.root), self.log, settle_seconds=SETTLE, poll=poll, clock=lambda: NOON, stop=self._stop)
+        except BaseException as error:
+            self._errors.append(error)
+
+    def end(self) -> None:
+        self._stop.set()
+        self._thread.join(PATIENCE)
+        assert not self._thread.is_alive()
+        assert self._errors == []
+
+    def page(self, slug: str = "spring") -> str:
+        try:
+            return (self.output / slug / "index.html").read_text(encoding="utf-8")
+        except FileNotFoundError:
+            return ""
+
+    def shows(self, text: str, slug: str = "spring") -> None:
+        eventually(lambda: text in self.page(slug), f"{text!r} never came to {slug}: {self.log.said} {self.log.warned}")
+
+    def lacks(self, slug: str) -> None:
+        eventually(lambda: not (self.output / slug).exists() and slug not in self.index(), f"{slug} never went")
+
+    def index(self) -> str:
+        return (self.output / "index.html").read_text(encoding="utf-8")
+
+    def builds(self) -> int:
+        return sum(": " in line and "written" in line and "built" not in line for line in self.log.said)
+
+    def rests(self) -> None:
+        """Wait out a few settle times, in which anything due would be built."""
+        time.sleep(SETTLE * 6)
+
+
+@pytest.fixture(params=["never", "always"], ids=["events", "polling"])
+def watched(request: pytest.FixtureRequest, tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Iterator[Watched]:
+    monkeypatch.setattr(watching, "POLL_EVERY", 0.1)
+    put_campaign(tmp_path / "campaigns")
+    with light_pages():
+        watcher = Watched(tmp_path, request.param)
+        try:
+            watcher.shows("1: makeable")
+            yield watcher
+        finally:
+            watcher.end()
+
+
+def test_an_edit_is_published(watched: Watched) -> None:
+    """A saved edit comes to the page, and its campaign alone is built."""
+    put_campaign(watched.campaigns, targets_csv=TARGETS.replace(">= 16", ">= 21"))
+    watched.shows("1: unreachable")
+    assert "changed: Order 1 is now unreachable; it was makeable." in watched.page()
+
+
+def test_a_copied_folder_appears_and_goes(watched: Watched) -> None:
+    """A folder copied in becomes a campaign, one renamed changes its address, one removed goes."""
+    shutil.copytree(watched.campaigns / "spring", watched.campaigns / "summer")
+    watched.shows("1: makeable", "summer")
+    (watched.campaigns / "summer").rename(watched.campaigns / "autumn")
+    watched.shows("1: makeable", "autumn")
+    watched.lacks("summer")
+    shutil.rmtree(watched.campaigns / "autumn")
+    watched.lacks("autumn")
+
+
+def test_a_renamed_folder_is_still_watched(watched: Watched) -> None:
+    """Edits in a folder that was renamed while watching are seen."""
+    (watched.campaigns / "spring").rename(watched.campaigns / "renamed")
+    watched.shows("1: makeable", "renamed")
+    put_campaign(watched.campaigns, "renamed", targets_csv=TARGETS.replace(">= 16", ">= 21"))
+    watched.shows("1: unreachable", "renamed")
+
+
+def test_a_slow_writer_is_waited_for(watched: Watched) -> None:
+    """A file that comes in pieces, the last of them ending inside quotes, is built once, when whole."""
+    before = watched.builds()
+    path = watched.campaigns / "spring" / "assays.csv"
+    pieces = [ASSAYS[:20], ASSAYS[20:40], ASSAYS[40:] + '"D, the last', '",0,1,20,30\n']
+    path.write_text("")
+    for piece in pieces:
+        with path.open("a") as stream:
+            stream.write(piece)
+        time.sleep(SETTLE / 2)
+    eventually(lambda: watched.builds() > before)
+    watched.rests()
+    assert watched.builds() == before + 1
+    assert "banner" not in watched.page()
+
+
+def test_a_spreadsheet_save_is_one_edit(watched: Watched) -> None:
+    """Temporary names and two renames, as a spreadsheet saves, end in the new content and no flicker."""
+    folder = watched.campaigns / "spring"
+    (folder / "~$targets.csv").write_text("lock")
+    (folder / "3F2A1B00").write_text(TARGETS.replace(">= 16", ">= 21"))
+    (folder / "targets.csv").rename(folder / "5C11D0.tmp")
+    (folder / "3F2A1B00").rename(folder / "targets.csv")
+    (folder / "5C11D0.tmp").unlink()
+    (folder / "~$targets.csv").unlink()
+    watched.shows("1: unreachable")
+    assert not any("problem" in line or "missing" in line for line in watched.log.warned)
+
+
+def test_lock_files_and_readers_build_nothing(watched: Watched) -> None:
+    """Files that are no input, and files that are only read, wake nothing."""
+    before = watched.builds()
+    folder = watched.campaigns / "spring"
+    (folder / ".~lock.assays.csv#").write_text("me")
+    (folder / "assays.csv.bak").write_text("old")
+    for _ in range(20):
+        (folder / "assays.csv").read_bytes()
+    watched.rests()
+    assert watched.builds() == before
+
+
+def test_a_broken_file_keeps_the_last_good_page(watched: Watched) -> None:
+    """A typo is published as a banner over the last good answers, and goes when it is mended."""
+    put_campaign(watched.campaigns, campaign_toml="title = \n")
+    watched.shows("banner: campaign.toml")
+    assert "1: makeable" in watched.page()
+    put_campaign(watched.campaigns, campaign_toml='title = "Mended"\n')
+    watched.shows("Mended")
+    assert "banner" not in watched.page()
+
+
+def test_site_settings_reach_every_campaign(watched: Watched) -> None:
+    """An edit of site.toml builds all campaigns that it applies to."""
+    put_campaign(watched.campaigns, "other")
+    watched.shows("1: makeable", "other")
+    (watched.campaigns / "site.toml").write_text('currency = "SEK"\n')
+    for slug in ("spring", "other"):
+        address = watched.output / slug / "results.json"
+        eventually(lambda address=address: json.loads(address.read_bytes())["campaign"]["currency"] == "SEK")
+
+
+def test_the_root_may_go_and_come_back(watched: Watched) -> None:
+    """While the campaigns folder is away the pages stay; when it is back, edits are seen again."""
+    away = watched.root / "away"
+    watched.campaigns.rename(away)
+    eventually(lambda: any("is not there" in line for line in watched.log.warned))
+    watched.rests()
+    assert "1: makeable" in watched.page()
+    put_campaign(away, targets_csv=TARGETS.replace(">= 16", ">= 21"))
+    away.rename(watched.campaigns)
+    watched.shows("1: unreachable")
+    assert sum("is not there" in line for line in watched.log.warned) == 1
+    put_campaign(watched.campaigns)
+    watched.shows("1: makeable")
+
+
+def test_a_burst_ends_in_the_final_state(watched: Watched) -> None:
+    """After hundreds of quick edits in several folders each shows its last state."""
+    for turn in range(100):
+        for name in ("spring", "b", "c"):
+            put_campaign(watched.campaigns, name, campaign_toml=f'title = "turn {turn} of {name}"\n')
+    for name in ("spring", "b", "c"):
+        watched.shows(f"turn 99 of {name}", name)
+
+
+def test_a_removed_output_is_published_again(watched: Watched) -> None:
+    """Pages come back, and the lock with them, when somebody removes the output folder."""
+    watched.output.rename(watched.root / "old")
+    put_campaign(watched.campaigns, campaign_toml='title = "again"\n')
+    watched.shows("again")
+
+
+def test_a_full_disk_is_tried_again(watched: Watched, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A build that can't write says so, leaves the pages, and is tried again after a pause."""
+    from generator import disk
+
+    monkeypatch.setattr(watching, "RETRY_PAUSES", (0.2,))
+    create = disk.create
+    is_full = threading.Event()
+    is_full.set()
+
+    def full(path: Path, data: bytes, *, durable: bool = False) -> None:
+        if is_full.is_set() and "output" in path.parts and "lock" not in path.name:
+            raise OSError(errno.ENOSPC, "No space left on device")
+        create(path, data, durable=durable)
+
+    monkeypatch.setattr(disk, "create", full)
+    put_campaign(watched.campaigns, campaign_toml='title = "later"\n')
+    eventually(lambda: any("trying again in" in line for line in watched.log.warned))
+    assert "1: makeable" in watched.page()
+    is_full.clear()
+    watched.shows("later")
+
+
+def test_lost_events_are_made_up_for(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """When no event ever arrives the regular scan finds the change."""
+    monkeypatch.setattr(watching, "RESCAN_EVERY", 0.2)
+    monkeypatch.setattr(watching.Hints, "ensure", lambda self: True)
+    put_campaign(tmp_path / "campaigns")
+    with light_pages():
+        watcher = Watched(tmp_path, "never")
+        try:
+            watcher.shows("1: makeable")
+            put_campaign(watcher.campaigns, targets_csv=TARGETS.replace(">= 16", ">= 21"))
+            watcher.shows("1: unreachable")
+        finally:
+            watcher.end()
+
+
+def test_a_change_behind_the_stamps_is_found_by_the_full_look(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Content that changed with size, time and inode alike is found when everything is looked at anew."""
+    monkeypatch.setattr(watching, "FULL_LOOK_EVERY", 0.3)
+    folder = put_campaign(tmp_path / "campaigns")
+    with light_pages():
+        watcher = Watched(tmp_path, "always")
+        try:
+            watcher.shows("1: makeable")
+            path = folder / "targets.csv"
+            status = path.stat()
+            path.write_text(TARGETS.replace(">= 16", ">= 21"))
+            os.utime(path, ns=(status.st_atime_ns, status.st_mtime_ns))
+            watcher.shows("1: unreachable")
+        finally:
+            watcher.end()
+
+
+def test_without_events_from_the_system_it_polls(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Where the system refuses an observer (its limit is reached) the watcher says so and polls."""
+    monkeypatch.setattr(watching, "POLL_EVERY", 0.1)
+    monkeypatch.setattr(watching.Hints, "ensure", lambda self: False)
+    put_campaign(tmp_path / "campaigns")
+    with light_pages():
+        watcher = Watched(tmp_path, "auto")
+        try:
+            watcher.shows("1: makeable")
+            put_campaign(watcher.campaigns, campaign_toml='title = "polled"\n')
+            watcher.shows("polled")
+        finally:
+            watcher.end()
+    assert any("polling instead" in line for line in watcher.log.warned)
+
+
+def test_a_second_watcher_is_refused(watched: Watched) -> None:
+    """Two writers of one output folder are one too many."""
+    with pytest.raises(LockedError, match=f"process {os.getpid()} on "):
+        watch(make_job(watched.root), Told(), settle_seconds=0.1, poll="always", clock=lambda: NOON)
+
+
+def test_a_linked_campaigns_folder_is_watched(tmp_path: Path) -> None:
+    """A campaigns folder that is a link gives events like any other."""
+    put_campaign(tmp_path / "real")
+    (tmp_path / "campaigns").symlink_to(tmp_path / "real")
+    with light_pages():
+        watcher = Watched(tmp_path, "never")
+        try:
+            watcher.shows("1: makeable")
+            put_campaign(tmp_path / "real", campaign_toml='title = "through a link"\n')
+            watcher.shows("through a link")
+        finally:
+            watcher.end()
+
+
+@pytest.mark.parametrize("poll", ["auto", "always"])
+@pytest.mark.parametrize("number", [signal.SIGTERM, signal.SIGINT])
+def test_the_command_from_start_to_signal(tmp_path: Path, poll: str, number: signal.Signals) -> None:
+    """``hullbook watch`` publishes an edit for real, and ends cleanly with status 0 at a signal."""
+    put_campaign(tmp_path / "campaigns", targets_csv="order,N\n1,>= 20\n")
+    command = [sys.executable, "-m", "generator", "watch", "campaigns", "output", "--settle", "0.1", "--poll", poll]
+    page = tmp_path / "output/spring/index.html"
+    environment = {**os.environ, "PYTHONPATH": str(Path(__file__).parent.parent)}
+    with subprocess.Popen(command, cwd=tmp_path, env=environment, stderr=subprocess.PIPE, text=True) as process:
+        try:
+            eventually(page.exists, "the page never came")
+            put_campaign(tmp_path / "campaigns", targets_csv="order,N\n1,>= 31\n")
+            eventually(lambda: "unreachable" in page.read_text(encoding="utf-8"))
+            process.send_signal(number)
+            _, told = process.communicate(timeout=PATIENCE)
+        finally:
+            process.kill()
+    assert process.returncode == 0
+    assert told.endswith("stopped watching\n")
+    assert not (tmp_path / "output/.hullbook-lock").exists()
+
+
+MOUNTS = """\
+/dev/sda1 / ext4 rw 0 0
+//server/blends /mnt/blends cifs rw 0 0
+server:/x /mnt/with\\040space nfs4 rw 0 0
+tmpfs /mnt/blends/local tmpfs rw 0 0
+"""
+
+
+@pytest.mark.parametrize(
+    "path, kind",
+    [
+        ("/home/me", "ext4"),
+        ("/mnt/blends", "cifs"),
+        ("/mnt/blends/spring", "cifs"),
+        ("/mnt/blends-2", "ext4"),
+        ("/mnt/with space/x", "nfs4"),
+        ("/mnt/blends/local/x", "tmpfs"),
+    ],
+)
+def test_the_type_of_a_mount(path: str, kind: str) -> None:
+    """The longest mount point above a path decides, by folder names and not by text."""
+    assert mount_type(path, MOUNTS) == kind
+
+
+def test_nothing_is_known_of_an_empty_mount_table() -> None:
+    """Without a mount table, or with nonsense in it, the type is unknown."""
+    assert mount_type("/x", "") == mount_type("/x", "nonsense\n") == ""
+
+
+def test_polling_can_be_chosen(tmp_path: Path) -> None:
+    """The option decides; automatic means events on a local disk."""
+    assert [wants_events(tmp_path, poll) for poll in ("always", "never", "auto")] == [False, True, True]
+
+
+def test_a_build_is_refused_while_watching(watched: Watched) -> None:
+    """A build into the folder of a running watcher is refused with the watcher's name."""
+    with pytest.raises(LockedError, match="is being written by process"):
+        run(make_job(watched.root))
