@@ -10,7 +10,7 @@ from __future__ import annotations
 import contextlib
 import functools
 import tomllib
-from collections.abc import Callable, Iterable, Iterator, Mapping
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import asdict, dataclass, field
 from datetime import datetime
 from pathlib import Path
@@ -19,16 +19,18 @@ from typing import Protocol
 from generator import __version__, disk, identity
 from generator.chapter import Chapter, Incident, Task, make, read
 from generator.disk import digest_of, sha256
-from generator.folders import SITE, Folder, Inputs, find_campaigns, read_inputs
+from generator.folders import Folder, Inputs, find_campaigns, read_inputs
 from generator.history.archive import can_record, head_key
 from generator.history.check import check_history
 from generator.lock import OwnerLock
 from generator.problems import HullbookError, Problem, failing
 from generator.report.publish import SHARED, Publication, Published, Written
 from generator.report.views import IndexEntry
+from generator.report.words import VERDICTS
 
 LOCK_NAME = ".hullbook-lock"
 ERROR_LOG_NAME = ".hullbook-errors.log"
+_PLAIN = "plain"
 #: The log of unexpected errors is begun anew beyond this size.
 _LONGEST_LOG = 1_000_000
 
@@ -137,8 +139,8 @@ def build(
     ``only`` names campaign folders that may have changed: others are left unread as published.
     ``without`` names folders that are not ready to be read: they stay as published, or out.  When
     ``is_wanted`` turns false, campaigns not yet begun are left for the next build.  Raises
-    NoCampaignsError, WrongUseError for an unknown theme, and WriteError or LockedError where the
-    output folder can't be written any more; the last good pages then stay.
+    NoCampaignsError, and WriteError or LockedError where the output folder can't be written any more;
+    the last good pages then stay.
     """
     folders = find_campaigns(job.campaigns)
     publication = Publication(job.output, moment=job.moment, before_replace=before_replace)
@@ -196,38 +198,57 @@ class _Run:
         problems = chapter.entry.problems
         if chapter.incident is not None:
             self._log_incident(slug, chapter.incident)
-        if chapter.files is None and self._keep(task.folder):
-            self._entries[slug], step = chapter.entry, Written()
+        if chapter.files is None:
+            # Not even a page of problems could be drawn.  What is published stays; the index does not
+            # lead to a campaign without any page.
+            if self._keep(task.folder):
+                self._entries[slug] = chapter.entry
+            step = Written()
         else:
-            again = chapter.incident is not None
-            print_ = "" if again else self._fingerprint(task.folder, task.inputs, chapter.theme)
-            about = {
-                "folder": task.folder.name,
-                "entry": asdict(chapter.entry),
-                "theme": chapter.theme,
-                "is_recorded": chapter.is_recorded,
-            }
-            step = self._publication.put(
-                slug, Published(fingerprint=print_, files={}, about=about), chapter.files or {}
-            )
+            step = self._publication.put(slug, self._published(task, chapter), chapter.files)
             self._entries[slug] = chapter.entry
         self._made.append(slug)
         self._steps.append(step)
         self._problems[slug] = problems + step.problems
-        self._tell(chapter.entry, step)
+        self._tell(chapter, step)
 
-    def put_shared(self, folders: Iterable[Folder]) -> None:
+    def _published(self, task: Task, chapter: Chapter) -> Published:
+        """Make the manifest's record of a campaign; one with a defect is made again by every build."""
+        is_sound = chapter.incident is None
+        return Published(
+            fingerprint=self._fingerprint(task.folder, task.inputs, chapter.theme) if is_sound else "",
+            files={},
+            about={
+                "folder": task.folder.name,
+                "entry": asdict(chapter.entry),
+                "theme": chapter.theme,
+                "is_recorded": chapter.is_recorded,
+            },
+        )
+
+    def put_shared(self, folders: Sequence[Folder]) -> None:
         """Publish the index and the pages that belong to no campaign, if anything on them differs."""
         entries = [self._entries[folder.slug] for folder in folders if folder.slug in self._entries]
-        theme = self._job.theme or _site_theme(self._job.campaigns)
+        theme = self._job.theme or _site_theme(next((folder.site for folder in folders), None))
         fingerprint = digest_of([[asdict(entry) for entry in entries], self._theme_digest(theme), identity.program()])
         old = self._publication.old.campaigns.get(SHARED)
         if old is not None and old.fingerprint == fingerprint and self._publication.is_complete(SHARED):
             self._publication.keep(SHARED)
             return
-        step = self._publication.put(SHARED, Published(fingerprint=fingerprint, files={}), _shared(entries, theme))
+        files = self._shared(entries, theme)
+        step = self._publication.put(SHARED, Published(fingerprint=fingerprint, files={}), files)
         self._steps.append(step)
         self._problems[SHARED] = step.problems
+
+    def _shared(self, entries: list[IndexEntry], theme: str) -> dict[str, bytes]:
+        """Draw the shared pages; in the plain theme where the one that is wanted can't be used."""
+        try:
+            return _shared_pages(entries, theme)
+        except HullbookError as error:
+            if theme == _PLAIN:
+                raise
+            self._log.warn(f"{error}; the index is shown in the theme {_PLAIN}")
+            return _shared_pages(entries, _PLAIN)
 
     def outcome(self, folders: Iterable[Folder], finished: Written) -> Outcome:
         """Sum up."""
@@ -282,9 +303,11 @@ class _Run:
         self._problems[folder.slug] = entry.problems
         return True
 
-    def _tell(self, entry: IndexEntry, step: Written) -> None:
+    def _tell(self, chapter: Chapter, step: Written) -> None:
+        entry = chapter.entry
         self._log.say(f"{entry.slug}: {_summary(entry)}; {_count(len(step.paths), 'file')} written")
-        for problem in (*failing(entry.problems), *step.problems):
+        unrecorded = () if chapter.is_recorded else tuple(item for item in entry.problems if item.file == "history")
+        for problem in (*failing(entry.problems), *unrecorded, *step.problems):
             self._log.warn(f"{entry.slug}: {problem.sentence()}")
 
     def _log_incident(self, slug: str, incident: Incident) -> None:
@@ -308,7 +331,7 @@ def _chapters(tasks: Iterable[Task], jobs: int) -> Iterator[tuple[Task, Chapter]
     yield from make_in_processes(tasks, jobs)
 
 
-def _shared(entries: list[IndexEntry], theme_name: str) -> dict[str, bytes]:
+def _shared_pages(entries: list[IndexEntry], theme_name: str) -> dict[str, bytes]:
     from generator.report.pages import assets, draw_index, draw_method
     from generator.report.themes import load_theme
 
@@ -320,13 +343,13 @@ def _shared(entries: list[IndexEntry], theme_name: str) -> dict[str, bytes]:
     }
 
 
-def _site_theme(campaigns: Path) -> str:
-    """The theme of the index: what site.toml says, read without any of its faults, which are told elsewhere."""
+def _site_theme(site: Path | None) -> str:
+    """Find the theme that site.toml names for the index; what is wrong with the file is told elsewhere."""
     try:
-        theme = tomllib.loads((campaigns / SITE).read_text(encoding="utf-8-sig")).get("theme")
+        theme = tomllib.loads(site.read_text(encoding="utf-8-sig")).get("theme") if site else None
     except (OSError, ValueError):
         theme = None
-    return theme if isinstance(theme, str) else "plain"
+    return theme if isinstance(theme, str) else _PLAIN
 
 
 def _theme_digest(name: str) -> str:
@@ -356,7 +379,7 @@ def _entry_from(stored: object) -> IndexEntry | None:
 def _summary(entry: IndexEntry) -> str:
     if not entry.counts:
         return "no answers" if entry.is_stopped else "no orders"
-    counts = ", ".join(f"{count} {verdict}" for verdict, count in entry.counts.items())
+    counts = ", ".join(f"{entry.counts[verdict]} {verdict}" for verdict in VERDICTS if verdict in entry.counts)
     stopped = ", stopped: showing the last good answers" if entry.is_stopped else ""
     return f"{_count(sum(entry.counts.values()), 'order')} ({counts}){stopped}"
 

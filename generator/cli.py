@@ -86,45 +86,57 @@ def _parser() -> argparse.ArgumentParser:
         description="Read every campaign and verify its history; write nothing.",
     )
     for command in (build, watch, check):
-        command.add_argument(
-            "campaigns",
-            nargs="?",
-            default="campaigns",
-            type=Path,
-            metavar="CAMPAIGNS",
-            help="folder of campaigns, or one campaign (default: campaigns)",
-        )
+        _add_campaigns(command)
     for command in (build, watch):
-        command.add_argument(
-            "output",
-            nargs="?",
-            default="output",
-            type=Path,
-            metavar="OUTPUT",
-            help="where the pages go (default: output)",
-        )
-        command.add_argument("--theme", metavar="NAME|PATH", help="theme for all campaigns (default: each one's own)")
-        command.add_argument("--jobs", type=_jobs, default=1, metavar="N", help="processes at once (default: 1)")
+        _add_output(command)
     for command in (build, watch, check):
         command.add_argument("--history", type=Path, metavar="DIR", help="keep revisions in DIR/CAMPAIGN instead")
         command.add_argument("--quiet", action="store_true", help="tell only what somebody has to look at")
-    watch.add_argument(
+    _add_watching(watch)
+    build.set_defaults(run=_build)
+    watch.set_defaults(run=_watch)
+    check.set_defaults(run=_check)
+    return parser
+
+
+def _add_campaigns(command: argparse.ArgumentParser) -> None:
+    command.add_argument(
+        "campaigns",
+        nargs="?",
+        default="campaigns",
+        type=Path,
+        metavar="CAMPAIGNS",
+        help="folder of campaigns, or one campaign (default: campaigns)",
+    )
+
+
+def _add_output(command: argparse.ArgumentParser) -> None:
+    command.add_argument(
+        "output",
+        nargs="?",
+        default="output",
+        type=Path,
+        metavar="OUTPUT",
+        help="where the pages go (default: output)",
+    )
+    command.add_argument("--theme", metavar="NAME|PATH", help="theme for all campaigns (default: each one's own)")
+    command.add_argument("--jobs", type=_jobs, default=1, metavar="N", help="processes at once (default: 1)")
+
+
+def _add_watching(command: argparse.ArgumentParser) -> None:
+    command.add_argument(
         "--settle",
         type=_seconds,
         default=0.5,
         metavar="SECONDS",
         help="how long a folder must be quiet before it is built (default: 0.5)",
     )
-    watch.add_argument(
+    command.add_argument(
         "--poll",
         choices=("auto", "always", "never"),
         default="auto",
         help="look again and again instead of waiting for events (default: auto, on network folders)",
     )
-    build.set_defaults(run=_build)
-    watch.set_defaults(run=_watch)
-    check.set_defaults(run=_check)
-    return parser
 
 
 def _jobs(text: str) -> int:

@@ -94,7 +94,7 @@ def wanted_entries(folder: Path, wanted: Wanted) -> tuple[dict[str, Path], tuple
     chosen: dict[str, Path] = {}
     shadowed: list[str] = []
     try:
-        names = [entry.name for entry in folder.iterdir()]
+        names = os.listdir(folder)  # noqa: PTH208 - names are all that is wanted
     except (FileNotFoundError, NotADirectoryError):
         return {}, ()
     for name in sorted(names, key=lambda name: (wanted(name) != name, name)):

@@ -28,12 +28,12 @@ class NoCampaignsError(HullbookError):
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Folder:
-    """One campaign's folder: its slug, its name as pages show it, where it is, and where site.toml is."""
+    """One campaign's folder: its slug, its name as pages show it, where it is, and the site.toml that applies."""
 
     slug: str
     name: str
     path: Path
-    site: Path
+    site: Path | None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -55,7 +55,7 @@ def find_campaigns(root: Path) -> tuple[Folder, ...]:
     if _is_campaign(root):
         real = Path(os.path.realpath(root))
         name = _shown(real.name)
-        return (Folder(slug=slugs([name], _TAKEN)[name], name=name, path=root, site=real.parent),)
+        return (Folder(slug=slugs([name], _TAKEN)[name], name=name, path=root, site=_site_in(real.parent)),)
     try:
         inner = [path for path in root.iterdir() if not path.name.startswith(".")]
     except OSError as error:
@@ -64,50 +64,66 @@ def find_campaigns(root: Path) -> tuple[Folder, ...]:
     # A folder whose name is a slug already keeps it, whatever comes before it.
     by_claim = sorted(paths, key=lambda name: (slugify(name) != name, name))
     found = slugs(by_claim, _TAKEN)
-    return tuple(Folder(slug=found[name], name=name, path=path, site=root) for name, path in paths.items())
+    site = _site_in(root)
+    return tuple(Folder(slug=found[name], name=name, path=path, site=site) for name, path in paths.items())
 
 
 def read_inputs(folder: Folder) -> Inputs:
     """Read a campaign's files, and the site.toml that applies to it."""
-    own = disk.read_folder(folder.path, _own_name, at_most=MOST_BYTES)
-    site = disk.read_folder(folder.site, _site_name, at_most=MOST_BYTES)
-    unreadable = {**own.unreadable, **site.unreadable}
+    own = disk.read_folder(folder.path, input_name, at_most=MOST_BYTES)
+    files = {name: data for name, data in own.files.items() if name != SITE}
+    unreadable = {name: why for name, why in own.unreadable.items() if name != SITE}
+    if folder.site is not None:
+        try:
+            files[SITE] = disk.read_file(folder.site, at_most=MOST_BYTES)
+        except OSError as error:
+            unreadable[SITE] = disk.reason(error)
     problems = [_unreadable(folder.name if name == "." else name, why) for name, why in unreadable.items()]
-    problems += [_shadowed(name) for name in (*own.shadowed, *site.shadowed)]
-    problems += _misplaced_site(folder)
+    problems += [_shadowed(name) for name in own.shadowed]
+    if SITE in own.files:
+        problems.append(_misplaced_site())
     return Inputs(
-        files=dict(sorted({**own.files, **site.files}.items())),
+        files=dict(sorted(files.items())),
         problems=tuple(problems),
         unreadable=frozenset(unreadable),
     )
 
 
 def scan(root: Path) -> dict[Path, tuple[tuple[str, Stamp], ...]]:
-    """Stamp every input file below ``root``, by campaign folder; ``site.toml`` under its own folder.
+    """Stamp every input file below ``root``, by campaign folder; a site.toml under its own path.
 
     A file that is there and can't be asked is left out.  NoCampaignsError if ``root`` is gone.
     """
     folders = find_campaigns(root)
-    stamps = {folder.path: _stamps(folder.path, _own_name) for folder in folders}
-    for site in sorted({folder.site for folder in folders} or {root}):
-        found = _stamps(site, _site_name)
-        if found:
-            stamps[site / SITE] = found
+    stamps = {folder.path: _stamps(folder.path) for folder in folders}
+    for site in {folder.site for folder in folders if folder.site is not None}:
+        stamp = disk.stamp(site)
+        if stamp is not None:
+            stamps[site] = ((SITE, stamp),)
     return stamps
 
 
-def _stamps(folder: Path, wanted: disk.Wanted) -> tuple[tuple[str, Stamp], ...]:
+def is_site(place: Path) -> bool:
+    """Whether a key of :func:`scan` is a site.toml, which every campaign reads."""
+    return place.name.lower() == SITE
+
+
+def _stamps(folder: Path) -> tuple[tuple[str, Stamp], ...]:
     try:
-        entries, _ = disk.wanted_entries(folder, wanted)
+        entries, _ = disk.wanted_entries(folder, input_name)
     except OSError:
         return ()
     stamped = ((path.name, disk.stamp(path)) for path in entries.values())
     return tuple((name, stamp) for name, stamp in stamped if stamp is not None)
 
 
-def _own_name(name: str) -> str | None:
-    canonical = input_name(name)
-    return None if canonical == SITE else canonical
+def _site_in(folder: Path) -> Path | None:
+    """Find the site.toml in a folder, in whatever letters it is named; the exact name goes first."""
+    try:
+        entries, _ = disk.wanted_entries(folder, _site_name)
+    except OSError:
+        return None
+    return entries.get(SITE)
 
 
 def _site_name(name: str) -> str | None:
@@ -117,7 +133,7 @@ def _site_name(name: str) -> str | None:
 def _is_campaign(path: Path) -> bool:
     """Whether a folder holds a campaign; one that can't be read is taken for one, so that it is told."""
     try:
-        entries, _ = disk.wanted_entries(path, _own_name)
+        entries, _ = disk.wanted_entries(path, input_name)
     except OSError:
         return True
     return not _TELLING.isdisjoint(entries)
@@ -146,15 +162,11 @@ def _shadowed(name: str) -> Problem:
     )
 
 
-def _misplaced_site(folder: Folder) -> list[Problem]:
+def _misplaced_site() -> Problem:
     """A site.toml inside a campaign would be read by nobody, and its house rules with it."""
-    if folder.path == folder.site or not disk.read_folder(folder.path, _site_name, at_most=1).files:
-        return []
-    return [
-        Problem(
-            file=SITE,
-            message="it is not read, since it stands inside the campaign",
-            remedy="put it beside the campaign's folder, or its settings into campaign.toml",
-            severity="note",
-        )
-    ]
+    return Problem(
+        file=SITE,
+        message="it is not read, since it stands inside the campaign",
+        remedy="put it beside the campaign's folder, or its settings into campaign.toml",
+        severity="note",
+    )

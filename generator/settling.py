@@ -47,6 +47,13 @@ class Settling:
         """Folders that changed and are not built yet."""
         return frozenset(self._unrest)
 
+    def rest_needed(self, now: float) -> float | None:
+        """Tell after how many seconds the first waiting folder can be quiet; None if none is waiting.
+
+        0 or less: one is quiet already, and waits for something else.
+        """
+        return min((unrest.since + self._settle - now for unrest in self._unrest.values()), default=None)
+
     def look(self, now: float, scan: Scan) -> Ready:
         """Compare a scan with the ones before; ``now`` is in seconds of a clock that never goes back."""
         quiet: set[Path] = set()

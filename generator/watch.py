@@ -25,7 +25,7 @@ from typing import TYPE_CHECKING, Literal
 from generator import disk, folders
 from generator.book import Job, Log, build, writer_lock
 from generator.disk import WriteError
-from generator.folders import SITE, NoCampaignsError
+from generator.folders import NoCampaignsError, is_site
 from generator.intake.campaign import input_name, is_whole
 from generator.lock import OwnerLock
 from generator.report.publish import MANIFEST_NAME
@@ -192,15 +192,18 @@ class _Watcher:
         until = time.monotonic() + seconds
         while not self._ending.is_set():
             left = until - time.monotonic()
-            if left <= 0 or self._wake.wait(min(left, _LONGEST_WAIT)):
+            if left <= 0:
                 break
-        self._wake.clear()
-        self._ending.wait(_LEAST_PAUSE)
+            if self._wake.wait(min(left, _LONGEST_WAIT)):
+                self._wake.clear()
+                self._ending.wait(_LEAST_PAUSE)
+                break
 
     def _timeout(self, has_events: bool) -> float:
         """Say how long to wait for an event, in seconds."""
-        if self._settling.waiting:
-            return self._glance
+        needed = self._settling.rest_needed(time.monotonic())
+        if needed is not None:
+            return needed if needed > 0 else self._glance
         slow = self._scan_seconds / _POLL_SHARE
         longest = max(RESCAN_EVERY if has_events else POLL_EVERY, slow)
         if self._is_gone:
@@ -220,12 +223,12 @@ class _Watcher:
         if time.monotonic() < self._blocked_until:
             return
         chosen = frozenset(folder for folder in ready.quiet if self._is_whole(folder)) | ready.overdue
-        if any(folder.name == SITE for folder in self._settling.waiting - chosen):
+        if any(is_site(folder) for folder in self._settling.waiting - chosen):
             return  # every campaign reads it
         if self._is_full_look_due():
             self._build(scan, chosen, everything=True)
         elif chosen:
-            self._build(scan, chosen, everything=any(folder.name == SITE for folder in chosen))
+            self._build(scan, chosen, everything=any(is_site(folder) for folder in chosen))
 
     def _scan(self) -> Scan | None:
         """Stamp all files; None while the campaigns folder is away."""
@@ -253,7 +256,7 @@ class _Watcher:
 
     def _is_whole(self, folder: Path) -> bool:
         """Whether no file of the folder looks as if it were still being written."""
-        place = folder.parent if folder.name == SITE else folder
+        place = folder.parent if is_site(folder) else folder
         snapshot = disk.read_folder(place, input_name, at_most=folders.MOST_BYTES)
         return not snapshot.unreadable and all(is_whole(name, data) for name, data in snapshot.files.items())
 

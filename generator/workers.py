@@ -22,11 +22,18 @@ def make_in_processes(tasks: Iterable[Task], jobs: int) -> Iterator[tuple[Task, 
     """Make campaigns in ``jobs`` processes and hand them back in the order of ``tasks``.
 
     Fresh processes, not forked ones: an observer's threads may be running here.  A process that dies
-    (killed, out of memory) does not stop the build: what it leaves is made here.
+    (killed, out of memory) does not stop the build: what it leaves is made here.  So is a task that is
+    alone, since a process takes longer to start than most campaigns to make.
     """
     for name in _ONE_THREAD:
         os.environ.setdefault(name, "1")
     source = iter(tasks)
+    first = tuple(itertools.islice(source, 2))
+    if len(first) < 2:
+        for task in first:
+            yield task, make(task)
+        return
+    source = itertools.chain(first, source)
     waiting: deque[tuple[Task, Future[Chapter]]] = deque()
     with ProcessPoolExecutor(jobs, mp_context=multiprocessing.get_context("spawn")) as pool:
         for task in itertools.islice(source, jobs * _AHEAD):

@@ -217,7 +217,9 @@ def test_a_defect_in_drawing_leaves_the_published_pages(tmp_path: Path, monkeypa
         assert text_of(tmp_path / "output", "spring/index.html") == before
         put_campaign(tmp_path / "campaigns", "fresh")
         assert not run(make_job(tmp_path)).is_well
+        assert "fresh" not in text_of(tmp_path / "output", "index.html")
     assert run(make_job(tmp_path)).is_well
+    assert "fresh" in text_of(tmp_path / "output", "index.html")
 
 
 def test_a_read_only_campaign_is_published_without_a_revision(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -232,7 +234,9 @@ def test_a_read_only_campaign_is_published_without_a_revision(tmp_path: Path, mo
 
     monkeypatch.setattr("generator.history.archive.create", read_only)
     monkeypatch.setattr("generator.lock.create", read_only)
-    assert run(make_job(tmp_path)).is_well
+    log = Told()
+    assert run(make_job(tmp_path), log).is_well
+    assert any("not recorded as a revision" in line for line in log.warned)
     page = text_of(tmp_path / "output", "spring/index.html")
     assert "not recorded as a revision" in page
     assert str(tmp_path) not in page
@@ -347,6 +351,17 @@ def test_an_unknown_theme_of_a_campaign_is_a_note(tmp_path: Path) -> None:
     assert "theme plain" in page
     assert "this theme can't be used" in page
     assert run(make_job(tmp_path)).made == ()
+
+
+def test_an_unknown_theme_of_the_site_stops_nothing(tmp_path: Path) -> None:
+    """A site.toml that names a theme that is not there leaves the index in the plain one, and is told."""
+    put_campaign(tmp_path / "campaigns")
+    (tmp_path / "campaigns/site.toml").write_text('theme = "fancy"\n')
+    log = Told()
+    assert run(make_job(tmp_path), log).is_well
+    assert "spring" in text_of(tmp_path / "output", "index.html")
+    assert any("theme fancy: no such theme" in line for line in log.warned)
+    assert run(make_job(tmp_path)).written == 0
 
 
 def test_killed_at_any_rename_the_next_build_completes(tmp_path: Path) -> None:

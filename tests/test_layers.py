@@ -36,7 +36,7 @@ ONLY = {
     "markupsafe": ("report/",),
     "markdown": ("report/notes",),
     "watchdog": ("watch",),
-    "scipy": ("geometry/",),
+    "scipy": ("geometry/", "findings/"),
 }
 
 

@@ -1,5 +1,6 @@
 from pathlib import Path
 
+import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
@@ -19,6 +20,16 @@ def test_a_changed_folder_is_ready_when_it_was_quiet() -> None:
     assert settling.look(0.0, {A: files(1)}) == Ready()
     assert settling.look(0.4, {A: files(1)}) == Ready()
     assert settling.look(0.5, {A: files(1)}) == Ready(quiet=frozenset({A}))
+
+
+def test_the_rest_that_is_needed() -> None:
+    """Settling tells when the next look is worth while: after the settle time of the first to rest."""
+    settling = Settling(0.5)
+    assert settling.rest_needed(0.0) is None
+    settling.look(1.0, {A: files(1)})
+    settling.look(1.2, {A: files(1), B: files(1)})
+    assert settling.rest_needed(1.2) == pytest.approx(0.3)
+    assert settling.look(1.2 + settling.rest_needed(1.2) + 1e-9, {A: files(1), B: files(1)}).quiet == {A}
 
 
 def test_every_change_begins_the_quiet_time_anew() -> None:

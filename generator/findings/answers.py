@@ -9,6 +9,7 @@ from generator.findings.lots import lot_findings
 from generator.findings.measures import measures_of, unfit_derived
 from generator.findings.orders import Desk, order_finding
 from generator.findings.records import ComponentFinding, Findings
+from generator.findings.uncertainty import uncertainty_of
 from generator.findings.values import table_of
 from generator.intake.records import Campaign, Component
 from generator.problems import Problem, stopping
@@ -31,7 +32,7 @@ def find(campaign: Campaign) -> Findings:
     table = table_of(campaign)
     measures = measures_of(campaign)
     problems.extend(table.problems)
-    desk = Desk(campaign, table, measures)
+    desk = Desk(campaign, table, measures, uncertainty_of(campaign, table))
     orders = tuple(order_finding(desk, order, problems) for order in campaign.orders)
     return replace(
         findings,
@@ -58,25 +59,8 @@ def _component(component: Component) -> ComponentFinding:
 
 
 def _refused(campaign: Campaign) -> list[Problem]:
-    """What was read and can't be obeyed: a house rule, or a derived quantity without a meaning."""
+    """Derived quantities that have no meaning over a blend."""
     problems = []
-    house = campaign.house
-    set_rules = {
-        "max_lots": house.max_lots,
-        "least_if_used": house.least_if_used or any(lot.least_if_used for lot in campaign.lots) or None,
-        "keep_apart": house.keep_apart or None,
-    }
-    for rule, value in set_rules.items():
-        if value is not None:
-            problems.append(
-                Problem(
-                    file="campaign.toml",
-                    column=f"house.{rule}",
-                    message="this version does not obey this house rule, and answers that break it could do harm",
-                    remedy="take the rule out to get answers without it, or keep it and get none",
-                    severity="stops",
-                )
-            )
     components = {component.name: component for component in campaign.components}
     for derived in campaign.derived:
         reason = unfit_derived(derived, components)

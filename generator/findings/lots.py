@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from fractions import Fraction
 
+from generator.findings.house_rules import is_kept
 from generator.findings.measures import Measure, excess, reports, stated
 from generator.findings.records import LotFinding, OrderFinding
 from generator.findings.values import Table, typed_values
@@ -54,7 +55,10 @@ def _finding(
         stock="unlimited" if lot.is_unlimited else (float(lot.stock.value) if lot.stock else None),
         cost=float(lot.cost.value) if lot.cost else None,
         assay={name: float(typed_values(lot.assay[name], below).stated) for name in components if name in lot.assay},
-        imitated_by=None if imitation is None else {name: float(share) for name, share in imitation.items()},
+        # What is kept apart is not shown together, not even as an imitation.
+        imitated_by=None
+        if imitation is None or not is_kept(campaign, tuple(imitation))
+        else {name: float(share) for name, share in imitation.items()},
         used_by=tuple(
             order.order for order in orders if any(lot.name in recipe.shares for recipe in order.recipes.values())
         ),

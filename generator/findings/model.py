@@ -10,6 +10,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
+from generator.findings.house_rules import Rules, holds_both, rules_of
 from generator.findings.measures import Measure, excess, reports, stated
 from generator.findings.records import Side
 from generator.findings.rules import OutsideDomain
@@ -65,6 +66,7 @@ class OrderModel:
     numerators: Mapping[str, tuple[Fraction, ...]]
     denominators: Mapping[str, tuple[Fraction, ...]]
     left_out: Mapping[str, str]
+    rules: Rules
 
     @property
     def amount(self) -> Fraction | None:
@@ -121,6 +123,7 @@ def model_of(
         numerators={name: tuple(stated(measures[name].numerator, table, lot) for lot in usable) for name in limits},
         denominators={name: tuple(stated(measures[name].denominator, table, lot) for lot in usable) for name in limits},
         left_out=left_out,
+        rules=rules_of(campaign, lots),
     )
 
 
@@ -155,6 +158,9 @@ def _excluded(campaign: Campaign, order: Order, lot: Lot, limits: Mapping[str, L
         return f"not available before {lot.available.isoformat()}"
     if lot.max_share is not None and lot.max_share.value == 0:
         return "its greatest share is 0"
+    both = holds_both(campaign, lot)
+    if both is not None:
+        return f"it is both {both[0]} and {both[1]}, which are kept apart"
     for group in campaign.groups:
         limit = limits.get(group.name)
         if limit is not None and limit.high == 0 and lot.name in group.lots:

@@ -6,15 +6,19 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
+from generator.findings.assured import assured
+from generator.findings.conformity import conformity_of, uncertain_rows
+from generator.findings.house import UndecidedError
 from generator.findings.measures import Measure
 from generator.findings.model import OrderModel, model_of
 from generator.findings.programs import ONE, ZERO, amount_rows, share_bound_rows
 from generator.findings.ranges import limit_findings
-from generator.findings.recipes import cheapest, closest, roomiest
+from generator.findings.recipes import cheapest, cheapest_shares, closest, fewest, roomiest
 from generator.findings.records import CurvePoint, OrderFinding, Proof, Recipe, RecipeProof, Verdict
 from generator.findings.room import Room, Scales, allowed, room_of, scales_of
 from generator.findings.sentences import answer_sentence
 from generator.findings.tradeoff import curve
+from generator.findings.uncertainty import Uncertainty
 from generator.findings.values import Table
 from generator.findings.verdicts import Judgement, judge
 from generator.findings.ways_out import can_be_met_at_all, nearest_blend, wanted_lots
@@ -25,6 +29,7 @@ from generator.intake.records import Campaign, Order
 from generator.problems import Problem
 
 MET = ("makeable", "edge")
+LOST = ("unreachable", "barred")
 
 
 @dataclass(frozen=True, slots=True)
@@ -34,6 +39,7 @@ class Desk:
     campaign: Campaign
     table: Table
     measures: Mapping[str, Measure]
+    uncertainty: Uncertainty
 
 
 def order_finding(desk: Desk, order: Order, problems: list[Problem]) -> OrderFinding:
@@ -46,10 +52,19 @@ def order_finding(desk: Desk, order: Order, problems: list[Problem]) -> OrderFin
     if vanishing is not None:
         problems.append(vanishing)
         return _without_verdict(order, vanishing)
+    try:
+        return _answered(desk, model)
+    except UndecidedError as undecided:
+        problem = _undecided(order, undecided)
+        problems.append(problem)
+        return _without_verdict(order, problem)
+
+
+def _answered(desk: Desk, model: OrderModel) -> OrderFinding:
     judgement = judge(model)
     greatest = judgement.greatest
     finding = replace(
-        _blank(order),
+        _blank(model.order),
         verdict=judgement.verdict,
         greatest_amount=_greatest_amount(judgement),
         greatest_recipe=None if greatest is None else {name: float(x) for name, x in greatest.shares.items()},
@@ -62,7 +77,8 @@ def order_finding(desk: Desk, order: Order, problems: list[Problem]) -> OrderFin
     room = room_of(model, scales, in_amount=is_met)
     finding = replace(finding, room=None if room is None else float(room.t), room_unit=scales.unit if room else None)
     finding = _met(desk, model, finding, scales, room) if is_met else finding
-    finding = _ways_out(desk, model, finding, scales) if judgement.verdict == "unreachable" else finding
+    finding = _ways_out(desk, model, finding, scales) if judgement.verdict in LOST else finding
+    finding = _barred(desk, model, finding) if judgement.verdict == "barred" else finding
     finding = replace(finding, proof=_proof(judgement, finding.recipes.get("cheapest")))
     return replace(
         finding, sentence=answer_sentence(desk.campaign, model, judgement, finding, _absurd(desk, model, judgement))
@@ -75,7 +91,15 @@ def _met(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales, r
     if room is not None:
         recipes["roomiest"] = roomiest(model, desk.table, desk.measures, scales, room)
     recipes["closest"] = closest(model, desk.table, desk.measures)
-    recipes = {name: _with_room(model, scales, recipe) for name, recipe in recipes.items()}
+    recipes["fewest"] = fewest(model, desk.table, desk.measures)
+    uncertain = uncertain_rows(model, desk.table, desk.uncertainty)
+    held = assured(model, desk.table, desk.measures, uncertain, desk.campaign.settings.confidence)
+    if held is not None:
+        recipes["assured"] = held
+    recipes = {
+        name: replace(_with_room(model, scales, recipe), conformity=conformity_of(model, uncertain, recipe.exact))
+        for name, recipe in recipes.items()
+    }
     finding = replace(finding, recipes=recipes)
     without = {name: _without(desk, model, name) for name in recipes["cheapest"].exact}
     finding = replace(
@@ -86,8 +110,10 @@ def _met(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales, r
     )
     if not has_all_costs(model):
         return finding
-    enters, stays = lot_prices(model, recipes["cheapest"], {name: cost for name, (_, cost) in without.items()})
-    worth = worths(model, recipes["cheapest"], scales.by_row)
+    # With house rules these are the winning branch's.
+    branch = cheapest_shares(model).branch
+    enters, stays = lot_prices(branch, recipes["cheapest"], {name: cost for name, (_, cost) in without.items()})
+    worth = worths(branch, recipes["cheapest"], scales.by_row)
     limits = tuple(
         replace(limit, worth=float(worth[limit.on].saving), worth_holds=worth[limit.on].holds)
         if limit.on in worth
@@ -100,6 +126,30 @@ def _met(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales, r
         stays_up_to=stays,
         limits=limits,
         curve=_curve(model, scales, recipes["cheapest"], room),
+    )
+
+
+def _barred(desk: Desk, model: OrderModel, finding: OrderFinding) -> OrderFinding:
+    """Which rules stand in the way, and what each, lifted alone, would allow (a fact, no advice)."""
+    names = model.rules.names()
+    lifted = {}
+    for name in names:
+        freed = replace(model, rules=model.rules.without(name))
+        verdict = judge(freed).verdict
+        cost = cheapest(freed, desk.table, desk.measures).cost if verdict in MET else None
+        lifted[name] = (verdict, cost)
+    alone = tuple(name for name in names if lifted[name][0] not in LOST)
+    return replace(finding, barred_by=alone or names, lifted=lifted)
+
+
+def _undecided(order: Order, undecided: UndecidedError) -> Problem:
+    return Problem(
+        file=order.place.file,
+        row=order.place.row,
+        found=order.name,
+        message=f"the house rules leave too many ways to decide this order ({undecided})",
+        remedy="raise max_lots, lower least_if_used, or name the order's lots",
+        severity="drops",
     )
 
 
@@ -148,15 +198,16 @@ def _absurd(desk: Desk, model: OrderModel, judgement: Judgement) -> bool:
 
 
 def _greatest_amount(judgement: Judgement) -> float | None:
-    if judgement.verdict == "unreachable":
+    if judgement.verdict in LOST:
         return 0.0
     greatest = judgement.greatest
     return None if greatest is None or greatest.amount is None else float(greatest.amount)
 
 
 def _proof(judgement: Judgement, recipe: Recipe | None) -> Proof:
-    if judgement.blocking is not None:
-        return judgement.blocking
+    lost = judgement.blocking or judgement.branches
+    if lost is not None:
+        return lost
     if recipe is not None:
         return RecipeProof(shares=recipe.exact, face=judgement.face)
     assert judgement.greatest is not None, "an order that some blend meets has a recipe or is short"

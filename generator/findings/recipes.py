@@ -8,9 +8,11 @@ least share of the last lot, of the one before, …), so that a recipe doesn't j
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
+from generator.findings.fewest import fewest_lots
+from generator.findings.house import Offer, best_within
 from generator.findings.measures import Measure, blend_value
 from generator.findings.model import OrderModel
 from generator.findings.programs import (
@@ -41,20 +43,38 @@ class Staged:
     stages: tuple[Optimum, ...]
 
 
+@dataclass(frozen=True, slots=True)
+class Best:
+    """Best shares within the house rules: ``staged`` on the winning ``branch``, a whole order if there
+    are no rules in the way (``is_whole``)."""
+
+    staged: Staged
+    branch: OrderModel
+    is_whole: bool
+
+
 def cheapest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Recipe:
     """The cheapest recipe in the order's amount; where no cost at all is known, the closest one.
 
-    ValueError if no shares meet the limits in that amount.
+    ValueError if no shares meet the limits and the house rules in that amount.
     """
     if all(cost is None for cost in model.cost):
         return closest(model, table, measures)
-    rows = share_rows(model)
+    best = cheapest_shares(model)
+    has_bound = best.is_whole and all(cost is not None for cost in model.cost)
+    bound = _cost_bound(model, share_rows(model), best.staged.stages[0]) if has_bound else None
+    return recipe_of(model, table, measures, named_shares(model, best.staged.x), bound)
+
+
+def cheapest_shares(model: OrderModel) -> Best:
+    """Least share of lots of unknown cost, then least cost; ValueError if there are none."""
+    return best_shares(model, _costs_in_turn(model))
+
+
+def _costs_in_turn(model: OrderModel) -> list[Vector]:
     unknown = tuple(ONE if cost is None else ZERO for cost in model.cost)
     known = tuple(cost or ZERO for cost in model.cost)
-    objectives = ([unknown] if any(unknown) else []) + [known]
-    staged = best_shares(model, rows, objectives)
-    bound = None if any(unknown) else _cost_bound(model, rows, staged.stages[0])
-    return recipe_of(model, table, measures, _named_shares(model, staged.x), bound)
+    return [unknown, known] if any(unknown) else [known]
 
 
 def closest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Recipe:
@@ -76,25 +96,32 @@ def closest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) ->
         row[n + 2 * k], row[n + 2 * k + 1] = -ONE, ONE
         extra.append((tuple(row), ZERO, ZERO))
     distance = (*((ZERO,) * n), *((ONE,) * (width - n)))
-    staged = best_shares(model, share_rows(model), [distance], extra=extra, width=width)
-    return recipe_of(model, table, measures, _named_shares(model, staged.x))
+    best = best_shares(model, [distance], extra=extra, width=width)
+    return recipe_of(model, table, measures, named_shares(model, best.staged.x))
 
 
 def roomiest(model: OrderModel, table: Table, measures: Mapping[str, Measure], scales: Scales, room: Room) -> Recipe:
     """The cheapest recipe among those with the greatest room."""
     moved = tightened(model, scales, room.t)
     assert moved is not None, "the greatest room is inside every rule's domain"
-    if any(cost is None for cost in model.cost):
-        objectives = [tuple(ONE if cost is None else ZERO for cost in model.cost)]
-    else:
-        objectives = []
-    objectives.append(tuple(cost or ZERO for cost in model.cost))
     try:
-        staged = best_shares(moved, share_rows(moved), objectives)
+        best = cheapest_shares(moved)
     except ValueError:
         # A blend rule rounds its indices to 15 digits: the last one can cost these shares their place.
-        return recipe_of(model, table, measures, _named_shares(model, room.shares))
-    return recipe_of(model, table, measures, _named_shares(model, staged.x))
+        return recipe_of(model, table, measures, named_shares(model, room.shares))
+    return recipe_of(model, table, measures, named_shares(model, best.staged.x))
+
+
+def fewest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Recipe:
+    """The cheapest recipe among those of the fewest lots."""
+    support = fewest_lots(model)
+    upper = tuple(top if i in support else ZERO for i, top in enumerate(model.upper))
+    try:
+        best = cheapest_shares(replace(model, upper=upper))
+    except ValueError:
+        # The search is in floats: what it found a hair outside the limits does not count.
+        best = cheapest_shares(model)
+    return recipe_of(model, table, measures, named_shares(model, best.staged.x))
 
 
 def _aim(model: OrderModel, name: str, limit: Limit) -> Fraction | None:
@@ -117,33 +144,46 @@ def _scale(model: OrderModel, name: str) -> Fraction:
     return abs(rule.index(aim)) / 100 or ONE if limit.aim else ONE
 
 
-def _named_shares(model: OrderModel, x: Vector) -> dict[str, Fraction]:
+def named_shares(model: OrderModel, x: Sequence[Fraction]) -> dict[str, Fraction]:
+    """Shares by lot, used lots only."""
     return {name: share for name, share in zip(model.names, x, strict=False) if share}
 
 
 def best_shares(
     model: OrderModel,
-    rows: Rows,
     objectives: Sequence[Vector],
     *,
     extra: Sequence[tuple[Vector, Bound, Bound]] = (),
     width: int | None = None,
-) -> Staged:
-    """Shares in the order's amount that are best by each objective in turn, ties by file order.
+) -> Best:
+    """Shares in the order's amount, within the house rules, best by each objective in turn.
 
-    ``width`` columns in all: those beyond the lots are ≥ 0 and stand in ``extra`` rows only.
-    ValueError if no shares meet the limits in that amount.
+    Ties by file order.  ``width`` columns in all: those beyond the lots are ≥ 0 and stand in ``extra``
+    rows only.  ValueError if no shares meet the limits and rules in that amount.
     """
     n = len(model.lots)
     more = (width or n) - n
-    upper = (*capped_upper(model, model.amount), *((None,) * more))
-    program = share_program(model, rows, (ZERO,) * (n + more), upper=upper, extra=extra)
+    rows = share_rows(model)
     positions = tuple(Fraction(i) for i in range(n))
-    one_by_one = (tuple(ONE if j == i else ZERO for j in range(n)) for i in reversed(range(n)))
-    staged = lexicographic(program, [*objectives, positions, *one_by_one])
-    if staged is None:
+    one_by_one = [tuple(ONE if j == i else ZERO for j in range(n)) for i in reversed(range(n))]
+    every = [*objectives, positions, *one_by_one]
+
+    def solve(branch: OrderModel) -> Offer[Staged] | None:
+        upper = (*capped_upper(branch, branch.amount), *((None,) * more))
+        staged = lexicographic(share_program(branch, rows, (ZERO,) * (n + more), upper=upper, extra=extra), every)
+        if staged is None:
+            return None
+        key = tuple(_dot(objective, staged.x) for objective in every)
+        return Offer(staged.x[:n], key, staged)
+
+    found = best_within(model, solve)
+    if found is None:
         raise ValueError(f"no shares meet the limits of order {model.order.name} in its amount")
-    return staged
+    return Best(found.answer, found.branch.model, not found.branch.path)
+
+
+def _dot(one: Vector, other: Vector) -> Fraction:
+    return sum((a * b for a, b in zip(one, other, strict=False) if a and b), ZERO)
 
 
 def lexicographic(program: Program, objectives: Sequence[Vector]) -> Staged | None:

@@ -189,6 +189,7 @@ class OrderFinding:
     amount_low: float | None = None
     amount_high: float | None = None
     barred_by: tuple[str, ...] = ()
+    lifted: Mapping[str, tuple[Verdict | None, float | None]] = field(default_factory=dict)
     room: float | None = None
     room_unit: Literal["sd", "scale"] | None = None
     greatest_amount: float | None = None

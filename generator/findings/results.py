@@ -36,6 +36,7 @@ from generator.findings.records import (
     Recipe,
     RecipeProof,
     RevisionMark,
+    Verdict,
     WantedLot,
 )
 from generator.intake.records import ReadNote
@@ -188,6 +189,7 @@ def _order_to(order: OrderFinding) -> Json:
         "sentence": order.sentence,
         "verdict": order.verdict,
         "barred_by": list(order.barred_by),
+        "lifted": _verdicts_to(order.lifted),
         "room": order.room,
         "room_unit": order.room_unit,
         "greatest_amount": order.greatest_amount,
@@ -200,7 +202,7 @@ def _order_to(order: OrderFinding) -> Json:
         ],
         "nearest": None if order.nearest is None else _plain(order.nearest, ("shares", "values", "excess")),
         "wanted_lot": [{"share": wanted.share, "values": wanted.values} for wanted in order.wanted_lot],
-        "without_lot": {lot: {"verdict": verdict, "cost": cost} for lot, (verdict, cost) in order.without_lot.items()},
+        "without_lot": _verdicts_to(order.without_lot),
         "lot_prices": prices,
         "curve": [_plain(point, ("room", "cost", "shares")) for point in order.curve],
         "left_out": dict(order.left_out),
@@ -223,6 +225,7 @@ def _order_from(item: Json) -> OrderFinding:
         **_named(item, _ORDER),
         verdict=item["verdict"],
         barred_by=tuple(item.get("barred_by", ())),
+        lifted=_verdicts_from(item.get("lifted")),
         greatest_recipe=item.get("greatest_recipe"),
         runs_out=tuple(item.get("runs_out", ())),
         recipes={name: _recipe_from(recipe) for name, recipe in item.get("recipes", {}).items()},
@@ -232,13 +235,21 @@ def _order_from(item: Json) -> OrderFinding:
         ),
         nearest=None if nearest is None else Nearest(**_named(nearest, ("shares", "values", "excess"))),
         wanted_lot=tuple(WantedLot(**_named(wanted, ("share", "values"))) for wanted in item.get("wanted_lot", [])),
-        without_lot={lot: (it["verdict"], it["cost"]) for lot, it in item.get("without_lot", {}).items()},
+        without_lot=_verdicts_from(item.get("without_lot")),
         enters_at={lot: price["enters_at"] for lot, price in prices.items() if "enters_at" in price},
         stays_up_to={lot: price["stays_up_to"] for lot, price in prices.items() if "stays_up_to" in price},
         curve=tuple(CurvePoint(**_named(point, ("room", "cost", "shares"))) for point in item.get("curve", [])),
         left_out=item.get("left_out", {}),
         proof=_maybe(item.get("proof"), _proof_from),
     )
+
+
+def _verdicts_to(answers: Mapping[str, tuple[Verdict | None, float | None]]) -> Json:
+    return {name: {"verdict": verdict, "cost": cost} for name, (verdict, cost) in answers.items()}
+
+
+def _verdicts_from(items: Json | None) -> dict[str, tuple[Verdict | None, float | None]]:
+    return {name: (item["verdict"], item["cost"]) for name, item in (items or {}).items()}
 
 
 def _recipe_to(recipe: Recipe) -> Json:

@@ -12,6 +12,7 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
 
+from generator.findings.house import Offer, best_within
 from generator.findings.measures import own_value
 from generator.findings.model import OrderModel, Row
 from generator.findings.programs import ONE, ZERO, capped_upper, share_program, share_rows
@@ -92,12 +93,22 @@ def tightened(model: OrderModel, scales: Scales, t: Fraction) -> OrderModel | No
 def room_of(model: OrderModel, scales: Scales, *, in_amount: bool) -> Room | None:
     """The greatest t, exactly with equal carriers; None where nothing can move or exact limits alone block.
 
-    ``in_amount`` keeps the stock's caps on the shares in the order's amount.
+    Within the house rules.  ``in_amount`` keeps the stock's caps on the shares in the order's amount.
     """
-    upper = capped_upper(model, model.amount) if in_amount else model.upper
-    movable = [k for k, row in enumerate(model.rows) if row.side != "exact"]
-    if not movable:
+    if all(row.side == "exact" for row in model.rows):
         return None
+
+    def solve(branch: OrderModel) -> Offer[Room] | None:
+        room = _room_on(branch, scales, in_amount=in_amount)
+        return None if room is None else Offer(room.shares, (-room.t,), room)
+
+    found = best_within(model, solve)
+    return None if found is None else found.answer
+
+
+def _room_on(model: OrderModel, scales: Scales, *, in_amount: bool) -> Room | None:
+    """The greatest t on one branch of the house rules."""
+    upper = capped_upper(model, model.amount) if in_amount else model.upper
     if is_linear(model):
         step = _step(model, model, scales, upper)
         return None if step is None else Room(step[0], step[1])

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from fractions import Fraction
 
+from generator.findings.house_rules import LEAST_IF_USED, MAX_LOTS
 from generator.findings.model import OrderModel, Row
 from generator.findings.records import BlockingProof, Multiplier, OrderFinding, Recipe
 from generator.findings.values import HUNDRED
@@ -28,6 +29,9 @@ def answer_sentence(
         return (
             f"Not makeable from these lots: {blocking_words(campaign, model, judgement.blocking)}{_near_miss(finding)}."
         )
+    if judgement.verdict == "barred":
+        rules = listed([rule_words(campaign, name) for name in finding.barred_by])
+        return f"Barred: these lots could make it, but not within the house rules ({rules})."
     if judgement.verdict == "short":
         return _short(campaign, model, judgement)
     words = _recipe_words(campaign, model, finding)
@@ -177,6 +181,16 @@ def _label(campaign: Campaign, name: str) -> str:
 def _unit(campaign: Campaign, name: str) -> str:
     unit = campaign.quantities()[name].unit
     return f" {unit}" if unit else ""
+
+
+def rule_words(campaign: Campaign, name: str) -> str:
+    """A house rule in words."""
+    if name == MAX_LOTS:
+        return f"at most {_counted(campaign.house.max_lots or 0, 'lot')} in a recipe"
+    if name == LEAST_IF_USED:
+        least = campaign.house.least_if_used
+        return "a used lot has its least share" if least is None else f"a used lot is at least {percent(least)}"
+    return name.removeprefix("keep_apart: ").replace(" from ", " kept apart from ")
 
 
 def _counted(count: int, word: str) -> str:

@@ -8,10 +8,10 @@ from fractions import Fraction
 
 from generator.findings.model import OrderModel
 from generator.findings.programs import ZERO, share_rows
-from generator.findings.recipes import best_shares
+from generator.findings.recipes import cheapest_shares
 from generator.findings.room import Scales, is_linear, tightened
 
-#: Samples of a curve that has no straight corners (carriers that differ, blend rules).
+#: Samples of a curve that has no straight corners (carriers that differ, blend rules, house rules).
 SAMPLES = 9
 #: Corners of a curve at most; a curve has about as many as the order has lots.
 MOST_CORNERS = 60
@@ -32,12 +32,11 @@ def cost_at(model: OrderModel, scales: Scales, t: Fraction) -> CostPoint | None:
     moved = tightened(model, scales, t)
     if moved is None:
         return None
-    rows = share_rows(moved)
     try:
-        staged = best_shares(moved, rows, [tuple(cost or ZERO for cost in model.cost)])
+        best = cheapest_shares(moved)
     except ValueError:
         return None
-    first = staged.stages[0]
+    rows, staged, first = share_rows(moved), best.staged, best.staged.stages[0]
     by_row = {(row.on, row.side): scale for row, scale in zip(model.rows, scales.by_row, strict=True)}
     slope = ZERO
     for k, weight in rows.weights(first.multipliers).items():
@@ -51,13 +50,13 @@ def cost_at(model: OrderModel, scales: Scales, t: Fraction) -> CostPoint | None:
 def curve(model: OrderModel, scales: Scales, first: Fraction, last: Fraction) -> tuple[CostPoint, ...]:
     """The curve from room ``first`` to ``last``: exact corners with equal carriers, else samples.
 
-    With equal carriers the cost is convex and piecewise linear in t: tangents from two ends meet at a
-    corner, or at a point that splits the search.
+    With equal carriers and no house rules the cost is convex and piecewise linear in t: tangents from
+    two ends meet at a corner, or at a point that splits the search.
     """
     if first >= last:
         only = cost_at(model, scales, last)
         return () if only is None else (only,)
-    if not is_linear(model):
+    if not is_linear(model) or model.rules.names():
         steps = [first + (last - first) * k / (SAMPLES - 1) for k in range(SAMPLES)]
         return tuple(point for t in steps if (point := cost_at(model, scales, t)) is not None)
     left, right = cost_at(model, scales, first), cost_at(model, scales, last)

@@ -7,10 +7,13 @@ exact shares and multipliers are put in the order's own terms.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
 
+from generator.findings.house import Branch as HouseBranch
+from generator.findings.house import Offer, best_within, closed_branches
+from generator.findings.house_rules import Rules
 from generator.findings.model import OrderModel, Row
 from generator.findings.programs import (
     ONE,
@@ -23,7 +26,7 @@ from generator.findings.programs import (
     share_program,
     share_rows,
 )
-from generator.findings.records import BlockingProof, Cap, Face, Multiplier, Verdict
+from generator.findings.records import BlockingProof, Branch, BranchProof, Cap, Face, Multiplier, Verdict
 from generator.geometry.decide import decide
 from generator.geometry.program import Bound, Infeasible, Optimum, Program, Unbounded, Vector
 from generator.geometry.proofs import fewest_rows, tidy
@@ -41,27 +44,66 @@ class Greatest:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Judgement:
-    """The verdict with its parts: ``blocking`` if unreachable, else ``greatest`` where stock is given,
-    and the ``face`` of an edge."""
+    """The verdict with its parts: ``blocking`` if unreachable, ``branches`` if barred, else ``greatest``
+    where stock is given, and the ``face`` of an edge."""
 
     verdict: Verdict
     blocking: BlockingProof | None = None
+    branches: BranchProof | None = None
     face: Face | None = None
     greatest: Greatest | None = None
 
 
 def judge(model: OrderModel) -> Judgement:
-    """The first verdict that applies, proven: unreachable, short, edge, makeable."""
+    """The first verdict that applies, proven: unreachable, barred, short, edge, makeable.
+
+    UndecidedError where the house rules leave too many branches.
+    """
     rows = share_rows(model)
     program = share_program(model, rows, (ZERO,) * len(model.lots))
     answer = decide(program)
     if isinstance(answer, Infeasible):
         return Judgement(verdict="unreachable", blocking=blocking_proof(model, rows, program, answer))
+    if model.rules.names() and best_within(model, _any_shares) is None:
+        return Judgement(verdict="barred", branches=branch_proof(model))
     greatest = greatest_amount(model)
     if greatest and greatest.amount is not None and model.amount is not None and greatest.amount < model.amount:
         return Judgement(verdict="short", greatest=greatest)
     face = face_of(model)
     return Judgement(verdict="edge" if face else "makeable", face=face, greatest=greatest)
+
+
+def _any_shares(branch: OrderModel) -> Offer[None] | None:
+    answer = decide(share_program(branch, share_rows(branch), (ZERO,) * len(branch.lots)))
+    return None if not isinstance(answer, Optimum) else Offer(answer.x, (), None)
+
+
+def is_allowed(model: OrderModel, rules: Rules) -> bool:
+    """Whether some blend within the limits, stock aside, keeps these rules."""
+    return best_within(model, _any_shares, rules) is not None
+
+
+def branch_proof(model: OrderModel) -> BranchProof:
+    """One blocking proof for each branch of the house rules, which together leave none open."""
+    return BranchProof(branches=tuple(_closed(branch) for branch in closed_branches(model, _any_shares)))
+
+
+def _closed(branch: HouseBranch) -> Branch:
+    if branch.is_empty:
+        return Branch(rules=branch.path, multipliers=(), scores={})
+    model = branch.model
+    rows = share_rows(model)
+    program = share_program(model, rows, (ZERO,) * len(model.lots))
+    answer = decide(program)
+    assert isinstance(answer, Infeasible), "a closed branch has no shares"
+    proof = blocking_proof(model, rows, program, answer)
+    usable = {name for name, top in zip(model.names, model.upper, strict=True) if top != 0}
+    return Branch(
+        rules=branch.path,
+        multipliers=proof.multipliers,
+        scores={name: score for name, score in proof.scores.items() if name in usable},
+        least=proof.least,
+    )
 
 
 def multipliers_of(
@@ -100,12 +142,20 @@ def _tidied(weights: Mapping[int, Fraction]) -> dict[int, Fraction]:
 
 
 def greatest_amount(model: OrderModel) -> Greatest | None:
-    """The most that the stock makes within the limits; None where no stock is given.
+    """The most that the stock makes within the limits and rules; None where no stock is given.
 
     An order that some blend meets has a greatest amount above 0: a little of that blend.
     """
     if all(stock is None for stock in model.stock):
         return None
+    found = best_within(model, _greatest_on)
+    if found is None:
+        return Greatest(amount=ZERO, shares={}, runs_out=(), cap=None)
+    # With house rules the cap of one branch says nothing about the others.
+    return found.answer if not found.branch.path else replace(found.answer, cap=None)
+
+
+def _greatest_on(model: OrderModel) -> Offer[Greatest] | None:
     rows = amount_rows(model)
     bound_rows = share_bound_rows(model)
     n = len(model.lots)
@@ -119,14 +169,18 @@ def greatest_amount(model: OrderModel) -> Greatest | None:
     )
     answer = decide(program)
     if isinstance(answer, Unbounded):
-        return Greatest(amount=None, shares=_shares(model, answer.ray), runs_out=(), cap=None)
+        shares = _shares(model, answer.ray)
+        found = Greatest(amount=None, shares=shares, runs_out=(), cap=None)
+        # Without bound comes before any amount.
+        return Offer([shares.get(name, ZERO) for name in model.names], (ZERO, ZERO), found)
     assert isinstance(answer, Optimum), "nothing at all is always within homogeneous limits"
     amount = -answer.value
     if amount == 0:
-        return Greatest(amount=ZERO, shares={}, runs_out=(), cap=_cap(model, rows, bound_rows, answer))
-    return Greatest(
+        return None
+    shares = _shares(model, answer.x)
+    found = Greatest(
         amount=amount,
-        shares=_shares(model, answer.x),
+        shares=shares,
         runs_out=tuple(
             name
             for name, x, stock in zip(model.names, answer.x, model.stock, strict=True)
@@ -134,6 +188,7 @@ def greatest_amount(model: OrderModel) -> Greatest | None:
         ),
         cap=_cap(model, rows, bound_rows, answer),
     )
+    return Offer([shares.get(name, ZERO) for name in model.names], (ONE, -amount), found)
 
 
 def _shares(model: OrderModel, amounts: Vector) -> dict[str, Fraction]:

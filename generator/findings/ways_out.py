@@ -6,10 +6,11 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from fractions import Fraction
 
+from generator.findings.house import Offer, best_within
 from generator.findings.measures import Measure, blend_value, own_value, reports, stated
 from generator.findings.model import OrderModel, Row
-from generator.findings.programs import ONE, ZERO, share_program, share_rows
-from generator.findings.recipes import lexicographic
+from generator.findings.programs import ONE, ZERO
+from generator.findings.recipes import best_shares
 from generator.findings.records import Nearest, WantedLot
 from generator.findings.room import Scales, weight_of_scale
 from generator.findings.values import Table
@@ -44,15 +45,11 @@ def nearest_blend(model: OrderModel, table: Table, measures: Mapping[str, Measur
         terms = [sign * term / weight for term in row.terms] + [ZERO] * (width - n)
         terms[n + k] = -ONE
         extra.append((tuple(terms), None, ZERO))
-    bare = replace(model, rows=())
-    program = share_program(
-        bare, share_rows(bare), (ZERO,) * width, upper=(*model.upper, *((None,) * len(sides))), extra=extra
-    )
     excess = (*((ZERO,) * n), *((ONE,) * len(sides)))
-    positions = tuple(Fraction(i) for i in range(n))
-    staged = lexicographic(program, [excess, positions])
-    assert staged is not None, "shares within their bounds exist"
-    shares = {lot: x for lot, x in zip(model.lots, staged.x, strict=False) if x}
+    # Stock is aside: the counter-offer is about composition.
+    freed = replace(model, rows=(), stock=(None,) * n)
+    best = best_shares(freed, [excess], extra=extra, width=width)
+    shares = {lot: x for lot, x in zip(model.lots, best.staged.x, strict=False) if x}
     names = dict(zip(model.lots, model.names, strict=True))
     values = {name: blend_value(measure, table, model.lots, shares) for name, measure in measures.items()}
     broken = {name: over for name in model.limits if (over := _broken_by(model, name, values[name]))}
@@ -114,6 +111,36 @@ def _wanted(
     names: Sequence[str],
     share: Fraction,
 ) -> dict[str, float] | None:
+    """The composition nearest to the hull, over the branches that keep apart what is kept apart."""
+
+    def solve(branch: OrderModel) -> Offer[Vector] | None:
+        program = _wanted_program(campaign, branch, table, measures, names, share)
+        answer = decide(program)
+        if isinstance(answer, Infeasible):
+            return None
+        assert isinstance(answer, Optimum), "a distance is at least 0"
+        return Offer(answer.x[: len(model.lots)], (answer.value,), answer.x)
+
+    found = best_within(model, solve, model.rules.only_apart())
+    if found is None:
+        return None
+    values = {}
+    for k, name in enumerate(names):
+        value = own_value(measures[name].rule, found.answer[len(model.lots) + k])
+        if value is None:
+            return None
+        values[name] = float(value)
+    return values
+
+
+def _wanted_program(
+    campaign: Campaign,
+    model: OrderModel,
+    table: Table,
+    measures: Mapping[str, Measure],
+    names: Sequence[str],
+    share: Fraction,
+) -> Program:
     """Columns: shares of the lots, p (the wanted composition), weights of the nearest hull point, and
     two columns of distance for each component."""
     n, d = len(model.lots), len(names)
@@ -141,7 +168,7 @@ def _wanted(
             rows.append((tuple(vector), ZERO, ZERO))
     ranges = [_value_range(campaign, name, points[name]) for name in names]
     rest = (None,) * (width - n - d)
-    program = Program(
+    return Program(
         rows=tuple(vector for vector, _, _ in rows),
         row_low=tuple(low for _, low, _ in rows),
         row_high=tuple(high for _, _, high in rows),
@@ -149,17 +176,6 @@ def _wanted(
         upper=(*((ZERO,) * n if alone else model.upper), *(high for _, high in ranges), *rest),
         cost=(*((ZERO,) * (width - (0 if alone else 2 * d))), *((ONE,) * (0 if alone else 2 * d))),
     )
-    answer = decide(program)
-    if isinstance(answer, Infeasible):
-        return None
-    assert isinstance(answer, Optimum), "a distance is at least 0"
-    found = {}
-    for k, name in enumerate(names):
-        value = own_value(measures[name].rule, answer.x[n + k])
-        if value is None:
-            return None
-        found[name] = float(value)
-    return found
 
 
 def _mean(values: Sequence[Fraction]) -> Fraction:

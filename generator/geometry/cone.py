@@ -2,8 +2,8 @@
 
 Method: supporting hyperplanes at the boundary between an interior point and the relaxation's optimum
 (Veinott 1967; Kelley 1960 where there is no interior point yet).  Every tangent is an exact row that is
-proven to hold for all allowed x ≥ 0 (its coefficients are rounded the safe way), so the last relaxation,
-decided exactly, proves the low side; the point returned is exactly feasible, which proves the high side.
+proven to hold for all allowed x ≥ 0 (its coefficients are rounded the safe way), so a lower bound of a
+relaxation, proven in floats, proves the low side; the point returned is exactly feasible: the high side.
 Quantiles and Φ are scipy's, widened by 2⁻³⁶ for the proof (see ``chance``).
 """
 
@@ -20,13 +20,21 @@ from scipy.special import ndtr, ndtri
 
 from generator.geometry.chance import Chance, Image, holds, probability, spare, tangent
 from generator.geometry.decide import decide
+from generator.geometry.nearby import feasible_near
 from generator.geometry.program import Infeasible, Optimum, Program, Unbounded, Vector
-from generator.geometry.simplex import OPTIMAL, Start, solve
+from generator.geometry.rigour import solve_certified
+from generator.geometry.simplex import INFEASIBLE, OPTIMAL, Start, solve
 from generator.geometry.stack import Floats, make_stack, stack_of
 
 _ZERO, _ONE = Fraction(0), Fraction(1)
 #: Rounds of tangents before the gap that is left is reported as it stands.
 _ROUNDS = 200
+#: An interior point may use this much less deviation than allowed: more is not looked for.
+_AMPLE = 0.2
+#: Rounds that are spent on a more interior point than the first one found.
+_PATIENCE = 5
+#: Tangents kept at once; when more come, those that don't bind are dropped.
+_MOST_TANGENTS = 60
 #: Quantiles beyond this (one failure in 10⁹) are not told apart.
 _SURE = 6.0
 #: Stands for a proof that no point will do.
@@ -76,8 +84,8 @@ def assured(program: Program, chances: Sequence[Chance], wanted: float, gap: flo
         raise ValueError("the cost has no least value")
     if _all_hold(chances, first.x, wanted):
         return Assured(status="solved", x=first.x, value=first.value, least=first.value)
-    inner = _interior(linear, chances, wanted)
-    if inner is None or inner == _IMPOSSIBLE:
+    inner = _Search(linear, chances).inside(wanted, patience=_PATIENCE)
+    if not inner:
         return Assured(status="undecided" if inner is None else "impossible")
     return _between(linear, chances, wanted, inner, gap)
 
@@ -85,8 +93,9 @@ def assured(program: Program, chances: Sequence[Chance], wanted: float, gap: flo
 def surest(program: Program, chances: Sequence[Chance], precision: float = 1e-6) -> Surest | None:
     """The greatest common probability, to ``precision`` in quantiles (standard deviations).
 
-    Bisection, each success lifted to what its point really has.  None where not even ½ can be had.
-    ``at_most`` is proven.  What exceeds 1 − 10⁻⁹ counts as sure.
+    Each point found raises the level that the next must pass; tangents of a lower level hold at a
+    higher one, so none is lost.  None where not even ½ can be had.  ``at_most`` is proven (1 where it is
+    not, or where more than 1 − 10⁻⁹ can be had).
     """
     linear = replace(
         _with_rows(program, [side for chance in chances for side in chance.sides]), cost=(_ZERO,) * len(program.cost)
@@ -94,19 +103,18 @@ def surest(program: Program, chances: Sequence[Chance], precision: float = 1e-6)
     first = decide(linear)
     if not isinstance(first, Optimum):
         return None
-    best = first.x
-    low, high = max(_common(chances, best), 0.0), _SURE
-    while high - low > precision:
-        # a little more than is had is usually possible: try far first, then halve
-        middle = (low + high) / 2
-        found = _interior(linear, chances, float(ndtr(middle)))
-        if found is None:
-            break
-        if found == _IMPOSSIBLE:
-            high = middle
+    best, search = first.x, _Search(linear, chances)
+    at_most, step = 1.0, precision
+    while (level := _common(chances, best)) < _SURE and step < _SURE:
+        wanted = float(ndtr(max(level, 0.0) + step))
+        found = search.inside(wanted, patience=0)
+        if found:
+            best = found
+        elif found is None:
+            step *= 10  # so near to the top that nothing can be told: a coarser claim can be proven
         else:
-            best, low = found, max(_common(chances, found), middle)
-    at_most = 1.0 if high == _SURE else float(ndtr(high))
+            at_most = wanted
+            break
     return Surest(x=best, probability=min(probability(chance, best) for chance in chances), at_most=at_most)
 
 
@@ -139,22 +147,20 @@ class _Relaxation:
     """A program that grows by rows ≤ 0 and is solved in floats, each time from the basis before."""
 
     def __init__(self, program: Program) -> None:
-        self.program = program
         self.stack = stack_of([program])
+        self.own = len(program.rows)
         self.start: Start | None = None
 
     def add(self, rows: Sequence[Vector]) -> None:
-        """Further rows; their slacks join the basis."""
-        m, n = self.stack.shape
+        """Further rows; their slacks join the basis.  Too many: those that don't bind now are dropped first."""
         more = len(rows)
-        self.program = _with_rows(self.program, rows)
-        self.stack = make_stack(
+        if self.stack.shape[0] + more > self.own + _MOST_TANGENTS:
+            self._drop_loose()
+        m, n = self.stack.shape
+        self._set(
             np.vstack([self.stack.rows, [[float(value) for value in row] for row in rows]]),
             np.append(self.stack.row_low, [[-np.inf] * more], axis=1),
             np.append(self.stack.row_high, [[0.0] * more], axis=1),
-            lower=self.stack.lower,
-            upper=self.stack.upper,
-            cost=self.stack.cost,
         )
         if self.start is not None:
             self.start = Start(
@@ -162,50 +168,81 @@ class _Relaxation:
                 np.append(self.start.at_upper, [[False] * more], axis=1),
             )
 
+    def _drop_loose(self) -> None:
+        m, n = self.stack.shape
+        if self.start is None:
+            return
+        loose = set(self.start.basic[0].tolist())
+        kept = [k for k in range(m) if k < self.own or n + k not in loose]
+        self._set(self.stack.rows[kept], self.stack.row_low[:, kept], self.stack.row_high[:, kept])
+        self.start = None
+
+    def _set(self, rows: Floats, low: Floats, high: Floats) -> None:
+        stack = self.stack
+        self.stack = make_stack(rows, low, high, lower=stack.lower, upper=stack.upper, cost=stack.cost)
+
     def solve(self) -> Floats | None:
         """The optimum in floats; None where they find none."""
         solved = solve(self.stack, self.start)
         if solved.status[0] != OPTIMAL:
             return None
-        self.start = solved.start
+        self.start = Start(solved.basic, solved.at_upper)
         return np.asarray(solved.x[0], dtype=np.float64)
 
+    def least(self) -> float:
+        """A proven lower bound of the value: +inf where there is provably no feasible point."""
+        certified = solve_certified(self.stack, self.start)
+        if certified.solved.status[0] == INFEASIBLE and certified.decided[0]:
+            return math.inf
+        return float(certified.least[0])
 
-def _interior(linear: Program, chances: Sequence[Chance], wanted: float) -> Vector | None:
-    """An exact point at which all chances hold; ``_IMPOSSIBLE`` where there is none, proven; None: not found.
 
-    Greatest t with every tangent + t·size ≤ 0, where size is about the row's own; t ≤ 1.
+class _Search:
+    """For points at which all chances hold: greatest t with every tangent + t·size ≤ 0, −1 ≤ t ≤ 1.
+
+    Size is about the tangent's largest term.  Tangents stay for the next search, at no lower probability.
     """
-    n = len(linear.cost)
-    sizes = [max(map(abs, side)) or _ONE for chance in chances for side in chance.sides]
-    rows = len(linear.rows) - len(sizes)
-    program = Program(
-        rows=(
-            *((*row, _ZERO) for row in linear.rows[:rows]),
-            *((*row, size) for row, size in zip(linear.rows[rows:], sizes, strict=True)),
-        ),
-        row_low=linear.row_low,
-        row_high=linear.row_high,
-        lower=(*linear.lower, None),
-        upper=(*linear.upper, _ONE),
-        cost=(*(_ZERO,) * n, -_ONE),
-    )
-    relaxation, images = _Relaxation(program), [Image.of(chance) for chance in chances]
-    for _ in range(_ROUNDS):
-        x = relaxation.solve()
-        if x is None or x[n] <= 1e-13:
-            break
-        shares = np.maximum(x[:n], 0.0)
-        if _spare(images, shares, wanted) > 0.3:
-            answer = decide(relaxation.program)
-            if isinstance(answer, Optimum) and _all_hold(chances, answer.x[:n], wanted):
-                return answer.x[:n]
-        cuts = [(*cut, _size(cut)) for image in images if (cut := tangent(image, shares, wanted)) is not None]
-        relaxation.add(cuts)
-    answer = decide(relaxation.program)
-    if not isinstance(answer, Optimum) or answer.value > 0:
-        return _IMPOSSIBLE
-    return answer.x[:n] if _all_hold(chances, answer.x[:n], wanted) else None
+
+    def __init__(self, linear: Program, chances: Sequence[Chance]) -> None:
+        sizes = [max(map(abs, side)) or _ONE for chance in chances for side in chance.sides]
+        rows = len(linear.rows) - len(sizes)
+        self.linear, self.chances = linear, chances
+        self.images = [Image.of(chance) for chance in chances]
+        self.relaxation = _Relaxation(
+            replace(
+                linear,
+                rows=(
+                    *((*row, _ZERO) for row in linear.rows[:rows]),
+                    *((*row, size) for row, size in zip(linear.rows[rows:], sizes, strict=True)),
+                ),
+                lower=(*linear.lower, -_ONE),
+                upper=(*linear.upper, _ONE),
+                cost=(*(_ZERO,) * len(linear.cost), -_ONE),
+            )
+        )
+
+    def inside(self, wanted: float, patience: int) -> Vector | None:
+        """An exact point where all chances hold; empty where there is provably none; None where none is found.
+
+        After the first one found, ``patience`` more rounds look for one with more to spare.
+        """
+        best, most, rounds = None, 0.0, 0
+        for _ in range(_ROUNDS):
+            x = self.relaxation.solve()
+            if x is None or x[-1] < 1e-12:
+                return best or (_IMPOSSIBLE if self.relaxation.least() > 0 else None)
+            shares = np.maximum(x[:-1], 0.0)
+            spare = _spare(self.images, shares, wanted)
+            if spare > most:
+                exact = feasible_near(self.linear, shares)
+                if exact is not None and _all_hold(self.chances, exact, wanted):
+                    best, most = exact, spare
+            rounds += best is not None
+            if best is not None and (rounds > patience or most > _AMPLE):
+                return best
+            cuts = [cut for image in self.images if (cut := tangent(image, shares, wanted)) is not None]
+            self.relaxation.add([(*cut, _size(cut)) for cut in cuts])
+        return best
 
 
 def _size(terms: Vector) -> Fraction:
@@ -219,23 +256,36 @@ def _between(linear: Program, chances: Sequence[Chance], wanted: float, inner: V
     inside = np.array([float(value) for value in inner])
     cost = np.array([float(value) for value in linear.cost])
     tolerance = gap * float(np.abs(cost).max(initial=0.0))
+    edge = inside
     for _ in range(_ROUNDS):
-        outside = relaxation.solve()
-        if outside is None:
+        x = relaxation.solve()
+        if x is None:
             break
-        edge = _edge(images, wanted, inside, outside)
-        if float(cost @ (edge - outside)) <= tolerance / 4:
+        edge = _edge(images, wanted, inside, x)
+        if float(cost @ (edge - x)) <= tolerance / 2:
             break
-        cuts = [cut for image in images for x in (edge, outside) if (cut := _cutting(image, x, outside, wanted))]
+        cuts = [cut for image in images for at in (edge, x) if (cut := _cutting(image, at, x, wanted))]
         if not cuts:
             break
         relaxation.add(cuts)
-    bottom = decide(relaxation.program)
-    if not isinstance(bottom, Optimum):
-        raise ArithmeticError(f"a relaxation of a program with a feasible point came out as {bottom!r}")
-    x = _blended(chances, wanted, inner, bottom.x)
-    value = sum((c * share for c, share in zip(linear.cost, x, strict=True)), _ZERO)
-    return Assured(status="solved", x=x, value=value, least=bottom.value)
+    least = relaxation.least()
+    best = _pulled_in(linear, chances, wanted, inner, edge)
+    value = _value(linear, best)
+    return Assured(status="solved", x=best, value=value, least=Fraction(least) if math.isfinite(least) else None)
+
+
+def _pulled_in(linear: Program, chances: Sequence[Chance], wanted: float, inner: Vector, edge: Floats) -> Vector:
+    """An exact point at which all chances hold, as near to ``edge`` as rounding lets it be."""
+    inside = np.array([float(value) for value in inner])
+    for step in 2.0 ** np.arange(-44, 0):
+        exact = feasible_near(linear, edge + step * (inside - edge))
+        if exact is not None and _all_hold(chances, exact, wanted):
+            return exact
+    return inner
+
+
+def _value(program: Program, x: Vector) -> Fraction:
+    return sum((c * share for c, share in zip(program.cost, x, strict=True)), _ZERO)
 
 
 def _edge(images: Sequence[Image], wanted: float, inside: Floats, outside: Floats) -> Floats:
@@ -262,13 +312,3 @@ def _last(holds: Callable[[float], bool]) -> float:
         middle = (low + high) / 2
         low, high = (middle, high) if holds(middle) else (low, middle)
     return low
-
-
-def _blended(chances: Sequence[Chance], wanted: float, inner: Vector, outer: Vector) -> Vector:
-    """The point nearest to ``outer`` on the way from ``inner`` at which all chances hold exactly."""
-
-    def at(t: float) -> Vector:
-        part = Fraction(t)
-        return tuple(a + part * (b - a) for a, b in zip(inner, outer, strict=True))
-
-    return at(_last(lambda t: _all_hold(chances, at(t), wanted)))

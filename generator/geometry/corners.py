@@ -17,12 +17,13 @@ from fractions import Fraction
 
 import numpy as np
 
+from generator.geometry.batched import inverses
 from generator.geometry.decide import decide
 from generator.geometry.exact import solve_on_basis
 from generator.geometry.program import Basis, Optimum, Program, Vector
 from generator.geometry.rigour import certify, gamma
 from generator.geometry.settle import Tally
-from generator.geometry.simplex import OPTIMAL, Solved, inverses
+from generator.geometry.simplex import OPTIMAL, Solved
 from generator.geometry.stack import Flags, Floats, Indices, float_table, make_stack, scaled
 
 #: Questions worked on together, so that the prices (questions × points) stay in the cache.

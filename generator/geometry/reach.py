@@ -18,7 +18,7 @@ import numpy as np
 
 from generator.geometry.program import Answer, Bound, Infeasible, Optimum, Program, Vector
 from generator.geometry.rigour import Certified, solve_certified
-from generator.geometry.settle import Tally, publish, settle
+from generator.geometry.settle import Tally, answer_many, publish, settle
 from generator.geometry.simplex import OPTIMAL
 from generator.geometry.stack import Flags, Floats, Stack, differ, doubtful, float_table, stack_of
 
@@ -73,8 +73,19 @@ class Reached:
 
     def answer(self, k: int) -> Answer:
         """The exact answer and proof of program k."""
-        known = self.settled.get(k)
-        return known if known is not None else publish(self.certified.solved, k, self.program_of(k))
+        return self.answers([k])[0]
+
+    def answers(self, which: Sequence[int] | None = None) -> list[Answer]:
+        """The exact answers and proofs of some programs, or of all; the same whatever other programs were asked."""
+        asked = range(self.value.size) if which is None else which
+        known = dict(self.settled)
+        for k in asked:
+            # a proven best basis is the only one; elsewhere the stack's end may depend on its company
+            if k not in known and self.certified.best[k]:
+                known[k] = publish(self.certified.solved, k, self.program_of(k))[0]
+        left = [k for k in asked if k not in known]
+        known.update(zip(left, answer_many([self.program_of(k) for k in left])[0], strict=True))
+        return [known[k] for k in asked]
 
 
 def reach(programs: Sequence[Program], *, ask_best: bool = True) -> Reached:

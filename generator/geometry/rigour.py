@@ -20,12 +20,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from generator.geometry.batched import basis_columns, rows_times, times, times_columns
 from generator.geometry.simplex import (
     INFEASIBLE,
     OPTIMAL,
     Solved,
     Start,
-    basis_columns,
     solve_scaled,
     unscaled,
 )
@@ -61,10 +61,10 @@ def gamma(terms: int) -> float:
     return terms * _UNIT / (1.0 - terms * _UNIT) * _UP
 
 
-def solve_certified(stack: Stack, start: Start | None = None) -> Certified:
-    """Solve the stack and certify what floats can."""
+def solve_certified(stack: Stack, start: Start | None = None, *, alone: bool = False) -> Certified:
+    """Solve the stack (``alone`` as in ``simplex.solve_scaled``) and certify what floats can."""
     inner, scales = scaled(stack)
-    found = solve_scaled(inner, start)
+    found = solve_scaled(inner, start, alone=alone)
     proven = certify(inner, found)
     unit = scales.x / scales.cost
     return Certified(
@@ -109,7 +109,7 @@ def _blocks(stack: Stack, sizes: Floats, multipliers: Floats) -> Flags:
     # a multiplier that leans on a missing bound is dropped: any multipliers of the right signs will do
     usable = np.isfinite(bound) & (multipliers != 0)
     y, bound = np.where(usable, multipliers, 0.0), np.where(usable, bound, 0.0)
-    score, size = _priced(y, stack.rows), _priced(np.abs(y), sizes)
+    score, size = times_columns(y, stack.rows), times_columns(np.abs(y), sizes)
     slip = gamma(m + 2) * size
     open_up = np.isinf(stack.upper) & (score + slip > 0)
     open_down = np.isinf(stack.lower) & (score - slip < 0)
@@ -123,13 +123,6 @@ def _blocks(stack: Stack, sizes: Floats, multipliers: Floats) -> Flags:
     # rounding to floats keeps order: bounds that cross as floats cross
     crossed = (stack.lower > stack.upper).any(axis=1) | (stack.row_low > stack.row_high).any(axis=1)
     return np.asarray(proven | crossed, dtype=np.bool_)
-
-
-def _priced(y: Floats, rows: Floats) -> Floats:
-    """yᵀ·rows, (K, n)."""
-    if rows.ndim == 2:
-        return np.asarray(y @ rows, dtype=np.float64)
-    return np.asarray(np.matmul(y[:, None, :], rows)[:, 0], dtype=np.float64)
 
 
 @dataclass(frozen=True, slots=True)
@@ -191,14 +184,14 @@ def _inverse_error(ended: _Ended) -> Floats:
 
 def _basic_values(ended: _Ended, sizes: Floats, rest: Floats, spread: Floats) -> tuple[Floats, Floats]:
     """All values (K, N), the basic ones close to the exact ones, and the bound (K, m) on their error."""
-    basic = -_times(ended.inverse, _row_values(ended.matrix, rest))
+    basic = -times(ended.inverse, rows_times(ended.matrix, rest))
     v = rest.copy()
     np.put_along_axis(v, ended.basic, basic, axis=1)
-    residual = _row_values(ended.matrix, v)
-    slip = gamma(v.shape[1] + 3) * _row_values(sizes, np.abs(v))
+    residual = rows_times(ended.matrix, v)
+    slip = gamma(v.shape[1] + 3) * rows_times(sizes, np.abs(v))
     m = basic.shape[1]
-    size = _times(np.abs(ended.inverse), slip + gamma(m + 2) * np.abs(residual))
-    first = np.abs(_times(ended.inverse, residual)) + size
+    size = times(np.abs(ended.inverse), slip + gamma(m + 2) * np.abs(residual))
+    first = np.abs(times(ended.inverse, residual)) + size
     factor = spread / (1.0 - np.minimum(spread, 0.5))  # where spread ≥ 1/2 nothing is claimed
     error = first + factor[:, None] * first.max(axis=1, initial=0.0)[:, None]
     return v, error * _UP
@@ -220,12 +213,12 @@ def _prices(ended: _Ended, sizes: Floats, spread: Floats) -> tuple[Flags, Floats
     m = ended.basic.shape[1]
     y = np.matmul(np.take_along_axis(ended.cost, ended.basic, axis=1)[:, None, :], ended.inverse)[:, 0]
     y = _without_basic_slacks(y, ended)
-    reduced = ended.cost - _priced(y, ended.matrix)
-    slip = gamma(m + 3) * (np.abs(ended.cost) + _priced(np.abs(y), sizes))
+    reduced = ended.cost - times_columns(y, ended.matrix)
+    slip = gamma(m + 3) * (np.abs(ended.cost) + times_columns(np.abs(y), sizes))
     left = np.take_along_axis(np.abs(reduced) + slip, ended.basic, axis=1)
     factor = spread / (1.0 - np.minimum(spread, 0.5))  # where spread ≥ 1/2 nothing is claimed
     y_error = np.matmul((left + (factor * left.sum(axis=1))[:, None])[:, None, :], np.abs(ended.inverse))[:, 0]
-    error = (slip + _priced(y_error, sizes)) * _UP + _TINY
+    error = (slip + times_columns(y_error, sizes)) * _UP + _TINY
     right = np.where(ended.at_upper, -reduced, reduced) > error
     np.put_along_axis(right, ended.basic, True, axis=1)
     signed = (right | (ended.low == ended.high)).all(axis=1)
@@ -259,15 +252,3 @@ def _product(price: Floats, bound: Floats) -> Floats:
     """price·bound, 0 where the price is 0 though the bound be infinite."""
     with np.errstate(invalid="ignore"):
         return np.where(price == 0.0, 0.0, price * bound)
-
-
-def _row_values(matrix: Floats, v: Floats) -> Floats:
-    """matrix·v, (K, m)."""
-    if matrix.ndim == 2:
-        return np.asarray(v @ matrix.T, dtype=np.float64)
-    return np.asarray(np.matmul(matrix, v[:, :, None])[:, :, 0], dtype=np.float64)
-
-
-def _times(matrices: Floats, vectors: Floats) -> Floats:
-    """Each matrix (K, m, m) times its vector (K, m)."""
-    return np.asarray(np.matmul(matrices, vectors[:, :, None])[:, :, 0], dtype=np.float64)

@@ -18,8 +18,8 @@ from generator.geometry.elimination import solve_square
 from generator.geometry.exact import solve_on_basis
 from generator.geometry.integral import Integral, integral
 from generator.geometry.program import Answer, Basis, Infeasible, Optimum, Program
-from generator.geometry.rigour import Certified, solve_certified
-from generator.geometry.simplex import INFEASIBLE, OPTIMAL, Solved
+from generator.geometry.rigour import Certified
+from generator.geometry.simplex import INFEASIBLE, OPTIMAL, Solved, solve
 from generator.geometry.stack import Flags, stack_of
 
 
@@ -71,19 +71,19 @@ def blocking_on_basis(program: Program, basis: Basis, blocked: int, form: Integr
     for k, weight in zip(tight, solved[0], strict=True):
         weights[k] = weight
     for sign in (1, -1):
-        proof = Infeasible(tuple(Fraction(sign * w * s) for w, s in zip(weights, form.row_scale, strict=True)))
+        # what leans on a missing bound is noise of the pivots that the floats took for 0: a proof can do without
+        kept = [
+            sign * weight if (low if sign * weight > 0 else high) is not None else 0
+            for weight, low, high in zip(weights, program.row_low, program.row_high, strict=True)
+        ]
+        proof = Infeasible(tuple(Fraction(weight * s) for weight, s in zip(kept, form.row_scale, strict=True)))
         if proves_infeasible(program, proof):
             return proof
     return None
 
 
-def publish(solved: Solved, k: int, program: Program) -> Answer:
-    """The exact, checked answer to program k, whose float image was solved in a stack."""
-    return _published(solved, k, program)[0]
-
-
-def _published(solved: Solved, k: int, program: Program) -> tuple[Answer, bool]:
-    """The answer, and whether the stack's basis led to it."""
+def publish(solved: Solved, k: int, program: Program) -> tuple[Answer, bool]:
+    """The exact, checked answer to program k of a stack, and whether the stack's basis led to it."""
     basis = basis_of(solved, k)
     answer: Optimum | Infeasible | None = None
     if solved.status[k] == OPTIMAL:
@@ -91,6 +91,25 @@ def _published(solved: Solved, k: int, program: Program) -> tuple[Answer, bool]:
     elif solved.status[k] == INFEASIBLE:
         answer = blocking_on_basis(program, basis, int(solved.blocked[k]))
     return (answer, True) if answer is not None else (decide(program), False)
+
+
+def answer_many(programs: Sequence[Program]) -> tuple[list[Answer], Tally]:
+    """The exact answers to programs of any shapes, in their order; those of one shape are solved side by side.
+
+    Which of several optima or proofs is given depends on the program alone, not on its company.
+    """
+    groups: dict[object, list[int]] = {}
+    for place, program in enumerate(programs):
+        groups.setdefault((len(program.rows), len(program.cost)), []).append(place)
+    answers: dict[int, Answer] = {}
+    on_basis = 0
+    for places in groups.values():
+        solved = solve(stack_of([programs[place] for place in places]), alone=True)
+        for k, place in enumerate(places):
+            answers[place], led = publish(solved, k, programs[place])
+            on_basis += led
+    tally = Tally(basis=on_basis, search=len(programs) - on_basis)
+    return [answers[place] for place in range(len(programs))], tally
 
 
 def settle(
@@ -105,31 +124,11 @@ def settle(
     ``ask_best`` false: a proven verdict is enough, the optimum may be a tie.  ``doubtful`` (K,) marks
     programs whose bounds are equal as floats but not in truth: they are decided here in any case.
     """
-    solved = certified.solved
     proven = certified.decided.copy()
     if ask_best:
-        proven &= certified.best | (solved.status != OPTIMAL)
+        proven &= certified.best | (certified.solved.status != OPTIMAL)
     if doubtful is not None:
         proven &= ~doubtful
-    answers: dict[int, Answer] = {}
-    on_basis = 0
-    for k in np.flatnonzero(~proven):
-        answers[int(k)], led = _published(solved, int(k), program_of(int(k)))
-        on_basis += led
-    return answers, Tally(floats=int(proven.sum()), basis=on_basis, search=len(answers) - on_basis)
-
-
-def answer_many(programs: Sequence[Program]) -> tuple[list[Answer], Tally]:
-    """The exact answers to programs of any shapes, in their order; those of one shape are solved side by side."""
-    groups: dict[object, list[int]] = {}
-    for place, program in enumerate(programs):
-        groups.setdefault((len(program.rows), len(program.cost)), []).append(place)
-    answers: dict[int, Answer] = {}
-    on_basis = 0
-    for places in groups.values():
-        certified = solve_certified(stack_of([programs[place] for place in places]))
-        for k, place in enumerate(places):
-            answers[place], led = _published(certified.solved, k, programs[place])
-            on_basis += led
-    tally = Tally(basis=on_basis, search=len(programs) - on_basis)
-    return [answers[place] for place in range(len(programs))], tally
+    left = [int(k) for k in np.flatnonzero(~proven)]
+    answers, tally = answer_many([program_of(k) for k in left])
+    return dict(zip(left, answers, strict=True)), tally + Tally(floats=int(proven.sum()))

@@ -31,11 +31,13 @@ class PrintedShares:
 def printed_shares(lookup: Lookup, finding: OrderFinding, shares: Mapping[str, Fraction]) -> PrintedShares:
     """Shares rounded for print: the fewest decimals with which all limits hold as printed, if any do.
 
-    Each share is rounded up or down, such that they sum to 100; the nearest rounding that holds is taken.
+    One decimal is rounded to the nearest only; from two on each share may be rounded up or down, such
+    that they sum to 100, and the nearest rounding that holds is taken.
     """
     least = numbers.share_places(shares.values())
     for places in range(least, max(least, MOST_SHARE_PLACES) + 1):
-        for percent in _roundings(shares, places):
+        roundings = _roundings(shares, places) if places > 1 else [numbers.percent_shares(shares, places)]
+        for percent in roundings:
             if all(_holds(lookup, limit, percent) for limit in finding.limits):
                 return PrintedShares(percent=percent, places=places, holds=True)
     places = max(least, 2)

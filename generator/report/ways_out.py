@@ -14,7 +14,6 @@ from generator.report.lookup import Lookup
 from generator.report.parts import Cell, Column, FigureView, Row, Section, Table, text_cell
 from generator.report.shares import lot_cell, values_table
 
-
 #: A longer list of prices is folded.
 _MOST_OPEN = 12
 

@@ -178,7 +178,7 @@ def cheapest_lines(n: int, d: int, count: int, least: tuple[float, float], repea
     solver = warm_highs(case)
     agree(reached, loop_highs(case, solver))
     ours = timed(lambda: cheapest_many(case.windows, case.prices), 3 * repeats)
-    proofs = timed(lambda: [reached.answer(k) for k in range(count)], 1)
+    proofs = timed(reached.answers, 1)
     slow = timed(lambda: loop_linprog(case, range(count)), repeats)
     warm = timed(lambda: loop_highs(case, solver), repeats)
     work = f"verdict and cheapest, {n} × {d} × {count}"

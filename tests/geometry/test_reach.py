@@ -1,7 +1,11 @@
 """Questions about windows: every answer agrees with the exact decision of the single program."""
 
+import os
+import subprocess
+import sys
 from dataclasses import replace
 from fractions import Fraction
+from pathlib import Path
 from random import Random
 
 import numpy as np
@@ -12,6 +16,8 @@ from generator.geometry.exact import exact_simplex
 from generator.geometry.program import Optimum
 from generator.geometry.reach import Window, cheapest_many, free, ranges_many, reach, without, without_many
 from tests.geometry.stack_families import KINDS, prices, windows
+
+ROOT = Path(__file__).parents[2]
 
 
 def vector(*values) -> tuple[Fraction, ...]:
@@ -138,3 +144,34 @@ def test_a_cost_that_falls_for_ever_is_refused():
     )
     with pytest.raises(ValueError, match="program 0 has no least value"):
         reach([endless])
+
+
+@pytest.mark.parametrize("kind", KINDS)
+def test_exact_answers_do_not_depend_on_company(kind):
+    """Among ties, a window's exact optimum or proof is the same alone and among 250 others."""
+    random = Random(f"company {kind}")
+    asked = windows(random, kind, 2, 7, 250)
+    cost = vector(*[random.randint(1, 2) for _ in range(7)])
+    together = cheapest_many(asked, cost).answers()
+    for k in range(0, 250, 10):
+        assert cheapest_many([asked[k]], cost).answer(0) == together[k]
+
+
+def test_threads_and_hash_seeds_change_no_answer():
+    """Fresh processes with one or two threads and other hash seeds print the same exact answers."""
+    script = (
+        "from random import Random\n"
+        "from tests.geometry.stack_families import KINDS, windows, prices\n"
+        "from generator.geometry.reach import cheapest_many\n"
+        "for kind in KINDS:\n"
+        "    r = Random(kind)\n"
+        "    print(cheapest_many(windows(r, kind, 3, 8, 220), prices(r, 8)).answers())\n"
+    )
+    printed = set()
+    for threads, seed in (("1", "0"), ("2", "1")):
+        environment = {**os.environ, "OPENBLAS_NUM_THREADS": threads, "PYTHONHASHSEED": seed}
+        done = subprocess.run(
+            [sys.executable, "-c", script], env=environment, capture_output=True, text=True, check=True, cwd=ROOT
+        )
+        printed.add(done.stdout)
+    assert len(printed) == 1

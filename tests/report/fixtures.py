@@ -43,9 +43,14 @@ from generator.intake.records import (
     Settings,
 )
 from generator.problems import Problem
-from generator.report.views import CampaignPages, RevisionLine
+from generator.report.pages import assets, draw_campaign, draw_index, draw_method
+from generator.report.themes import Theme
+from generator.report.views import CampaignPages, RevisionLine, index_entry
 
 F = Fraction
+
+#: Text that does harm wherever it is not shown as text.
+HOSTILE = """<b onclick="x()">&"'</script><script>alert(1)</script>{{ 7*7 }}]]>--> $x$ #fe0101 id="main" url(#a)"""
 
 
 def make_lot(name: str, n: str, k: str, *, stock: str | None = "100", cost: str | None = "50", **more: Any) -> Lot:
@@ -299,3 +304,22 @@ def make_book(**changes: Any) -> CampaignPages:
         version="0.1.0",
     )
     return replace(book, **changes)
+
+
+def full_book(**changes: object) -> CampaignPages:
+    """A campaign in which every section of the pages occurs."""
+    orders = (make_order("midway"), make_order("beyond"), make_order("barred"))
+    findings = make_findings(orders=(make_full(), make_beyond(), make_branches()), plan=make_plan())
+    campaign = make_campaign(orders=orders, problems=(make_problem(severity="note"),))
+    return make_book(campaign=campaign, findings=findings, **changes)
+
+
+def output(book: CampaignPages, theme: Theme) -> dict[str, bytes]:
+    """All files of an output that holds one campaign."""
+    return {
+        **assets(theme),
+        **draw_campaign(book, theme),
+        "index.html": draw_index([index_entry(book)], theme),
+        "method.html": draw_method(theme),
+        f"{book.campaign.slug}/results.json": b"{}",
+    }

@@ -13,23 +13,21 @@ import pytest
 
 from generator.report.pages import assets, draw_campaign, draw_index, draw_method
 from generator.report.themes import Theme, load_theme
-from generator.report.views import CampaignPages, index_entry
+from generator.report.views import index_entry
 from tests.report.checks import PageReader, check_page, check_pages
 from tests.report.fixtures import (
+    HOSTILE,
+    full_book,
     make_beyond,
     make_book,
-    make_branches,
     make_campaign,
     make_findings,
-    make_full,
     make_lot,
     make_midway,
     make_order,
-    make_plan,
     make_problem,
+    output,
 )
-
-HOSTILE = """<b onclick="x()">&"'</script><script>alert(1)</script>{{ 7*7 }}]]>--> $x$ #fe0101 id="main" url(#a)"""
 
 
 @pytest.fixture(scope="module")
@@ -37,28 +35,9 @@ def theme() -> Theme:
     return load_theme()
 
 
-def output(book: CampaignPages, theme: Theme) -> dict[str, bytes]:
-    """All files of an output that holds one campaign."""
-    return {
-        **assets(theme),
-        **draw_campaign(book, theme),
-        "index.html": draw_index([index_entry(book)], theme),
-        "method.html": draw_method(theme),
-        f"{book.campaign.slug}/results.json": b"{}",
-    }
-
-
 def words(files: dict[str, bytes], address: str) -> str:
     """The text of a page as one line."""
     return " ".join(" ".join(PageReader(files[address].decode()).words).split())
-
-
-def full_book(**changes: object) -> CampaignPages:
-    """A campaign in which every section of the pages occurs."""
-    orders = (make_order("midway"), make_order("beyond"), make_order("barred"))
-    findings = make_findings(orders=(make_full(), make_beyond(), make_branches()), plan=make_plan())
-    campaign = make_campaign(orders=orders, problems=(make_problem(severity="note"),))
-    return make_book(campaign=campaign, findings=findings, **changes)
 
 
 def test_every_page_of_a_campaign_is_whole(theme: Theme) -> None:
@@ -165,6 +144,29 @@ def test_printed_shares_sum_to_a_hundred(theme: Theme) -> None:
     assert "B 33.3 13.33 60.00" in text
     assert "C 33.3 13.33 unknown" in text
     assert "Blend 100.0 40.00 unknown" in text
+
+
+def test_printed_shares_hold_the_limits_where_some_rounding_does(theme: Theme) -> None:
+    """A blend on its limit is rounded inwards: what the page says can be weighed out and is within the limit."""
+    shares = {"A": Fraction("0.512667"), "B": Fraction("0.487333")}
+    value = 10 * shares["A"] + Fraction("30.25") * shares["B"]
+    recipe = replace(make_midway().recipes["cheapest"], exact=shares, values={"N": float(value)})
+    limit = replace(make_midway().limits[0], low=float(value), high=None)
+    finding = make_midway(recipes={"cheapest": recipe}, limits=(limit,))
+    text = words(output(make_book(findings=make_findings(orders=(finding,))), theme), "spring/orders/midway.html")
+    assert "A 51.26 20.51" in text
+    assert "B 48.74 19.49" in text
+
+
+def test_shares_that_no_rounding_holds_say_so(theme: Theme) -> None:
+    """An exact limit that needs thirds sends the reader to the exact shares in the proof."""
+    shares = {"A": Fraction(1, 3), "B": Fraction(2, 3)}
+    recipe = replace(make_midway().recipes["cheapest"], exact=shares, values={"N": 23.5})
+    limit = replace(make_midway().limits[0], low=23.5, high=23.5)
+    finding = make_midway(recipes={"cheapest": recipe}, limits=(limit,))
+    text = words(output(make_book(findings=make_findings(orders=(finding,))), theme), "spring/orders/midway.html")
+    assert "A 33.33" in text
+    assert "the exact ones, which hold every limit, stand in the proof" in text
 
 
 def test_a_stopped_campaign_without_answers_gets_one_problem_page(theme: Theme) -> None:
@@ -288,7 +290,7 @@ def test_an_index_of_two_hundred_campaigns_is_light(theme: Theme) -> None:
 
 SCRIPT = """
 import hashlib
-from tests.report.test_pages import full_book, output
+from tests.report.fixtures import full_book, output
 from generator.report.themes import load_theme
 files = output(full_book(), load_theme())
 print(hashlib.sha256(repr(sorted(files.items())).encode()).hexdigest())

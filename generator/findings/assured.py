@@ -1,0 +1,129 @@
+"""The recipe that holds every limit with the required confidence at least cost, or as surely as can be."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
+from fractions import Fraction
+from typing import TYPE_CHECKING
+
+from generator.findings.conformity import UncertainRow, is_mirror
+from generator.findings.house import Offer, best_within
+from generator.findings.measures import Measure
+from generator.findings.model import OrderModel
+from generator.findings.programs import ONE, ZERO, capped_upper, share_program, share_rows
+from generator.findings.recipes import named_shares, recipe_of
+from generator.findings.records import Recipe
+from generator.findings.uncertainty import RowError
+from generator.findings.values import Table
+from generator.geometry.chance import Chance
+from generator.geometry.program import Program, Vector
+from generator.numbers import significant
+
+if TYPE_CHECKING:
+    from generator.geometry.cone import Surest
+
+#: Where a lot's cost is unknown it counts as so many times the dearest known one: used last.
+UNKNOWN_COST = 100
+
+
+def assured(
+    model: OrderModel,
+    table: Table,
+    measures: Mapping[str, Measure],
+    rows: Sequence[UncertainRow],
+    confidence: Fraction,
+) -> Recipe | None:
+    """Least cost with each uncertain limit at ``confidence``, the others on values; None without uncertain ones.
+
+    Where that can't be had: the greatest confidence that can, said in the recipe's remark.
+    """
+    if not rows:
+        return None
+    chances = _chances(model, rows, float(confidence))
+    held = best_within(model, lambda branch: _held(branch, rows, chances, float(confidence)))
+    if held is not None:
+        return recipe_of(model, table, measures, named_shares(model, held.answer))
+    found = best_within(model, lambda branch: _surest(branch, rows, chances))
+    if found is None:
+        return None
+    best = found.answer
+    remark = (
+        f"The required confidence of {significant(float(confidence * 100), 4)} % for each limit cannot be had "
+        f"from these lots; the most that can is {significant(best.probability * 100, 3)} %."
+    )
+    return recipe_of(model, table, measures, named_shares(model, best.x), remark=remark)
+
+
+def _held(
+    branch: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance], confidence: float
+) -> Offer[Vector] | None:
+    from generator.geometry.cone import assured as least_cost
+
+    held = least_cost(_certain_program(branch, rows), chances, confidence)
+    if held.x is None or held.value is None:
+        return None
+    return Offer(held.x, (held.value,), held.x)
+
+
+def _surest(branch: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance]) -> Offer[Surest] | None:
+    from generator.geometry.cone import surest
+
+    best = surest(_certain_program(branch, rows), chances)
+    return None if best is None else Offer(best.x, (Fraction(-best.probability),), best)
+
+
+def _certain_program(model: OrderModel, rows: Sequence[UncertainRow]) -> Program:
+    uncertain = {(u.row.on, u.row.side) for u in rows}
+    kept = tuple(row for row in model.rows if (row.on, row.side) not in uncertain)
+    certain = replace(model, rows=kept)
+    known = [cost for cost in model.cost if cost is not None]
+    instead = UNKNOWN_COST * (max(known, default=ONE) or ONE)
+    costs = [instead if cost is None else cost for cost in model.cost]
+    return share_program(certain, share_rows(certain), costs, upper=capped_upper(model, model.amount))
+
+
+def _chances(model: OrderModel, rows: Sequence[UncertainRow], confidence: float) -> list[Chance]:
+    """One chance a limit; a two-sided one whose sides have errors of their own counts each side at (1+p)/2."""
+    chances = []
+    for name in model.limits:
+        mine = [u for u in rows if u.row.on == name]
+        if len(mine) == 2 and is_mirror(mine[0].error, mine[1].error) and _is_window(mine):
+            low, high = sorted(mine, key=lambda u: u.row.side == "high")
+            chances.append(
+                Chance(
+                    low=low.row.terms,
+                    high=high.row.terms,
+                    variance=high.error.variances(),
+                    bias=_joint_bias(high.error),
+                )
+            )
+            continue
+        stretch = _stretch(confidence) if len(mine) == 2 else ONE
+        for u in mine:
+            variance = tuple(v * stretch * stretch for v in u.error.variances())
+            bias = tuple(b * stretch for b in _joint_bias(u.error))
+            chances.append(Chance(high=u.row.terms, variance=variance, bias=bias))
+    return chances
+
+
+def _is_window(mine: Sequence[UncertainRow]) -> bool:
+    return all(a + b <= 0 for a, b in zip(mine[0].row.terms, mine[1].row.terms, strict=True))
+
+
+def _stretch(confidence: float) -> Fraction:
+    """Z at (1+p)/2 over z at p: a chance with so much more deviation asks at p what it should at (1+p)/2."""
+    from scipy.special import ndtri
+
+    at = float(ndtri(confidence))
+    # At p = ½ the quantile is 0 and nothing stretches it: ask as at a hair above.
+    return Fraction(float(ndtri((1 + confidence) / 2)) / max(at, 1e-6)).limit_denominator(10**6) + Fraction(1, 10**6)
+
+
+def _joint_bias(error: RowError) -> Vector:
+    """One component's bias as it is; of several the sum of their sizes, which is never too small."""
+    biases = [bias for bias in error.biases.values() if any(bias)]
+    if len(biases) == 1:
+        return biases[0]
+    n = len(next(iter(error.parts.values())))
+    return tuple(sum((abs(bias[i]) for bias in biases), ZERO) for i in range(n))

@@ -1,0 +1,156 @@
+"""House rules: most lots in a recipe, least share of a used lot, materials kept apart.
+
+None of the three is linear; each is kept by branching.  A branch is the same order with some lots out
+(greatest share 0) and some in (least share raised).  Whatever question has an answer on a branch has it
+here within the rules: solve without them, find a rule that the answer breaks, split the order in two so
+that neither half allows that breach, go on with both, and leave out halves that can't beat the best.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, replace
+from fractions import Fraction
+from typing import Generic, TypeVar
+
+from generator.findings.house_rules import Rules
+from generator.findings.model import OrderModel
+from generator.findings.programs import ONE, ZERO
+
+T = TypeVar("T")
+
+#: Branches looked at for one question before it is given up as undecided.
+MOST_BRANCHES = 4000
+
+
+class UndecidedError(Exception):
+    """The rules leave more branches than may be looked at."""
+
+
+@dataclass(frozen=True, slots=True)
+class Branch:
+    """The order with some lots out and some in; ``path`` says what was decided, in words."""
+
+    model: OrderModel
+    inside: frozenset[int] = frozenset()
+    path: tuple[str, ...] = ()
+
+    def with_out(self, lots: frozenset[int], words: str) -> Branch:
+        """The branch in which these lots are not used."""
+        upper = tuple(ZERO if i in lots else top for i, top in enumerate(self.model.upper))
+        return replace(self, model=replace(self.model, upper=upper), path=(*self.path, words))
+
+    def with_in(self, lot: int, least: Fraction | None, words: str) -> Branch:
+        """The branch in which this lot counts as used, with at least its least share."""
+        lower = list(self.model.lower)
+        lower[lot] = max(lower[lot], least or ZERO)
+        model = replace(self.model, lower=tuple(lower))
+        return replace(self, model=model, inside=self.inside | {lot}, path=(*self.path, words))
+
+    @property
+    def is_empty(self) -> bool:
+        """Whether the share bounds alone admit no shares."""
+        tops = [ONE if top is None else top for top in self.model.upper]
+        crossed = any(low > top for low, top in zip(self.model.lower, tops, strict=True))
+        return crossed or sum(self.model.lower, ZERO) > 1 or sum(tops, ZERO) < 1
+
+
+@dataclass(frozen=True, slots=True)
+class Found(Generic[T]):
+    """An answer within the rules, and the branch on which it is the best."""
+
+    answer: T
+    branch: Branch
+
+
+@dataclass(frozen=True, slots=True)
+class Offer(Generic[T]):
+    """What a question answers on one branch: shares by position (n), and a key: less is better.
+
+    The key bounds every answer further down the branch from below.
+    """
+
+    shares: Sequence[Fraction]
+    key: tuple[Fraction, ...]
+    answer: T
+
+
+def best_within(
+    model: OrderModel, solve: Callable[[OrderModel], Offer[T] | None], rules: Rules | None = None
+) -> Found[T] | None:
+    """The best answer within the rules; None if there is none.  UndecidedError past MOST_BRANCHES."""
+    rules = rules or model.rules
+    best: tuple[Offer[T], Branch] | None = None
+    waiting = [Branch(model)]
+    for _ in range(MOST_BRANCHES):
+        if not waiting:
+            break
+        branch = waiting.pop()
+        offer = None if branch.is_empty else solve(branch.model)
+        if offer is None or (best is not None and offer.key >= best[0].key):
+            continue
+        children = split(branch, rules, offer.shares)
+        if not children:
+            best = (offer, branch)
+        # The last one pushed is looked at first: the half that keeps the lots as they are.
+        waiting.extend(children)
+    if waiting:
+        raise UndecidedError(f"more than {MOST_BRANCHES} branches")
+    return None if best is None else Found(best[0].answer, best[1])
+
+
+def closed_branches(model: OrderModel, solve: Callable[[OrderModel], Offer[T] | None]) -> list[Branch]:
+    """Every branch on which ``solve`` finds nothing, where it finds nothing on any: they exhaust the rules."""
+    closed: list[Branch] = []
+    waiting = [Branch(model)]
+    for _ in range(MOST_BRANCHES):
+        if not waiting:
+            return closed
+        branch = waiting.pop()
+        offer = None if branch.is_empty else solve(branch.model)
+        children = split(branch, model.rules, offer.shares) if offer else []
+        if offer is None:
+            closed.append(branch)
+        assert offer is None or children, "no answer within the rules was found before"
+        waiting.extend(children)
+    raise UndecidedError(f"more than {MOST_BRANCHES} branches")
+
+
+def split(branch: Branch, rules: Rules, shares: Sequence[Fraction]) -> list[Branch]:
+    """The halves of a branch by the first rule that the shares break; none if they break none."""
+    used = frozenset(i for i, share in enumerate(shares) if share)
+    names = branch.model.names
+    for pair in rules.apart:
+        if used & pair.first_lots and used & pair.second_lots:
+            halves = [
+                branch.with_out(pair.first_lots, f"without {pair.first}"),
+                branch.with_out(pair.second_lots, f"without {pair.second}"),
+            ]
+            # The half that gives up less of these shares last, so that it is looked at first.
+            lost = [sum((shares[i] for i in lots), ZERO) for lots in (pair.first_lots, pair.second_lots)]
+            return halves if lost[0] > lost[1] else halves[::-1]
+    for i in sorted(used):
+        least = rules.least[i]
+        if least is not None and shares[i] < least:
+            percent = f"{float(least * 100):g} %"
+            return [
+                branch.with_out(frozenset([i]), f"without {names[i]}"),
+                branch.with_in(i, least, f"{names[i]} at least {percent}"),
+            ]
+    if rules.max_lots is not None and len(used) > rules.max_lots:
+        return _halves_by_count(branch, rules, used, shares)
+    return []
+
+
+def _halves_by_count(branch: Branch, rules: Rules, used: frozenset[int], shares: Sequence[Fraction]) -> list[Branch]:
+    """Split on the undecided lot of the greatest share: out, or in; with enough in, all others are out."""
+    names = branch.model.names
+    undecided = sorted(used - branch.inside, key=lambda i: (-shares[i], i))
+    chosen = undecided[0]
+    out = branch.with_out(frozenset([chosen]), f"without {names[chosen]}")
+    inside = branch.with_in(chosen, rules.least[chosen], f"with {names[chosen]}")
+    if rules.max_lots is not None and len(inside.inside) >= rules.max_lots:
+        others = frozenset(range(len(names))) - inside.inside
+        listed = ", ".join(names[i] for i in sorted(inside.inside))
+        inside = replace(inside.with_out(others, f"with {listed} alone"), path=(*branch.path, f"with {listed} alone"))
+    return [out, inside]
