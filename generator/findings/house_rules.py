@@ -53,6 +53,17 @@ class Rules:
             (None,) * len(self.least) if name == LEAST_IF_USED else self.least,
         )
 
+    def without_lot(self, gone: int) -> Rules:
+        """The rules when one of the order's lots is taken away: positions behind it move up."""
+
+        def moved(lots: frozenset[int]) -> frozenset[int]:
+            return frozenset(i - (i > gone) for i in lots if i != gone)
+
+        apart = tuple(
+            Apart(pair.first, pair.second, moved(pair.first_lots), moved(pair.second_lots)) for pair in self.apart
+        )
+        return Rules(apart, self.max_lots, self.least[:gone] + self.least[gone + 1 :])
+
     def only_apart(self) -> Rules:
         """The safety rule alone: for answers in which a lot's amount has no meaning."""
         return Rules(self.apart, None, (None,) * len(self.least))

@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from typing import TypeVar
 
 from generator.findings.house_rules import Rules, holds_both, rules_of
 from generator.findings.measures import Measure, excess, reports, stated
@@ -19,6 +20,7 @@ from generator.intake.patterns import matches
 from generator.intake.records import Campaign, Limit, Lot, Order
 from generator.problems import Problem
 
+T = TypeVar("T")
 ZERO = Fraction(0)
 HUNDRED = Fraction(100)
 
@@ -84,18 +86,12 @@ def model_of(
     order: Order,
     table: Table,
     measures: Mapping[str, Measure],
-    without: frozenset[str] = frozenset(),
 ) -> OrderModel | tuple[Problem, ...]:
-    """The order's system, or the problems for which it has none.
-
-    ``without`` names lots to leave out besides (the question "without this lot").
-    """
+    """The order's system, or the problems for which it has none."""
     limits = _limits(campaign, order, measures)
     left_out: dict[str, str] = {}
     usable: list[int] = []
     for position, lot in enumerate(campaign.lots):
-        if lot.name in without:
-            continue
         reason = _excluded(campaign, order, lot, limits) or _lacking(limits, measures, table, position)
         if reason is None:
             usable.append(position)
@@ -124,6 +120,33 @@ def model_of(
         denominators={name: tuple(stated(measures[name].denominator, table, lot) for lot in usable) for name in limits},
         left_out=left_out,
         rules=rules_of(campaign, lots),
+    )
+
+
+def without_lot(model: OrderModel, name: str) -> OrderModel | None:
+    """The same order without one of its lots; None where its share bounds then admit no shares."""
+    gone = model.names.index(name)
+    kept = [i for i in range(len(model.lots)) if i != gone]
+
+    def cut(values: Sequence[T]) -> tuple[T, ...]:
+        return tuple(values[i] for i in kept)
+
+    upper = cut(model.upper)
+    tops = sum((Fraction(1) if top is None else top for top in upper), ZERO)
+    if tops < 1:
+        return None
+    return replace(
+        model,
+        lots=cut(model.lots),
+        names=cut(model.names),
+        lower=cut(model.lower),
+        upper=upper,
+        stock=cut(model.stock),
+        cost=cut(model.cost),
+        rows=tuple(replace(row, terms=cut(row.terms), base=cut(row.base)) for row in model.rows),
+        numerators={limit: cut(values) for limit, values in model.numerators.items()},
+        denominators={limit: cut(values) for limit, values in model.denominators.items()},
+        rules=model.rules.without_lot(gone),
     )
 
 

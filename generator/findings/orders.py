@@ -10,7 +10,7 @@ from generator.findings.assured import assured
 from generator.findings.conformity import conformity_of, uncertain_rows
 from generator.findings.house import UndecidedError
 from generator.findings.measures import Measure
-from generator.findings.model import OrderModel, model_of
+from generator.findings.model import OrderModel, model_of, without_lot
 from generator.findings.programs import ONE, ZERO, amount_rows, share_bound_rows
 from generator.findings.ranges import limit_findings
 from generator.findings.recipes import cheapest, cheapest_shares, closest, fewest, roomiest
@@ -170,8 +170,8 @@ def _curve(model: OrderModel, scales: Scales, recipe: Recipe, room: Room | None)
 
 def _without(desk: Desk, model: OrderModel, name: str) -> tuple[Verdict | None, Fraction | None]:
     """Verdict and least cost of the order without one lot; no verdict where no lot is left to use."""
-    rest = model_of(desk.campaign, model.order, desk.table, desk.measures, without=frozenset([name]))
-    if not isinstance(rest, OrderModel):
+    rest = without_lot(model, name) if len(model.lots) > 1 else None
+    if rest is None:
         return None, None
     verdict = judge(rest).verdict
     if verdict not in MET:

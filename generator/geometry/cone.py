@@ -264,7 +264,9 @@ def _between(linear: Program, chances: Sequence[Chance], wanted: float, inner: V
         edge = _edge(images, wanted, inside, x)
         if float(cost @ (edge - x)) <= tolerance / 2:
             break
-        cuts = [cut for image in images for at in (edge, x) if (cut := _cutting(image, at, x, wanted))]
+        # No tangent of a row that x meets can cut x off.
+        broken = [image for image in images if spare(image, x, wanted) < 0]
+        cuts = [cut for image in broken for at in (edge, x) if (cut := _cutting(image, at, x, wanted))]
         if not cuts:
             break
         relaxation.add(cuts)

@@ -184,7 +184,7 @@ def cheapest_lines(n: int, d: int, count: int, least: tuple[float, float], repea
     work = f"verdict and cheapest, {n} × {d} × {count}"
     note = (
         f"{int(reached.is_feasible.sum())} of {count} within reach; proven by floats {reached.tally.floats}, exactly "
-        f"{reached.tally.basis + reached.tally.search}; writing a proof {1000 * proofs / count:.2f} ms"
+        f"{reached.tally.total - reached.tally.floats}; writing a proof {1000 * proofs / count:.2f} ms"
     )
     return [
         line(work, "linprog", count, ours, slow, least[0], note),

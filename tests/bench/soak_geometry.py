@@ -33,7 +33,8 @@ def check(asked: list[Program], counts: Counter[str]) -> list[str]:
     """What is wrong with the answers to one stack; what decided each program goes to ``counts``."""
     certified = solve_certified(stack_of(asked))
     answers, tally = answer_many(asked)
-    counts.update({"on the stack's basis": tally.basis, "after a search": tally.search, "programs": len(asked)})
+    counts.update({"programs": len(asked), "on the stack's basis": tally.basis})
+    counts.update({"by HiGHS": tally.highs, "by exact simplex": tally.simplex})
     wrong = []
     for k, program in enumerate(asked):
         expected = decide(program)

@@ -37,7 +37,7 @@ def test_roles_agree_with_the_oracle_on_degenerate_clouds(kind):
         assert found == {tuple(point) for point in oracle.corner_points(cloud)}
         assert roles.is_corner.sum() == len(found)
         assert_imitated(cloud, roles)
-        assert roles.tally.floats + roles.tally.basis + roles.tally.search == len(cloud)
+        assert roles.tally.total == len(cloud)
 
 
 def test_of_equal_points_the_first_is_the_corner():

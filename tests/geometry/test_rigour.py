@@ -38,7 +38,7 @@ def test_published_answers_are_exact_on_degenerate_families(kind):
     """What comes out of a stack is an exact optimum or an exact proof, with the exact simplex method's value."""
     asked = programs(Random(kind), kind, 80)
     answers, tally = answer_many(asked)
-    assert tally.basis + tally.search == len(asked)
+    assert tally.total == len(asked)
     for program, answer in zip(asked, answers, strict=True):
         expected = exact_simplex(program)
         if isinstance(expected, Optimum):
