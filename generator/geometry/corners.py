@@ -22,7 +22,7 @@ from generator.geometry.decide import decide
 from generator.geometry.exact import solve_on_basis
 from generator.geometry.program import Basis, Optimum, Program, Vector
 from generator.geometry.rigour import certify, gamma
-from generator.geometry.settle import Tally
+from generator.geometry.settle import Tally, search
 from generator.geometry.simplex import OPTIMAL, Solved
 from generator.geometry.stack import Flags, Floats, Indices, float_table, make_stack, scaled
 
@@ -68,10 +68,10 @@ def corners(points: Sequence[Vector]) -> Corners:
         is_corner[single] = True
         return Corners(points=points, is_corner=is_corner, imitated_by=imitated_by, tally=Tally(basis=len(points)))
     values = float_table([points[k] for k in single], len(points[0]))
-    search = _Search.over(values)
-    found = search.run()
+    directions = _Search.over(values)
+    found = directions.run()
     is_sure_corner = _proven_corners(values, found.direction, found.separated)
-    is_sure_inner = _proven_inner(values, search.kept, found)
+    is_sure_inner = _proven_inner(values, directions.kept, found)
     tally = Tally(floats=int((is_sure_corner | is_sure_inner).sum()), basis=len(equal))
     for place, k in enumerate(single):
         if is_sure_corner[place]:
@@ -79,8 +79,8 @@ def corners(points: Sequence[Vector]) -> Corners:
         elif is_sure_inner[place]:
             imitated_by[int(k)] = tuple(sorted(int(single[j]) for j in found.basic[place] if j < single.size))
         else:
-            others, led = _exactly(points, [int(j) for j in single], search.kept, found, place)
-            tally = tally + (Tally(basis=1) if led else Tally(search=1))
+            others, step = _exactly(points, [int(j) for j in single], directions.kept, found, place)
+            tally = tally + step
             is_corner[k] = others is None
             if others is not None:
                 imitated_by[int(k)] = others
@@ -251,8 +251,8 @@ def _membership(points: Sequence[Vector], point: int, others: Sequence[int]) -> 
 
 def _exactly(
     points: Sequence[Vector], single: list[int], kept: Indices, found: _Found, place: int
-) -> tuple[tuple[int, ...] | None, bool]:
-    """(the points that imitate point ``place`` of ``single``, or None, whether the basis found sufficed), exactly."""
+) -> tuple[tuple[int, ...] | None, Tally]:
+    """(the points that imitate point ``place`` of ``single``, or None; which step decided), exactly."""
     n, d = len(single), len(points[0])
     used = sorted(int(j) for j in found.basic[place] if j < n)
     rows = [*kept.tolist(), d]
@@ -262,9 +262,9 @@ def _exactly(
         basis = Basis(tuple(sorted([*range(len(used)), *(len(used) + k for k in idle)])))
         answer = solve_on_basis(_membership(points, single[place], near), basis)
         if answer is not None:
-            return tuple(other for other, share in zip(near, answer.x, strict=True) if share), True
+            return tuple(other for other, share in zip(near, answer.x, strict=True) if share), Tally(basis=1)
     others = [k for k in single if k != single[place]]
-    searched = decide(_membership(points, single[place], others))
+    searched, step = search(_membership(points, single[place], others))
     if isinstance(searched, Optimum):
-        return tuple(other for other, share in zip(others, searched.x, strict=True) if share), False
-    return None, False
+        return tuple(other for other, share in zip(others, searched.x, strict=True) if share), step
+    return None, step

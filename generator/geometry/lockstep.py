@@ -31,7 +31,7 @@ from generator.geometry.stack import FAR, Flags, Floats, Indices, Stack
 
 OPTIMAL, INFEASIBLE, UNFINISHED = 0, 1, 2
 
-#: A bound counts as broken beyond this, in units in which rows and shares are about 1: ten digits above
+#: A bound counts as broken beyond this, in units in which rows and shares are about 1: six digits above
 #: rounding, so that the solver doesn't chase noise; what lies nearer is decided exactly, elsewhere.
 _BROKEN = 1e-10
 #: Pivots below this are noise of an inverse of about 10 rows scaled to 1.

@@ -13,7 +13,7 @@ from fractions import Fraction
 import numpy as np
 
 from generator.geometry.checks import proves_infeasible
-from generator.geometry.decide import decide
+from generator.geometry.decide import decide_counted
 from generator.geometry.elimination import solve_square
 from generator.geometry.exact import solve_on_basis
 from generator.geometry.integral import Integral, integral
@@ -26,17 +26,32 @@ from generator.geometry.stack import Flags, stack_of
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Tally:
     """How many programs each step decided: ``floats`` with a proven error bound, exact arithmetic on the
-    ``basis`` that the stack ended in, or a further ``search`` (HiGHS, then the exact simplex)."""
+    ``basis`` that the stack ended in, exact arithmetic on what ``highs`` proposed, the exact ``simplex``."""
 
     floats: int = 0
     basis: int = 0
-    search: int = 0
+    highs: int = 0
+    simplex: int = 0
+
+    @property
+    def total(self) -> int:
+        """All programs."""
+        return self.floats + self.basis + self.highs + self.simplex
 
     def __add__(self, other: Tally) -> Tally:
         """Both together."""
         return Tally(
-            floats=self.floats + other.floats, basis=self.basis + other.basis, search=self.search + other.search
+            floats=self.floats + other.floats,
+            basis=self.basis + other.basis,
+            highs=self.highs + other.highs,
+            simplex=self.simplex + other.simplex,
         )
+
+
+def search(program: Program) -> tuple[Answer, Tally]:
+    """The exact answer to one program without a stack's basis: HiGHS proposes, else the exact simplex finds it."""
+    (answer,), paths = decide_counted([program])
+    return answer, Tally(highs=1 - paths.simplex, simplex=paths.simplex)
 
 
 def basis_of(solved: Solved, k: int) -> Basis:
@@ -82,15 +97,15 @@ def blocking_on_basis(program: Program, basis: Basis, blocked: int, form: Integr
     return None
 
 
-def publish(solved: Solved, k: int, program: Program) -> tuple[Answer, bool]:
-    """The exact, checked answer to program k of a stack, and whether the stack's basis led to it."""
+def publish(solved: Solved, k: int, program: Program) -> tuple[Answer, Tally]:
+    """The exact, checked answer to program k of a stack, and which step led to it."""
     basis = basis_of(solved, k)
     answer: Optimum | Infeasible | None = None
     if solved.status[k] == OPTIMAL:
         answer = solve_on_basis(program, basis)
     elif solved.status[k] == INFEASIBLE:
         answer = blocking_on_basis(program, basis, int(solved.blocked[k]))
-    return (answer, True) if answer is not None else (decide(program), False)
+    return (answer, Tally(basis=1)) if answer is not None else search(program)
 
 
 def answer_many(programs: Sequence[Program]) -> tuple[list[Answer], Tally]:
@@ -102,13 +117,12 @@ def answer_many(programs: Sequence[Program]) -> tuple[list[Answer], Tally]:
     for place, program in enumerate(programs):
         groups.setdefault((len(program.rows), len(program.cost)), []).append(place)
     answers: dict[int, Answer] = {}
-    on_basis = 0
+    tally = Tally()
     for places in groups.values():
         solved = solve(stack_of([programs[place] for place in places]), alone=True)
         for k, place in enumerate(places):
-            answers[place], led = publish(solved, k, programs[place])
-            on_basis += led
-    tally = Tally(basis=on_basis, search=len(programs) - on_basis)
+            answers[place], step = publish(solved, k, programs[place])
+            tally = tally + step
     return [answers[place] for place in range(len(programs))], tally
 
 
