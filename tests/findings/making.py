@@ -15,9 +15,7 @@ def make_campaign(assays: str = ASSAYS, targets: str = TARGETS, settings: str = 
     """A campaign from the texts of its files; ``more`` by name with ``_`` for the dot."""
     files = {"assays.csv": assays, "targets.csv": targets, "campaign.toml": settings}
     files |= {name.replace("_", "."): text for name, text in more.items()}
-    return read_campaign(
-        {name: text.encode() for name, text in files.items() if text}, slug="trial", folder="trial"
-    )
+    return read_campaign({name: text.encode() for name, text in files.items() if text}, slug="trial", folder="trial")
 
 
 def answers(assays: str = ASSAYS, targets: str = TARGETS, settings: str = "", **more: str) -> Findings:

@@ -142,9 +142,7 @@ def test_joint_conformity_agrees_with_simulation() -> None:
     sd = np.array([0.8, 0.6, 0.1])
     bias = np.array([0.4, 0.0, 0.05])
     assays = "lot,cost,a,b,c\n" + "".join(f"L{i},{i + 1},{','.join(map(str, v))}\n" for i, v in enumerate(values))
-    settings = "".join(
-        f"[components.{name}]\nsd = {sd[j]}\nbias_sd = {bias[j]}\n" for j, name in enumerate("abc")
-    )
+    settings = "".join(f"[components.{name}]\nsd = {sd[j]}\nbias_sd = {bias[j]}\n" for j, name in enumerate("abc"))
     order = only_order(answers(assays, "order,a,b,c\n1,19..22,>= 11,<= 5.6\n", settings))
     for recipe in order.recipes.values():
         x = np.array([recipe.shares.get(f"L{i}", 0.0) for i in range(3)])
@@ -161,10 +159,8 @@ def test_assured_holds_its_confidence_and_costs_no_less_than_the_cheapest() -> N
     pick = random.Random(5)
     said = 0
     for _ in range(15):
-        lots = "".join(
-            f"L{i},{pick.randint(10, 30)},{pick.randint(0, 40)},{pick.randint(0, 40)}\n" for i in range(5)
-        )
-        settings = "[components.a]\nsd = 0.5\n[components.b]\nsd = \"2 %\"\n"
+        lots = "".join(f"L{i},{pick.randint(10, 30)},{pick.randint(0, 40)},{pick.randint(0, 40)}\n" for i in range(5))
+        settings = '[components.a]\nsd = 0.5\n[components.b]\nsd = "2 %"\n'
         order = only_order(answers("lot,cost,a,b\n" + lots, "order,a,b\n1,15..19,12..30\n", settings))
         if order.verdict not in ("makeable", "edge"):
             continue
