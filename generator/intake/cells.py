@@ -90,9 +90,13 @@ def parse_reading(text: str, decimal: Decimal = ".") -> Typed:
 _TOKEN = re.compile(r"[0-9]*[.,]?[0-9]+")
 
 
+#: A letter typed for a zero, between digits.
+_LETTER_O = re.compile("(?<=[0-9])[oO](?=[0-9.,])")
+
+
 def suggest_number(text: str, decimal: Decimal = ".", otherwise: str = "write a number") -> str:
     """A remedy for a cell that is no number: the number it most likely was."""
-    token = _TOKEN.search(text[:LONGEST_NUMBER])
+    token = _TOKEN.search(_LETTER_O.sub("0", text[:LONGEST_NUMBER]))
     if token is None or len(token[0]) > MOST_DIGITS:
         return otherwise
     sign = "-" if text.strip().translate(_MINUS).startswith("-") else ""

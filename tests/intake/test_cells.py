@@ -86,6 +86,7 @@ def test_suggestions() -> None:
     assert suggest_number("12,5o") == "write 12.5"
     assert suggest_number("12.5o", ",") == "write 12,5"
     assert suggest_number("-3x") == "write -3"
+    assert suggest_number("3O,1") == "write 30.1"
     assert suggest_number("high") == "write a number"
 
 
