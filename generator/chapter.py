@@ -8,9 +8,8 @@ from __future__ import annotations
 
 import functools
 import traceback
-from collections.abc import Mapping
-from dataclasses import dataclass, replace
-from datetime import datetime
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -19,52 +18,36 @@ from generator.disk import WriteError, digest_of
 from generator.findings import results
 from generator.findings.records import Findings, RevisionMark
 from generator.folders import Folder, Inputs
-from generator.history import compare
-from generator.history.archive import Draft, History, Revision, contents, read_history, record, verified
+from generator.history import compare, story_files
+from generator.history.archive import History, OvertakenError, Revision, contents, entries, read_history, verified
+from generator.history.chronicle import GROUP, read_line, read_lines, recent
+from generator.history.headlines import with_cause
+from generator.history.recording import Material, record_story
+from generator.history.records import Story
 from generator.intake.campaign import read_campaign
 from generator.intake.records import Campaign
 from generator.lock import LockedError
 from generator.problems import HullbookError, Problem, stopping
+from generator.report.veil import EditionError
 from generator.report.views import CampaignPages, IndexEntry, RevisionLine, index_entry
+from generator.tasks import Chapter, Incident, Task
 
 if TYPE_CHECKING:
-    from generator.report.themes import Theme
+    from generator.report.themes import Theme, ThemeError
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
-class Task:
-    """What one campaign's work needs: picklable, so that another process can do it.
+class Told:
+    """A campaign with its answers, ready to be drawn for its audience; ``theme`` is the one wanted.
 
-    ``theme`` is the command's, None for the campaign's own.
+    ``history`` is the folder of its revisions where the audience may see them; ``drawn`` as in the task.
     """
 
-    folder: Folder
-    inputs: Inputs
-    history: Path
-    theme: str | None
-    moment: datetime
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Incident:
-    """An unexpected error: the reference that pages show, and the traceback for the log file."""
-
-    reference: str
-    trace: str
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Chapter:
-    """What came of a campaign: files by address (None: keep what is published) and its index line.
-
-    ``is_recorded`` is False where a revision was due and could not be written.
-    """
-
-    files: Mapping[str, bytes] | None
-    entry: IndexEntry
+    book: CampaignPages
     theme: str
     is_recorded: bool = True
-    incident: Incident | None = None
+    history: Path | None = None
+    drawn: Mapping[str, str] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -81,7 +64,20 @@ def make(task: Task) -> Chapter:
     """Do one campaign from bytes to files; raises nothing but what stops the whole program."""
     try:
         return _made(task)
+    except EditionError as error:
+        return _without_edition(task, error)
     except Exception as error:  # noqa: BLE001 - the last guard: one campaign's defect is no other's
+        return _after_defect(task, error)
+
+
+def make_stopped(task: Task, problem: Problem) -> Chapter:
+    """Show a campaign's last good answers, without working on it, under a banner of this problem."""
+    try:
+        history = read_history(task.history, newest=GROUP)
+        return _drawn(_stopped(task, replace(_blank(task), problems=(problem,)), history, (problem,)))
+    except EditionError as error:
+        return _without_edition(task, error)
+    except Exception as error:  # noqa: BLE001 - as above
         return _after_defect(task, error)
 
 
@@ -93,8 +89,13 @@ def read(folder: Folder, inputs: Inputs) -> Campaign:
 
 
 def _made(task: Task) -> Chapter:
+    return _drawn(tell(task))
+
+
+def tell(task: Task) -> Told:
+    """Read, answer and record a campaign; EditionError where it does not know the edition or the client."""
     campaign = read(task.folder, task.inputs)
-    history = read_history(task.history)
+    history = read_history(task.history, newest=GROUP)
     if campaign.is_stopped:
         return _stopped(task, campaign, history, campaign.problems)
     # What is wrong with the folder is no matter of the files' content: told now, not archived.
@@ -104,8 +105,8 @@ def _made(task: Task) -> Chapter:
     if stopping(problems):
         return _stopped(task, campaign, history, problems)
     findings = replace(answered.findings, problems=problems)
-    chapter = _drawn(task, replace(campaign, problems=problems), findings, answered.history)
-    return replace(chapter, is_recorded=answered.is_recorded)
+    told = _told(task, replace(campaign, problems=problems), findings, answered.history)
+    return replace(told, is_recorded=answered.is_recorded)
 
 
 def _answer(task: Task, campaign: Campaign, history: History) -> _Answered:
@@ -149,50 +150,47 @@ def _recorded(
     """Record findings as a new revision; where that fails, say so and go on without one."""
     if stopping(findings.problems):
         return _Answered(findings=findings, history=history, notes=notes)
-    found, headline, damage = _since(history.head, findings)
-    notes = tuple(dict.fromkeys(notes + damage))
-    draft = Draft(
+    if history.head is not None:
+        notes = tuple(dict.fromkeys(notes + _archived(history.head)[1]))
+    material = Material(
         inputs=task.inputs.files,
-        results=lambda mark: results.dumps(replace(findings, revision=mark)),
-        changes=compare.to_bytes(found),
-        headline=headline,
+        campaign=campaign,
+        findings=findings,
         cause=cause,
         moment=task.moment,
         program=__version__,
-        engine=identity.engine(),
+        read=lambda files: read_campaign(files, slug=task.folder.slug, folder=task.folder.name),
     )
     try:
-        revision = record(task.history, draft)
-    except (WriteError, LockedError) as error:
+        revision = record_story(task.history, material)
+    except (WriteError, LockedError, OvertakenError) as error:
         notes += (_not_recorded(error),)
         return _Answered(findings=findings, history=history, notes=notes, is_recorded=False)
     marked = _renamed(findings, campaign, revision.mark)
-    return _Answered(findings=marked, history=read_history(task.history), notes=notes)
+    return _Answered(findings=marked, history=read_history(task.history, newest=GROUP), notes=notes)
 
 
-def _since(head: Revision | None, findings: Findings) -> tuple[tuple[compare.Change, ...], str, tuple[Problem, ...]]:
-    """What changed since a revision, its headline, and what was wrong with reading it."""
-    if head is None:
-        return (), compare.FIRST, ()
-    old, damage = _archived(head)
-    if old is None:
-        return (), "The answers before can't be read.", damage
-    found = compare.changes(old, findings)
-    return found, compare.headline(found), ()
-
-
-def _stopped(task: Task, campaign: Campaign, history: History, problems: tuple[Problem, ...]) -> Chapter:
-    """Draw the last good revision under a banner; without one, a page of the problems."""
+def _stopped(task: Task, campaign: Campaign, history: History, problems: tuple[Problem, ...]) -> Told:
+    """Tell the last good revision under a banner; without one, the problems alone."""
     problems = tuple(dict.fromkeys(problems + history.problems))
-    for revision in reversed(history.revisions):
+    for revision in _newest_first(task, history):
         good = _good(task, campaign, revision)
         if isinstance(good, Problem):
             problems = tuple(dict.fromkeys((*problems, good)))
             continue
         old, findings = good
         until = replace(history, revisions=tuple(item for item in history.revisions if item.number <= revision.number))
-        return _drawn(task, old, replace(findings, problems=problems), until, banner=problems)
-    return _drawn(task, replace(campaign, problems=problems), _empty(campaign, problems), history)
+        return _told(task, old, replace(findings, problems=problems), until, banner=problems)
+    return _told(task, replace(campaign, problems=problems), _empty(campaign, problems), history)
+
+
+def _newest_first(task: Task, history: History) -> Iterator[Revision]:
+    """The revisions of a history of which the newest were read, then those before them."""
+    yield from reversed(history.revisions)
+    read_already = {revision.number for revision in history.revisions}
+    for revision in reversed(read_history(task.history).revisions):
+        if revision.number not in read_already:
+            yield revision
 
 
 def _good(task: Task, campaign: Campaign, revision: Revision) -> tuple[Campaign, Findings] | Problem:
@@ -221,44 +219,72 @@ def _empty(campaign: Campaign, problems: tuple[Problem, ...]) -> Findings:
     )
 
 
-def _drawn(
+def _told(
     task: Task, campaign: Campaign, findings: Findings, history: History, *, banner: tuple[Problem, ...] = ()
-) -> Chapter:
-    """Draw all pages; a theme that fails gives way to the plain one, and is a problem."""
-    from generator.report.themes import PLAIN, ThemeError
+) -> Told:
+    """All that pages show, as the task's audience may see it."""
+    from generator.report.editions import edited
 
-    name = task.theme or campaign.settings.theme
+    story = _story(history.head)
     book = CampaignPages(
         campaign=campaign,
         findings=findings,
         revisions=tuple(_line(revision) for revision in history.revisions),
-        changes=_sentences(history.head),
+        changes=() if story is None else tuple(with_cause(change, story.edits) for change in story.changes),
         banner_problems=banner,
         version=__version__,
     )
+    shown = edited(book, task.edition, task.client, story)
+    is_internal = (shown.edition, shown.client) == ("internal", "") and not shown.hidden
+    return Told(
+        book=shown,
+        theme=task.theme or campaign.settings.theme,
+        history=task.history if is_internal else None,
+        drawn=task.drawn,
+    )
+
+
+def _drawn(told: Told) -> Chapter:
+    """Draw all pages; where the theme fails that is a problem, and pages in the plain theme are a makeshift."""
+    from generator.report.theme_folders import PLAIN
+    from generator.report.themes import ThemeError
+
     try:
-        return _in_theme(book, name, name)
+        return _in_theme(told, told.theme)
     except ThemeError as error:
-        if name == PLAIN:
+        if told.theme == PLAIN:
             raise
-        problems = (*findings.problems, _theme_fault(name, error))
-        told = replace(
+        book, fault = told.book, _theme_fault(error)
+        problems = (*book.findings.problems, fault)
+        faulty = replace(
             book,
-            campaign=replace(campaign, problems=(*campaign.problems, problems[-1])),
-            findings=replace(findings, problems=problems),
-            banner_problems=problems if banner else (),
+            campaign=replace(book.campaign, problems=(*book.campaign.problems, fault)),
+            findings=replace(book.findings, problems=problems),
+            banner_problems=problems if book.banner_problems else (),
         )
-        return _in_theme(told, PLAIN, name)
+        return replace(_in_theme(replace(told, book=faulty), PLAIN), is_makeshift=True)
 
 
-def _in_theme(book: CampaignPages, name: str, asked: str) -> Chapter:
+def _in_theme(told: Told, name: str) -> Chapter:
+    from generator.report.exports import exports
+    from generator.report.history_pages import Shelf, draw_history
     from generator.report.pages import assets, draw_campaign
     from generator.report.themes import load_theme
 
+    found = entries(told.history) if told.history is not None else []
+    book = replace(told.book, past=read_lines(recent(found)))
     theme = _kept_theme(name, load_theme(name).digest)
-    files = {**assets(theme), **draw_campaign(book, theme)}
+    files = {**assets(theme), **draw_campaign(book, theme), **exports(book)}
     files[f"{book.campaign.slug}/results.json"] = results.dumps(book.findings)
-    return Chapter(files=files, entry=index_entry(book), theme=asked)
+    past = draw_history(book, theme, Shelf(entries=found, read=read_line, published=told.drawn))
+    return Chapter(
+        files={**files, **past.files},
+        entry=index_entry(book),
+        theme=told.theme,
+        is_recorded=told.is_recorded,
+        kept=past.kept,
+        drawn=past.keys,
+    )
 
 
 @functools.lru_cache(maxsize=4)
@@ -279,14 +305,27 @@ def _line(revision: Revision) -> RevisionLine:
     )
 
 
-def _sentences(head: Revision | None) -> tuple[str, ...]:
-    """The changes of the newest revision in words; none where they are damaged (which is told)."""
+def _story(head: Revision | None) -> Story | None:
+    """What the newest revision changed; None where that is damaged (which is told)."""
     if head is None:
-        return ()
+        return None
     try:
-        return tuple(change.sentence for change in compare.from_bytes(verified(head, "changes.json")))
-    except (HullbookError, ValueError):
-        return ()
+        return story_files.from_bytes(verified(head, "changes.json"))
+    except HullbookError:
+        return None
+
+
+def _without_edition(task: Task, error: EditionError) -> Chapter:
+    """A campaign that does not know the edition has no pages in it."""
+    problem = Problem(
+        file="campaign.toml",
+        column="editions",
+        message=error.what,
+        remedy="name another edition or client, or write it into campaign.toml",
+        severity="stops",
+    )
+    entry = IndexEntry(slug=task.folder.slug, title=task.folder.name, counts={}, problems=(problem,), is_stopped=True)
+    return Chapter(files=None, entry=entry, theme=task.theme or "plain")
 
 
 def _after_defect(task: Task, error: Exception) -> Chapter:
@@ -295,7 +334,7 @@ def _after_defect(task: Task, error: Exception) -> Chapter:
     problems = (_internal(incident.reference),)
     try:
         campaign = replace(_blank(task), problems=problems)
-        chapter = _stopped(task, campaign, read_history(task.history), problems)
+        chapter = _drawn(_stopped(task, campaign, read_history(task.history), problems))
     except Exception:  # noqa: BLE001 - drawing itself is what fails: leave the published pages alone
         entry = IndexEntry(slug=task.folder.slug, title=task.folder.name, counts={}, problems=problems, is_stopped=True)
         return Chapter(files=None, entry=entry, theme="plain", incident=incident)
@@ -333,20 +372,19 @@ def _unusable(revision: Revision, why: object) -> Problem:
     )
 
 
-def _theme_fault(name: str, error: HullbookError) -> Problem:
+def _theme_fault(error: ThemeError) -> Problem:
     return Problem(
-        file="campaign.toml",
-        column="theme",
-        found=name,
-        message=f"this theme can't be used, and plain is shown instead: {error}",
+        file=error.file,
+        row=error.line,
+        message=f"this theme can't be used: {error.what}",
         remedy="mend the theme, or name another",
-        severity="note",
+        severity="drops",
     )
 
 
 def _not_recorded(error: HullbookError) -> Problem:
     # Who holds the lock is for the log, not for pages.
-    why = "another program is recording" if isinstance(error, LockedError) else error
+    why = "another program is recording" if isinstance(error, LockedError | OvertakenError) else error
     return Problem(
         file="history",
         message=f"these answers are not recorded as a revision: {why}",

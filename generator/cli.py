@@ -18,7 +18,7 @@ from generator import __version__
 from generator.problems import HullbookError, failing
 
 if TYPE_CHECKING:
-    from generator.book import Job
+    from generator.job import Job
 
 ALL_WELL, HAS_PROBLEMS, WRONG_USE = 0, 1, 2
 #: As a shell tells of a command that Ctrl-C ended.
@@ -85,17 +85,24 @@ def _parser() -> argparse.ArgumentParser:
         help="verify inputs and history, write nothing",
         description="Read every campaign and verify its history; write nothing.",
     )
+    pack = commands.add_parser(
+        "pack",
+        help="one campaign in one self-contained file",
+        description="Write one campaign, in one edition, as one HTML file that opens and prints anywhere.",
+    )
     for command in (build, watch, check):
         _add_campaigns(command)
     for command in (build, watch):
         _add_output(command)
-    for command in (build, watch, check):
+    _add_pack(pack)
+    for command in (build, watch, check, pack):
         command.add_argument("--history", type=Path, metavar="DIR", help="keep revisions in DIR/CAMPAIGN instead")
         command.add_argument("--quiet", action="store_true", help="tell only what somebody has to look at")
     _add_watching(watch)
     build.set_defaults(run=_build)
     watch.set_defaults(run=_watch)
     check.set_defaults(run=_check)
+    pack.set_defaults(run=_pack)
     return parser
 
 
@@ -119,8 +126,40 @@ def _add_output(command: argparse.ArgumentParser) -> None:
         metavar="OUTPUT",
         help="where the pages go (default: output)",
     )
+    _add_audience(command)
+    command.add_argument(
+        "--edition",
+        action="append",
+        dest="editions",
+        metavar="NAME",
+        help="internal (default), client or one that campaign.toml names; several go to OUTPUT/NAME each",
+    )
+    command.add_argument(
+        "--jobs",
+        type=_jobs,
+        default=1,
+        metavar="N",
+        help="processes at once (default: 1; 0: none beside this one, and no time limit)",
+    )
+    command.add_argument(
+        "--time-limit",
+        type=_limit,
+        default=300.0,
+        metavar="SECONDS",
+        help="give up a campaign that takes longer, and show its last good answers (default: 300)",
+    )
+
+
+def _add_audience(command: argparse.ArgumentParser) -> None:
     command.add_argument("--theme", metavar="NAME|PATH", help="theme for all campaigns (default: each one's own)")
-    command.add_argument("--jobs", type=_jobs, default=1, metavar="N", help="processes at once (default: 1)")
+    command.add_argument("--client", default="", metavar="NAME", help="only this client's orders (default: all)")
+
+
+def _add_pack(command: argparse.ArgumentParser) -> None:
+    command.add_argument("campaign", type=Path, metavar="CAMPAIGN", help="the campaign's folder")
+    command.add_argument("file", type=Path, metavar="FILE.html", help="the file to write")
+    _add_audience(command)
+    command.add_argument("--edition", default="client", metavar="NAME", help="whom it is for (default: client)")
 
 
 def _add_watching(command: argparse.ArgumentParser) -> None:
@@ -141,8 +180,15 @@ def _add_watching(command: argparse.ArgumentParser) -> None:
 
 def _jobs(text: str) -> int:
     number = int(text)
-    if not 1 <= number <= 64:
-        raise argparse.ArgumentTypeError("give a number from 1 to 64")
+    if not 0 <= number <= 64:
+        raise argparse.ArgumentTypeError("give a number from 0 to 64")
+    return number
+
+
+def _limit(text: str) -> float:
+    number = float(text)
+    if not 1 <= number <= 86_400:
+        raise argparse.ArgumentTypeError("give seconds from 1 to 86400")
     return number
 
 
@@ -154,7 +200,8 @@ def _seconds(text: str) -> float:
 
 
 def _job(options: argparse.Namespace) -> Job:
-    from generator.book import Job, check_job
+    from generator.book import check_job
+    from generator.job import Job
 
     job = Job(
         campaigns=options.campaigns,
@@ -163,6 +210,9 @@ def _job(options: argparse.Namespace) -> Job:
         theme=options.theme,
         history=options.history,
         jobs=options.jobs,
+        time_limit=options.time_limit,
+        editions=tuple(dict.fromkeys(options.editions or ("internal",))),
+        client=options.client,
     )
     check_job(job)
     return job
@@ -177,7 +227,7 @@ def _build(options: argparse.Namespace, log: Lines) -> int:
     for slug in outcome.kept:
         for problem in failing(outcome.problems.get(slug, ())):
             log.warn(f"{slug}: {problem.sentence()}")
-    log.say(outcome.sentence())
+    log.say(f"{job.moment:%Y-%m-%dT%H:%M:%SZ} {outcome.sentence()}")
     return ALL_WELL if outcome.is_well else HAS_PROBLEMS
 
 
@@ -185,6 +235,24 @@ def _watch(options: argparse.Namespace, log: Lines) -> int:
     from generator.watch import watch
 
     return watch(_job(options), log, settle_seconds=options.settle, poll=options.poll, clock=now)
+
+
+def _pack(options: argparse.Namespace, log: Lines) -> int:
+    from generator.packing import pack
+
+    size, problems = pack(
+        options.campaign,
+        options.file,
+        moment=now(),
+        theme=options.theme,
+        edition=options.edition,
+        client=options.client,
+        history=options.history,
+    )
+    for problem in problems:
+        log.warn(problem.sentence())
+    log.say(f"{options.file}: {size / 1000:.0f} kB, edition {options.edition}")
+    return HAS_PROBLEMS if failing(problems) else ALL_WELL
 
 
 def _check(options: argparse.Namespace, log: Lines) -> int:

@@ -37,6 +37,8 @@ _WINDOWS_HELD = frozenset({5, 32, 33})
 
 #: Maps the name of a directory entry to its canonical name; None: not wanted.
 Wanted = Callable[[str], str | None]
+#: Names in a folder by canonical name, and names left aside since another stands for the same.
+Listing = tuple[dict[str, str], tuple[str, ...]]
 
 
 class WriteError(HullbookError):
@@ -52,10 +54,12 @@ def sha256(data: bytes) -> str:
     return hashlib.sha256(data).hexdigest()
 
 
+_CANONICAL = json.JSONEncoder(sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
+
+
 def canonical_json(value: object) -> bytes:
     """JSON of one form only: keys sorted, no spaces, UTF-8; what digests are taken of."""
-    text = json.dumps(value, sort_keys=True, separators=(",", ":"), ensure_ascii=False, allow_nan=False)
-    return text.encode("utf-8", "surrogatepass")  # a damaged file may hold half a character
+    return _CANONICAL.encode(value).encode("utf-8", "surrogatepass")  # a damaged file may hold half a character
 
 
 def digest_of(value: object) -> str:
@@ -85,64 +89,83 @@ class Snapshot:
     unreadable: Mapping[str, str] = field(default_factory=dict)
 
 
-def wanted_entries(folder: Path, wanted: Wanted) -> tuple[dict[str, Path], tuple[str, ...]]:
-    """Find the entries of ``folder`` that ``wanted`` maps to a canonical name, and those left aside.
+def wanted_entries(folder: Path | str, wanted: Wanted) -> Listing:
+    """Find the names in ``folder`` that ``wanted`` maps to a canonical name, by that; and those left aside.
 
     An entry that has its canonical name exactly goes before one that differs in case.  A folder that
     is not there has no entries; other OSErrors are raised.
     """
-    chosen: dict[str, Path] = {}
+    chosen: dict[str, str] = {}
     shadowed: list[str] = []
     try:
         names = os.listdir(folder)  # noqa: PTH208 - names are all that is wanted
     except (FileNotFoundError, NotADirectoryError):
         return {}, ()
-    for name in sorted(names, key=lambda name: (wanted(name) != name, name)):
+    for name in names:
         canonical = wanted(name)
         if canonical is None:
             continue
         if canonical in chosen:
-            shadowed.append(name)
-        else:
-            chosen[canonical] = folder / name
-    return dict(sorted(chosen.items())), tuple(shadowed)
+            (_, name), (_, other) = sorted((name != canonical, name) for name in (name, chosen[canonical]))
+            shadowed.append(other)
+        chosen[canonical] = name
+    return dict(sorted(chosen.items())), tuple(sorted(shadowed))
 
 
-def read_folder(folder: Path, wanted: Wanted, *, at_most: int | None = None) -> Snapshot:
+def read_folder(
+    folder: Path, wanted: Wanted, *, at_most: int | None = None, listing: Listing | None = None
+) -> Snapshot:
     """Read the files of ``folder`` that ``wanted`` maps to a canonical name (None: not wanted).
 
     At most ``at_most`` bytes of each file are read.  What is no regular file or can't be opened is in
-    ``unreadable``; nothing is raised for it.
+    ``unreadable``; nothing is raised for it.  ``listing`` is what :func:`wanted_entries` has found just now.
     """
     files: dict[str, bytes] = {}
     unreadable: dict[str, str] = {}
     try:
-        entries, shadowed = wanted_entries(folder, wanted)
+        entries, shadowed = listing or wanted_entries(folder, wanted)
     except OSError as error:
         return Snapshot(files={}, unreadable={".": reason(error)})
-    for name, path in entries.items():
+    start = os.path.join(folder, "")  # noqa: PTH118 - a thousand folders in a blink
+    for name, entry in entries.items():
+        path = start + entry
         try:
             files[name] = read_file(path, at_most=at_most)
         except FileNotFoundError:
-            if path.is_symlink():
+            if os.path.islink(path):  # noqa: PTH114 - as above
                 unreadable[name] = "it is a link to a file that does not exist"
         except OSError as error:
             unreadable[name] = reason(error)
     return Snapshot(files=files, shadowed=shadowed, unreadable=unreadable)
 
 
-def read_file(path: Path, *, at_most: int | None = None) -> bytes:
+def read_file(path: Path | str, *, at_most: int | None = None) -> bytes:
     """Read a regular file, at most ``at_most`` bytes; OSError if it is none or can't be read."""
-    if not stat.S_ISREG(path.stat().st_mode):
-        raise OSError(errno.EINVAL, "it is not a file")
-    with path.open("rb") as stream:
-        return stream.read() if at_most is None else stream.read(at_most)
+    # Not blocking: a pipe of that name would have to be waited for before anything can be asked of it.
+    descriptor = os.open(path, os.O_RDONLY | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0))
+    try:
+        status = os.fstat(descriptor)
+        if not stat.S_ISREG(status.st_mode):
+            raise OSError(errno.EINVAL, "it is not a file")
+        left = sys.maxsize if at_most is None else at_most
+        pieces = []
+        # One byte more than there should be: less than asked for is the end, so most files are read in one go.
+        while left > 0:
+            asked = min(left, max(status.st_size, 1 << 12) + 1)
+            piece = os.read(descriptor, asked)
+            pieces.append(piece)
+            left -= len(piece)
+            if len(piece) < asked:
+                break
+        return b"".join(pieces)
+    finally:
+        os.close(descriptor)
 
 
-def stamp(path: Path) -> Stamp | None:
+def stamp(path: Path | str) -> Stamp | None:
     """Ask for the stamp of a file, or None where there is none (or it can't be asked)."""
     try:
-        status = path.stat()
+        status = os.stat(path)  # noqa: PTH116 - a thousand folders in a blink
     except OSError:
         return None
     return Stamp(status.st_size, status.st_mtime_ns, status.st_ino)
@@ -260,8 +283,8 @@ def sweep(folders: Iterable[Path]) -> int:
     count = 0
     for folder in folders:
         with contextlib.suppress(OSError):
-            left = [entry for entry in sorted(folder.iterdir()) if is_unfinished(entry.name)]
-            for entry in left:
+            left = [name for name in os.listdir(folder) if is_unfinished(name)]  # noqa: PTH208 - thousands, mostly others
+            for entry in (folder / name for name in left):
                 if entry.is_dir() and not entry.is_symlink():
                     shutil.rmtree(entry, ignore_errors=True)
                 else:

@@ -3,21 +3,23 @@
 from __future__ import annotations
 
 import os
+import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
 from generator import disk
-from generator.disk import Stamp
+from generator.disk import Listing, Stamp
 from generator.intake.campaign import input_name
 from generator.problems import HullbookError, Problem
 from generator.report.addresses import slugify, slugs
+from generator.report.theme_folders import PLAIN
 
 SITE = "site.toml"
 #: What makes a folder a campaign; notes alone don't.
 _TELLING = frozenset({"assays.csv", "targets.csv", "stock.csv", "campaign.toml"})
 #: Addresses in the output folder that no campaign can have.
-_TAKEN = ("assets", "index.html", "method.html")
+_TAKEN = ("assets", "index.html", "method.html", "status.json")
 #: A file is read up to here; ``intake`` refuses what is longer than its limit, which is less.
 MOST_BYTES = 64_000_000
 
@@ -28,12 +30,16 @@ class NoCampaignsError(HullbookError):
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Folder:
-    """One campaign's folder: its slug, its name as pages show it, where it is, and the site.toml that applies."""
+    """One campaign's folder: its slug, its name as pages show it, where it is, and the site.toml that applies.
+
+    ``listing`` is what was in it when it was found; None where it could not be listed.
+    """
 
     slug: str
     name: str
     path: Path
     site: Path | None
+    listing: Listing | None = field(default=None, compare=False, repr=False)
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -52,25 +58,32 @@ def find_campaigns(root: Path) -> tuple[Folder, ...]:
     """
     if not root.is_dir():
         raise NoCampaignsError(f"there is no folder {root}")
-    if _is_campaign(root):
+    if _is_campaign(_listing(root)):
         real = Path(os.path.realpath(root))
         name = _shown(real.name)
         return (Folder(slug=slugs([name], _TAKEN)[name], name=name, path=root, site=_site_in(real.parent)),)
     try:
-        inner = [path for path in root.iterdir() if not path.name.startswith(".")]
+        with os.scandir(root) as inner:
+            names = sorted(entry.name for entry in inner if not entry.name.startswith(".") and entry.is_dir())
     except OSError as error:
         raise NoCampaignsError(f"the folder {root} can't be read ({disk.reason(error)})") from error
-    paths = {_shown(path.name): path for path in sorted(inner) if path.is_dir() and _is_campaign(path)}
+    start = os.path.join(root, "")  # noqa: PTH118 - a thousand folders in a blink
+    listings = {name: _listing(start + name) for name in names}
+    real_names = {_shown(name): name for name, listing in listings.items() if _is_campaign(listing)}
     # A folder whose name is a slug already keeps it, whatever comes before it.
-    by_claim = sorted(paths, key=lambda name: (slugify(name) != name, name))
+    by_claim = sorted(real_names, key=lambda name: (slugify(name) != name, name))
     found = slugs(by_claim, _TAKEN)
     site = _site_in(root)
-    return tuple(Folder(slug=found[name], name=name, path=path, site=site) for name, path in paths.items())
+    return tuple(
+        Folder(slug=found[shown], name=shown, path=root / name, site=site, listing=listings[name])
+        for shown, name in real_names.items()
+    )
 
 
-def read_inputs(folder: Folder) -> Inputs:
-    """Read a campaign's files, and the site.toml that applies to it."""
-    own = disk.read_folder(folder.path, input_name, at_most=MOST_BYTES)
+def read_inputs(folder: Folder, *, is_just_found: bool = False) -> Inputs:
+    """Read a campaign's files, and the site.toml that applies to it; one just found is not listed again."""
+    listing = folder.listing if is_just_found else None
+    own = disk.read_folder(folder.path, input_name, at_most=MOST_BYTES, listing=listing)
     files = {name: data for name, data in own.files.items() if name != SITE}
     unreadable = {name: why for name, why in own.unreadable.items() if name != SITE}
     if folder.site is not None:
@@ -113,7 +126,7 @@ def _stamps(folder: Path) -> tuple[tuple[str, Stamp], ...]:
         entries, _ = disk.wanted_entries(folder, input_name)
     except OSError:
         return ()
-    stamped = ((path.name, disk.stamp(path)) for path in entries.values())
+    stamped = ((name, disk.stamp(os.path.join(folder, name))) for name in entries.values())  # noqa: PTH118 - fast
     return tuple((name, stamp) for name, stamp in stamped if stamp is not None)
 
 
@@ -123,20 +136,32 @@ def _site_in(folder: Path) -> Path | None:
         entries, _ = disk.wanted_entries(folder, _site_name)
     except OSError:
         return None
-    return entries.get(SITE)
+    return folder / entries[SITE] if SITE in entries else None
+
+
+def site_theme(site: Path | None) -> str:
+    """Find the theme that site.toml names for the index; what is wrong with the file is told elsewhere."""
+    try:
+        theme = tomllib.loads(site.read_text(encoding="utf-8-sig")).get("theme") if site else None
+    except (OSError, ValueError):
+        theme = None
+    return theme if isinstance(theme, str) else PLAIN
 
 
 def _site_name(name: str) -> str | None:
     return SITE if input_name(name) == SITE else None
 
 
-def _is_campaign(path: Path) -> bool:
-    """Whether a folder holds a campaign; one that can't be read is taken for one, so that it is told."""
+def _listing(path: Path | str) -> Listing | None:
     try:
-        entries, _ = disk.wanted_entries(path, input_name)
+        return disk.wanted_entries(path, input_name)
     except OSError:
-        return True
-    return not _TELLING.isdisjoint(entries)
+        return None
+
+
+def _is_campaign(listing: Listing | None) -> bool:
+    """Whether a folder holds a campaign; one that can't be read is taken for one, so that it is told."""
+    return listing is None or not _TELLING.isdisjoint(listing[0])
 
 
 def _shown(name: str) -> str:

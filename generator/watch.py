@@ -23,13 +23,17 @@ from types import FrameType
 from typing import TYPE_CHECKING, Literal
 
 from generator import disk, folders
-from generator.book import Job, Log, build, writer_lock
+from generator.book import build, writer_lock
 from generator.disk import WriteError
 from generator.folders import NoCampaignsError, is_site
 from generator.intake.campaign import input_name, is_whole
+from generator.job import Job, Log
 from generator.lock import OwnerLock
-from generator.report.publish import MANIFEST_NAME
+from generator.report.manifest import MANIFEST_NAME
+from generator.report.theme_folders import PLAIN, theme_folder, theme_stamps
 from generator.settling import Scan, Settling
+from generator.status import write_trouble
+from generator.workers import Crew, Here, Makers
 
 if TYPE_CHECKING:
     from watchdog.observers.api import BaseObserver
@@ -41,7 +45,7 @@ RESCAN_EVERY = 10.0
 POLL_EVERY = 1.0
 #: Polling takes at most this part of the time: a slow share is asked less often.
 _POLL_SHARE = 0.05
-#: Everything is read and compared by content so often: for a change that left size and time alike.
+#: Everything is read and compared by content so often, pages as well: for a change that left size and time alike.
 FULL_LOOK_EVERY = 300.0
 #: Pauses before what failed is tried again (a full disk, a page held by a reader), then the last one.
 RETRY_PAUSES = (2.0, 4.0, 8.0, 16.0, 32.0, 60.0)
@@ -61,6 +65,13 @@ class Hints:
         self._root = os.path.realpath(root)  # an observer gets no events through a link
         self._wake = wake
         self._observer: BaseObserver | None = None
+        self._themes: frozenset[Path] = frozenset()
+
+    def follow(self, themes: frozenset[Path]) -> None:
+        """Observe these folders of themes as well, from the next start on."""
+        if themes != self._themes:
+            self._themes = themes
+            self.stop()
 
     def ensure(self) -> bool:
         """Start observing if that is not going on; False where the system refuses."""
@@ -78,6 +89,20 @@ class Hints:
         class Handler(FileSystemEventHandler):
             """Set the event and return: an error or a delay here would lose events."""
 
+            def __init__(self, root: str) -> None:
+                self._root = root
+
+            def on_any_event(self, event: FileSystemEvent) -> None:
+                """Wake the loop, but not for what no campaign is made of, nor for a file that was only read."""
+                paths = (os.fsdecode(path) for path in (event.src_path, event.dest_path) if path)
+                if event.event_type not in _IDLE_EVENTS and any(
+                    is_telling(self._root, path, event.event_type, is_folder=event.is_directory) for path in paths
+                ):
+                    wake.set()
+
+        class ThemeHandler(FileSystemEventHandler):
+            """The same for the folder of a theme, where everything counts."""
+
             def on_any_event(self, event: FileSystemEvent) -> None:
                 """Wake the loop, but not for a file that was only read."""
                 if event.event_type not in _IDLE_EVENTS:
@@ -85,10 +110,13 @@ class Hints:
 
         observer = Observer()
         try:
-            observer.schedule(Handler(), self._root, recursive=True)
+            observer.schedule(Handler(self._root), self._root, recursive=True)
             observer.start()
         except OSError:
             return False
+        for folder in self._themes:
+            with contextlib.suppress(OSError):  # a scan finds its edits, only later
+                observer.schedule(ThemeHandler(), os.path.realpath(folder), recursive=True)
         self._observer = observer
         self._wake.set()  # what happened before the start gave no event
         return True
@@ -131,9 +159,15 @@ def watch(
     listener = _WakeOnWarning(wake)
     with writer_lock(job.output) as lock, _signals(ending, wake) if stop is None else contextlib.nullcontext():
         logging.getLogger("watchdog").addHandler(listener)
-        watcher = _Watcher(job, log, lock, Settling(settle_seconds), settle_seconds, clock, wake, ending)
         try:
-            watcher.run(has_events=wants_events(job.campaigns, poll))
+            with Crew(job.jobs, job.time_limit) if job.jobs else contextlib.nullcontext() as crew:
+                if crew is not None:
+                    crew.warm()
+                makers: Makers = crew or Here()
+                watcher = _Watcher(
+                    job, log, lock, makers, Settling(settle_seconds), settle_seconds, clock, wake, ending
+                )
+                watcher.run(has_events=wants_events(job.campaigns, poll))
         finally:
             logging.getLogger("watchdog").removeHandler(listener)
     log.say("stopped watching")
@@ -148,6 +182,7 @@ class _Watcher:
         job: Job,
         log: Log,
         lock: OwnerLock,
+        makers: Makers,
         settling: Settling,
         settle_seconds: float,
         clock: Callable[[], datetime],
@@ -157,6 +192,7 @@ class _Watcher:
         self._job = job
         self._log = log
         self._lock = lock
+        self._makers = makers
         self._settling = settling
         self._glance = min(max(settle_seconds / 2, _LEAST_PAUSE), 1.0)
         self._clock = clock
@@ -171,6 +207,8 @@ class _Watcher:
         self._blocked_until = 0.0
         self._failures = 0
         self._is_published = False
+        self._is_first = True
+        self._themes: frozenset[Path] = frozenset()
 
     def run(self, *, has_events: bool) -> None:
         """Go round until the end is asked for."""
@@ -223,12 +261,15 @@ class _Watcher:
         if time.monotonic() < self._blocked_until:
             return
         chosen = frozenset(folder for folder in ready.quiet if self._is_whole(folder)) | ready.overdue
-        if any(is_site(folder) for folder in self._settling.waiting - chosen):
-            return  # every campaign reads it
+        if any(self._concerns_all(folder) for folder in self._settling.waiting - chosen):
+            return  # every campaign is made with it
         if self._is_full_look_due():
-            self._build(scan, chosen, everything=True)
+            self._build(scan, chosen, everything=True, thorough=True)
         elif chosen:
-            self._build(scan, chosen, everything=any(is_site(folder) for folder in chosen))
+            self._build(scan, chosen, everything=any(self._concerns_all(folder) for folder in chosen))
+
+    def _concerns_all(self, place: Path) -> bool:
+        return is_site(place) or place in self._themes
 
     def _scan(self) -> Scan | None:
         """Stamp all files; None while the campaigns folder is away."""
@@ -244,18 +285,23 @@ class _Watcher:
         self._device = device
         if self._is_gone:
             self._is_gone = False
+            self._full_look_at = time.monotonic()  # who knows what happened meanwhile
             self._log.say(f"{self._job.campaigns} is back")
-        return scan
+        return {**scan, **{folder: theme_stamps(folder) for folder in self._themes}}
 
     def _tell_gone(self) -> None:
         """Keep every page while the campaigns folder is away; tell it once."""
         if not self._is_gone:
             self._is_gone = True
             self._hints.stop()
-            self._log.warn(f"{self._job.campaigns} is not there: waiting for it, pages stay as they are")
+            trouble = f"{self._job.campaigns} is not there"
+            self._log.warn(f"{trouble}: waiting for it, pages stay as they are")
+            write_trouble(self._job.output, self._clock(), trouble)
 
     def _is_whole(self, folder: Path) -> bool:
         """Whether no file of the folder looks as if it were still being written."""
+        if folder in self._themes:
+            return True  # a template that fails is told, and what is published stays
         place = folder.parent if is_site(folder) else folder
         snapshot = disk.read_folder(place, input_name, at_most=folders.MOST_BYTES)
         return not snapshot.unreadable and all(is_whole(name, data) for name, data in snapshot.files.items())
@@ -266,35 +312,47 @@ class _Watcher:
         is_lost = self._is_published and not (self._job.output / MANIFEST_NAME).exists()
         return is_retry or is_lost or now >= self._full_look_at
 
-    def _build(self, scan: Scan, chosen: frozenset[Path], *, everything: bool) -> None:
+    def _build(self, scan: Scan, chosen: frozenset[Path], *, everything: bool, thorough: bool = False) -> None:
         """Build, and remember what is built and what has to be tried again."""
-        began = time.monotonic()
+        moment = self._clock()
         without = self._settling.waiting - chosen
         try:
             outcome = build(
-                replace(self._job, moment=self._clock()),
+                replace(self._job, moment=moment),
                 self._lock,
                 self._log,
                 only=None if everything else chosen,
                 without=without,
                 is_wanted=lambda: not self._ending.is_set(),
+                makers=self._makers,
+                thorough=thorough,
+                tries_again=self._is_first,
             )
         except NoCampaignsError:
             return  # gone this very moment: the next scan tells
         except WriteError as error:
             self._is_published = False
             self._blocked_until = self._fail(f"{error}; the pages stay as they were")
+            write_trouble(self._job.output, moment, str(error))
             return
         self._settling.built({*chosen, *(scan if everything else ())} - without, scan)
-        self._is_published = True
+        self._is_published, self._is_first = True, False
+        self._follow(outcome.themes)
         if everything:
             self._full_look_at = time.monotonic() + FULL_LOOK_EVERY
         if outcome.pending:
             self._fail(f"{len(outcome.pending)} files are held by other programs")
         else:
             self._retry_at, self._failures = None, 0
-        if outcome.made or outcome.written or outcome.removed:
-            self._log.say(f"{outcome.sentence()} in {time.monotonic() - began:.2f} s")
+        if outcome.has_changed:
+            self._log.say(f"{moment:%Y-%m-%dT%H:%M:%SZ} {outcome.sentence()}")
+
+    def _follow(self, names: frozenset[str]) -> None:
+        """Watch the folders of the themes that pages are in now."""
+        themes = frozenset(folder for folder in map(theme_folder, {*names, PLAIN} - {""}) if folder.is_dir())
+        self._settling.built(themes ^ self._themes, {folder: theme_stamps(folder) for folder in themes})
+        self._themes = themes
+        self._hints.follow(themes)
 
     def _fail(self, what: str) -> float:
         """Tell of a failure, and return when to try again."""
@@ -303,6 +361,14 @@ class _Watcher:
         self._retry_at = time.monotonic() + pause
         self._log.warn(f"{what}; trying again in {pause:.0f} s")
         return self._retry_at
+
+
+def is_telling(root: str, path: str, kind: str, *, is_folder: bool) -> bool:
+    """Whether an event below the observed folder may have changed a campaign; its own history never does."""
+    inner = Path(os.path.relpath(path, root)).parts
+    if is_folder:
+        return not inner or (len(inner) == 1 and kind != "modified")
+    return len(inner) <= 2 and input_name(inner[-1]) is not None
 
 
 def wants_events(root: Path, poll: Poll) -> bool:

@@ -9,7 +9,8 @@ from pathlib import Path
 
 import pytest
 
-from generator.book import Job, Outcome, build, writer_lock
+from generator.book import build, writer_lock
+from generator.job import Job, Outcome
 from generator.report.views import CampaignPages, IndexEntry
 
 NOON = datetime(2026, 3, 2, 12, tzinfo=UTC)
@@ -56,7 +57,7 @@ def run(job: Job, log: Told | None = None, **options: object) -> Outcome:
 
 def pages_of(output: Path) -> dict[str, bytes]:
     """Every published file but the program's own records."""
-    paths = [path for path in output.rglob("*") if path.is_file() and not path.name.startswith(".hullbook")]
+    paths = [path for path in output.rglob("*") if path.is_file() and not path.name.startswith((".hullbook", "status"))]
     return {path.relative_to(output).as_posix(): path.read_bytes() for path in sorted(paths)}
 
 

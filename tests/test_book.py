@@ -1,6 +1,7 @@
 import errno
 import json
 import os
+import re
 import shutil
 import socket
 from collections.abc import Iterator
@@ -10,14 +11,15 @@ from pathlib import Path
 
 import pytest
 
-from generator import book, disk, identity
-from generator.book import WrongUseError, check, check_job
+from generator import disk, identity
+from generator.book import check, check_job
 from generator.disk import WriteError, stamp
 from generator.findings import answers
 from generator.folders import NoCampaignsError, find_campaigns
 from generator.history.archive import read_history
 from generator.history.check import check_history
-from generator.report.publish import MANIFEST_NAME
+from generator.job import WrongUseError
+from generator.report.manifest import MANIFEST_NAME
 from tests.sample import ASSAYS, TARGETS, Told, light_pages, make_job, pages_of, put_campaign, run, text_of
 
 
@@ -43,18 +45,22 @@ def test_a_campaign_becomes_pages_and_a_revision(tmp_path: Path) -> None:
     (revision,) = read_history(tmp_path / "campaigns/spring/history").revisions
     assert published["revision"] == {"number": 1, "digest": revision.digest, "recorded": "2026-03-02T12:00:00Z"}
     assert [order["verdict"] for order in published["orders"]] == ["makeable", "makeable"]
-    assert log.said == ["spring: 2 orders (2 makeable); 4 files written"]
+    assert log.said == log.warned == []
+    line = r"1 campaign, 1 built, [0-9]+ files written, 0 removed, 0 held, 0 with problems, [0-9]+\.[0-9]{2} s"
+    assert re.fullmatch(line, outcome.sentence())
     assert log.warned == []
 
 
 def test_the_second_build_writes_nothing(tmp_path: Path) -> None:
-    """A build with nothing changed touches no file of campaigns or output, whenever it runs."""
+    """A build with nothing changed touches no file but the status, whenever it runs and however closely it looks."""
     put_campaign(tmp_path / "campaigns")
     put_campaign(tmp_path / "campaigns", "autumn", assays_csv="lot\n")
     run(make_job(tmp_path))
-    before = {path: (stamp(path), path.stat().st_mtime_ns) for path in tmp_path.rglob("*") if path.is_file()}
+    paths = [path for path in tmp_path.rglob("*") if path.is_file() and path.name != "status.json"]
+    before = {path: stamp(path) for path in paths}
+    run(make_job(tmp_path), thorough=True)
     outcome = run(make_job(tmp_path, moment=make_job(tmp_path).moment + timedelta(days=40)))
-    assert {path: (stamp(path), path.stat().st_mtime_ns) for path in tmp_path.rglob("*") if path.is_file()} == before
+    assert {path: stamp(path) for path in paths} == before
     assert (outcome.made, outcome.written, outcome.removed) == ((), 0, 0)
     assert outcome.kept == ("autumn", "spring")
     assert not outcome.is_well
@@ -90,7 +96,7 @@ def test_a_changed_answer_is_told(tmp_path: Path) -> None:
     run(make_job(tmp_path))
     page = text_of(tmp_path / "output", "spring/index.html")
     assert "changed: Order 1 is now unreachable; it was makeable." in page
-    assert "Order 1 is now unreachable; it was makeable." in text_of(tmp_path / "output", "index.html")
+    assert "Order 1 lost on 2 March (unreachable)" in text_of(tmp_path / "output", "index.html")
     assert check_history(tmp_path / "campaigns/spring/history") == ()
 
 
@@ -139,7 +145,7 @@ def test_a_stopped_campaign_keeps_its_last_good_answers(tmp_path: Path) -> None:
     assert stopped["revision"] == good["revision"]
     assert {problem["severity"] for problem in stopped["problems"]} >= {"stops"}
     assert (tmp_path / "output/spring/orders/1.html").exists()
-    assert "stopped: showing the last good answers" in log.said[0]
+    assert outcome.with_problems == 1
     assert any("campaign.toml" in line for line in log.warned)
     assert len(read_history(tmp_path / "campaigns/spring/history").revisions) == 1
     assert outcome.kept == ("other",)
@@ -358,7 +364,7 @@ def test_an_unknown_theme_of_the_site_stops_nothing(tmp_path: Path) -> None:
     put_campaign(tmp_path / "campaigns")
     (tmp_path / "campaigns/site.toml").write_text('theme = "fancy"\n')
     log = Told()
-    assert run(make_job(tmp_path), log).is_well
+    assert run(make_job(tmp_path), log).made == ("spring",)
     assert "spring" in text_of(tmp_path / "output", "index.html")
     assert any("theme fancy: no such theme" in line for line in log.warned)
     assert run(make_job(tmp_path)).written == 0
@@ -433,7 +439,8 @@ def test_a_build_that_is_not_wanted_any_more_ends_early(tmp_path: Path) -> None:
     """Asked to end, a build finishes the campaign at hand and leaves the rest for the next."""
     for name in ("a", "b", "c"):
         put_campaign(tmp_path / "campaigns", name)
-    assert run(make_job(tmp_path), is_wanted=lambda: False).made == ("a",)
+    pages = tmp_path / "output"
+    assert run(make_job(tmp_path), is_wanted=lambda: not (pages / "a").exists()).made == ("a",)
     assert run(make_job(tmp_path)).made == ("b", "c")
 
 
@@ -540,7 +547,7 @@ def test_check_reads_and_writes_nothing(tmp_path: Path) -> None:
 
 def test_the_error_log_is_bounded(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """The log of unexpected errors is begun anew when it is long."""
-    monkeypatch.setattr(book, "_LONGEST_LOG", 10)
+    monkeypatch.setattr("generator.run._LONGEST_LOG", 10)
     monkeypatch.setattr(answers, "find", lambda campaign: 1 / 0)
     put_campaign(tmp_path / "campaigns")
     run(make_job(tmp_path))

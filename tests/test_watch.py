@@ -1,6 +1,7 @@
 import errno
 import json
 import os
+import re
 import shutil
 import signal
 import subprocess
@@ -70,7 +71,8 @@ class Watched:
         return (self.output / "index.html").read_text(encoding="utf-8")
 
     def builds(self) -> int:
-        return sum(": " in line and "written" in line and "built" not in line for line in self.log.said)
+        """How many campaigns were built, all builds together."""
+        return sum(int(found[1]) for line in self.log.said if (found := re.search(r" (\d+) built, ", line)))
 
     def rests(self) -> None:
         """Wait out a few settle times, in which anything due would be built."""

@@ -4,10 +4,13 @@ from __future__ import annotations
 
 from dataclasses import replace
 
+from generator.findings.ask import both, run, together
+from generator.findings.batches import batches_of
 from generator.findings.hulls import hull_findings
-from generator.findings.lots import lot_findings
+from generator.findings.lots import ask_roles, lot_findings
 from generator.findings.measures import measures_of, unfit_derived
-from generator.findings.orders import Desk, order_finding
+from generator.findings.orders import Desk, ask_order
+from generator.findings.plan import plan_of, verdicts_of, with_worth
 from generator.findings.records import ComponentFinding, Findings
 from generator.findings.uncertainty import uncertainty_of
 from generator.findings.values import table_of
@@ -33,12 +36,24 @@ def find(campaign: Campaign) -> Findings:
     measures = measures_of(campaign)
     problems.extend(table.problems)
     desk = Desk(campaign, table, measures, uncertainty_of(campaign, table))
-    orders = tuple(order_finding(desk, order, problems) for order in campaign.orders)
+    # Orders and lots wait for their answers together: what all of them ask is solved side by side.
+    reported, roles = run(
+        both(
+            together([ask_order(desk, order) for order in campaign.orders]),
+            ask_roles(campaign, table, measures),
+        )
+    )
+    orders = tuple(one.finding for one in reported)
+    problems.extend(problem for one in reported for problem in one.problems)
+    plan, left_out = plan_of(campaign, table, measures, verdicts_of(orders))
+    problems.extend(left_out)
     return replace(
         findings,
         hulls=hull_findings(campaign, table, measures),
-        lots=lot_findings(campaign, table, measures, orders),
+        lots=with_worth(lot_findings(campaign, roles, orders), plan),
         orders=orders,
+        plan=plan,
+        batches=batches_of(campaign, table, measures, plan) if plan else (),
         problems=tuple(problems),
     )
 

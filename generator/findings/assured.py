@@ -7,12 +7,13 @@ from dataclasses import replace
 from fractions import Fraction
 from typing import TYPE_CHECKING
 
+from generator.findings.ask import Asking, ask_nothing
 from generator.findings.conformity import UncertainRow, is_mirror
-from generator.findings.house import Offer, best_within
+from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import Measure
 from generator.findings.model import OrderModel
 from generator.findings.programs import ONE, ZERO, capped_upper, share_program, share_rows
-from generator.findings.recipes import named_shares, recipe_of
+from generator.findings.recipes import Best, named_shares, recipe_of
 from generator.findings.records import Recipe
 from generator.findings.uncertainty import RowError
 from generator.findings.values import Table
@@ -27,24 +28,28 @@ if TYPE_CHECKING:
 UNKNOWN_COST = 100
 
 
-def assured(
+def ask_assured(
     model: OrderModel,
     table: Table,
     measures: Mapping[str, Measure],
     rows: Sequence[UncertainRow],
     confidence: Fraction,
-) -> Recipe | None:
+    cheapest: Best,
+) -> Asking[Recipe | None]:
     """Least cost with each uncertain limit at ``confidence``, the others on values; None without uncertain ones.
 
-    Where that can't be had: the greatest confidence that can, said in the recipe's remark.
+    ``cheapest``: the cheapest shares on values alone.  Where the confidence can't be had: the greatest that
+    can, said in the recipe's remark.
     """
     if not rows:
         return None
     chances = _chances(model, rows, float(confidence))
-    held = best_within(model, lambda branch: _held(branch, rows, chances, float(confidence)))
+    held = yield from ask_best_within(
+        model, lambda branch: ask_nothing(_held(branch, rows, chances, float(confidence), cheapest))
+    )
     if held is not None:
         return recipe_of(model, table, measures, named_shares(model, held.answer))
-    found = best_within(model, lambda branch: _surest(branch, rows, chances))
+    found = yield from ask_best_within(model, lambda branch: ask_nothing(_surest(branch, rows, chances)))
     if found is None:
         return None
     best = found.answer
@@ -56,11 +61,13 @@ def assured(
 
 
 def _held(
-    branch: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance], confidence: float
+    branch: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance], confidence: float, cheapest: Best
 ) -> Offer[Vector] | None:
     from generator.geometry.cone import assured as least_cost
 
-    held = least_cost(_certain_program(branch, rows), chances, confidence)
+    is_known = branch is cheapest.branch and all(cost is not None for cost in branch.cost)
+    plain = cheapest.staged.x if is_known else None
+    held = least_cost(_certain_program(branch, rows), chances, confidence, plain=plain)
     if held.x is None or held.value is None:
         return None
     return Offer(held.x, (held.value,), held.x)

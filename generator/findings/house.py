@@ -13,6 +13,7 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Generic, TypeVar
 
+from generator.findings.ask import Asking
 from generator.findings.house_rules import Rules
 from generator.findings.model import OrderModel
 from generator.findings.programs import ONE, ZERO
@@ -75,10 +76,13 @@ class Offer(Generic[T]):
     answer: T
 
 
-def best_within(
-    model: OrderModel, solve: Callable[[OrderModel], Offer[T] | None], rules: Rules | None = None
-) -> Found[T] | None:
-    """The best answer within the rules; None if there is none.  UndecidedError past MOST_BRANCHES."""
+def ask_best_within(
+    model: OrderModel, ask: Callable[[OrderModel], Asking[Offer[T] | None]], rules: Rules | None = None
+) -> Asking[Found[T] | None]:
+    """The best answer within the rules, where ``ask`` gives that of one branch; None if there is none.
+
+    UndecidedError past MOST_BRANCHES.
+    """
     rules = rules or model.rules
     best: tuple[Offer[T], Branch] | None = None
     waiting = [Branch(model)]
@@ -86,7 +90,7 @@ def best_within(
         if not waiting:
             break
         branch = waiting.pop()
-        offer = None if branch.is_empty else solve(branch.model)
+        offer = None if branch.path and branch.is_empty else (yield from ask(branch.model))
         if offer is None or (best is not None and offer.key >= best[0].key):
             continue
         children = split(branch, rules, offer.shares)
@@ -99,15 +103,17 @@ def best_within(
     return None if best is None else Found(best[0].answer, best[1])
 
 
-def closed_branches(model: OrderModel, solve: Callable[[OrderModel], Offer[T] | None]) -> list[Branch]:
-    """Every branch on which ``solve`` finds nothing, where it finds nothing on any: they exhaust the rules."""
+def ask_closed_branches(
+    model: OrderModel, ask: Callable[[OrderModel], Asking[Offer[T] | None]]
+) -> Asking[list[Branch]]:
+    """Every branch on which ``ask`` finds nothing, where it finds nothing on any: they exhaust the rules."""
     closed: list[Branch] = []
     waiting = [Branch(model)]
     for _ in range(MOST_BRANCHES):
         if not waiting:
             return closed
         branch = waiting.pop()
-        offer = None if branch.is_empty else solve(branch.model)
+        offer = None if branch.path and branch.is_empty else (yield from ask(branch.model))
         children = split(branch, model.rules, offer.shares) if offer else []
         if offer is None:
             closed.append(branch)

@@ -5,12 +5,13 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from fractions import Fraction
 
+from generator.findings.ask import Asking, ask_all_best
 from generator.findings.house_rules import is_kept
-from generator.findings.measures import Measure, excess, reports, stated
+from generator.findings.measures import Measure, stated_forms
 from generator.findings.records import LotFinding, OrderFinding
 from generator.findings.values import Table, typed_values
-from generator.geometry.decide import decide_many
-from generator.geometry.program import Infeasible, Optimum, Program
+from generator.geometry.asked import Point
+from generator.geometry.program import Program
 from generator.intake.records import Campaign, Component, Lot
 
 ONE = Fraction(1)
@@ -29,12 +30,17 @@ def limited_components(campaign: Campaign, measures: Mapping[str, Measure]) -> t
     return tuple(component.name for component in campaign.components if component.name in needed)
 
 
+def ask_roles(
+    campaign: Campaign, table: Table, measures: Mapping[str, Measure]
+) -> Asking[list[Mapping[str, Fraction] | None]]:
+    """For each lot, over the components that some order limits, the shares of others that imitate it, or None."""
+    return (yield from _ask_roles(campaign, table, [measures[name] for name in limited_components(campaign, measures)]))
+
+
 def lot_findings(
-    campaign: Campaign, table: Table, measures: Mapping[str, Measure], orders: Sequence[OrderFinding]
+    campaign: Campaign, roles: Sequence[Mapping[str, Fraction] | None], orders: Sequence[OrderFinding]
 ) -> tuple[LotFinding, ...]:
-    """Role, imitation and use of every lot, in file order."""
-    over = limited_components(campaign, measures)
-    roles = _roles(campaign, table, [measures[name] for name in over])
+    """Role, imitation and use of every lot, in file order; ``roles`` as :func:`ask_roles` gives them."""
     components = {component.name: component for component in campaign.components}
     return tuple(
         _finding(campaign, lot, components, roles[position], orders) for position, lot in enumerate(campaign.lots)
@@ -71,17 +77,17 @@ def _finding(
     )
 
 
-def _roles(campaign: Campaign, table: Table, over: Sequence[Measure]) -> list[Mapping[str, Fraction] | None]:
+def _ask_roles(
+    campaign: Campaign, table: Table, over: Sequence[Measure]
+) -> Asking[list[Mapping[str, Fraction] | None]]:
     """For each lot the shares of others that imitate it, or None for a corner.
 
     An inner lot is one for whose exact values an order is reachable from the others; of equal lots the
     first in the file is the corner.  A lot that reports only some components is asked about these.
     """
-    reported = [
-        tuple(measure for measure in over if reports(measure, table, lot) is None) for lot in range(len(campaign.lots))
-    ]
+    forms = {measure.name: stated_forms(measure, table) for measure in over}
     values = [
-        {m.name: stated(m.numerator, table, lot) / stated(m.denominator, table, lot) for m in reported[lot]}
+        {name: form[0] / form[1] for name, own in forms.items() if (form := own[lot]) is not None}
         for lot in range(len(campaign.lots))
     ]
     asked: list[int] = []
@@ -100,13 +106,13 @@ def _roles(campaign: Campaign, table: Table, over: Sequence[Measure]) -> list[Ma
         if others:
             asked.append(lot)
             others_of[lot] = others
-            programs.append(_imitation_program(reported[lot], own, table, others))
+            programs.append(_imitation_program(own, forms, others))
     roles: list[Mapping[str, Fraction] | None] = [None] * len(campaign.lots)
-    for lot, answer in zip(asked, decide_many(programs), strict=True):
-        if isinstance(answer, Infeasible):
+    for lot, found in zip(asked, (yield from ask_all_best(programs)), strict=True):
+        if found is None:
             continue
-        assert isinstance(answer, Optimum), "shares are bounded"
-        roles[lot] = {campaign.lots[other].name: x for other, x in zip(others_of[lot], answer.x, strict=True) if x}
+        assert isinstance(found, Point), "shares are bounded"
+        roles[lot] = {campaign.lots[other].name: x for other, x in zip(others_of[lot], found.x, strict=True) if x}
     return roles
 
 
@@ -115,11 +121,12 @@ def _is_later_twin(lot: int, other: int, own: Mapping[str, Fraction], its: Mappi
 
 
 def _imitation_program(
-    over: Sequence[Measure], own: Mapping[str, Fraction], table: Table, others: Sequence[int]
+    own: Mapping[str, Fraction], forms: Mapping[str, Sequence[tuple[Fraction, Fraction] | None]], others: Sequence[int]
 ) -> Program:
-    rows = tuple(
-        tuple(excess(measure, own[measure.name], "exact", table, other) for other in others) for measure in over
-    )
+    rows = []
+    for name, value in own.items():
+        known = [form for other in others if (form := forms[name][other]) is not None]
+        rows.append(tuple(above - value * below for above, below in known))
     bounds = (*((ZERO,) * len(rows)), ONE)
     n = len(others)
     return Program(

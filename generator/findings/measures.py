@@ -9,8 +9,10 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 
 from generator.findings.rules import OutsideDomain, Rule, rule_named
+from generator.findings.same import Same
 from generator.findings.values import AMOUNT, Table
 from generator.intake.records import Campaign, Component, Derived, Group, LinearForm, Quantity
 
@@ -148,6 +150,21 @@ def excess(measure: Measure, bound: Fraction, side: str, table: Table, lot: int)
     return total
 
 
+def stated_forms(measure: Measure, table: Table) -> tuple[tuple[Fraction, Fraction] | None, ...]:
+    """(numerator, denominator) at every lot of the campaign, on stated values; None where it lacks something."""
+    return _stated_forms(Same(measure), Same(table))
+
+
+@lru_cache(maxsize=512)
+def _stated_forms(measure: Same[Measure], table: Same[Table]) -> tuple[tuple[Fraction, Fraction] | None, ...]:
+    forms, own = (measure.value.numerator, measure.value.denominator), table.value
+    lots = range(len(own.carriers[AMOUNT]))
+    return tuple(
+        (stated(forms[0], own, lot), stated(forms[1], own, lot)) if reports(measure.value, own, lot) is None else None
+        for lot in lots
+    )
+
+
 def _carrier(table: Table, basis: str, lot: int) -> Fraction:
     carrier = table.carriers[basis][lot]
     assert carrier is not None, "usable lots have the carriers that their limits need"
@@ -157,10 +174,12 @@ def _carrier(table: Table, basis: str, lot: int) -> Fraction:
 def blend_value(measure: Measure, table: Table, lots: Sequence[int], shares: Mapping[int, Fraction]) -> Fraction | None:
     """The blend's value in the quantity's own unit; None where it has none (no denominator, no data)."""
     used = [lot for lot in lots if shares.get(lot)]
-    if any(reports(measure, table, lot) is not None for lot in used):
+    forms = stated_forms(measure, table)
+    known = [(form, shares[lot]) for lot in used if (form := forms[lot]) is not None]
+    if len(known) < len(used):
         return None
-    below = sum((stated(measure.denominator, table, lot) * shares[lot] for lot in used), ZERO)
-    above = sum((stated(measure.numerator, table, lot) * shares[lot] for lot in used), ZERO)
+    below = sum((form[1] * share for form, share in known), ZERO)
+    above = sum((form[0] * share for form, share in known), ZERO)
     return None if below == 0 else own_value(measure.rule, above / below)
 
 

@@ -9,10 +9,9 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
-from typing import TypeVar
 
 from generator.findings.house_rules import Rules, holds_both, rules_of
-from generator.findings.measures import Measure, excess, reports, stated
+from generator.findings.measures import Measure, excess, reports, stated, stated_forms
 from generator.findings.records import Side
 from generator.findings.rules import OutsideDomain
 from generator.findings.values import Table
@@ -20,7 +19,6 @@ from generator.intake.patterns import matches
 from generator.intake.records import Campaign, Limit, Lot, Order
 from generator.problems import Problem
 
-T = TypeVar("T")
 ZERO = Fraction(0)
 HUNDRED = Fraction(100)
 
@@ -105,6 +103,7 @@ def model_of(
     problems = _problems(order, lots, limits, measures, table, usable)
     if problems:
         return problems
+    forms = {name: _Forms.of(measures[name], table, usable) for name in limits}
     return OrderModel(
         order=order,
         lots=tuple(usable),
@@ -115,39 +114,21 @@ def model_of(
         cost=tuple(lot.cost.value if lot.cost else None for lot in lots),
         limits=limits,
         measures=measures,
-        rows=tuple(row for name in limits for row in _rows(measures[name], limits[name], bounds[name], table, usable)),
-        numerators={name: tuple(stated(measures[name].numerator, table, lot) for lot in usable) for name in limits},
-        denominators={name: tuple(stated(measures[name].denominator, table, lot) for lot in usable) for name in limits},
+        rows=tuple(row for name in limits for row in _rows(limits[name], bounds[name], forms[name])),
+        numerators={name: own.above for name, own in forms.items()},
+        denominators={name: own.below for name, own in forms.items()},
         left_out=left_out,
         rules=rules_of(campaign, lots),
     )
 
 
 def without_lot(model: OrderModel, name: str) -> OrderModel | None:
-    """The same order without one of its lots; None where its share bounds then admit no shares."""
+    """The same order with one of its lots held at a share of 0; None where that leaves no shares."""
     gone = model.names.index(name)
-    kept = [i for i in range(len(model.lots)) if i != gone]
-
-    def cut(values: Sequence[T]) -> tuple[T, ...]:
-        return tuple(values[i] for i in kept)
-
-    upper = cut(model.upper)
+    lower = (*model.lower[:gone], ZERO, *model.lower[gone + 1 :])
+    upper = (*model.upper[:gone], ZERO, *model.upper[gone + 1 :])
     tops = sum((Fraction(1) if top is None else top for top in upper), ZERO)
-    if tops < 1:
-        return None
-    return replace(
-        model,
-        lots=cut(model.lots),
-        names=cut(model.names),
-        lower=cut(model.lower),
-        upper=upper,
-        stock=cut(model.stock),
-        cost=cut(model.cost),
-        rows=tuple(replace(row, terms=cut(row.terms), base=cut(row.base)) for row in model.rows),
-        numerators={limit: cut(values) for limit, values in model.numerators.items()},
-        denominators={limit: cut(values) for limit, values in model.denominators.items()},
-        rules=model.rules.without_lot(gone),
-    )
+    return None if tops < 1 else replace(model, lower=lower, upper=upper)
 
 
 def _limits(campaign: Campaign, order: Order, measures: Mapping[str, Measure]) -> dict[str, Limit]:
@@ -193,6 +174,8 @@ def _excluded(campaign: Campaign, order: Order, lot: Lot, limits: Mapping[str, L
 
 def _lacking(limits: Mapping[str, Limit], measures: Mapping[str, Measure], table: Table, lot: int) -> str | None:
     for name in limits:
+        if stated_forms(measures[name], table)[lot] is not None:
+            continue
         missing = reports(measures[name], table, lot)
         if missing is not None:
             return f"{missing} not reported"
@@ -226,11 +209,48 @@ def _index_bounds(measure: Measure, limit: Limit) -> tuple[Fraction | None, Frac
     return (high, low) if measure.rule.decreases else (low, high)
 
 
-def _rows(
-    measure: Measure, limit: Limit, bounds: tuple[Fraction | None, Fraction | None], table: Table, lots: Sequence[int]
-) -> list[Row]:
+@dataclass(frozen=True, slots=True)
+class _Forms:
+    """A limited quantity over the usable lots: stated numerators and denominators, and whether every value
+    counts as stated, whichever side of a limit it stands on."""
+
+    measure: Measure
+    table: Table
+    lots: Sequence[int]
+    above: tuple[Fraction, ...]
+    below: tuple[Fraction, ...]
+    is_plain: bool
+
+    @staticmethod
+    def of(measure: Measure, table: Table, lots: Sequence[int]) -> _Forms:
+        values = [table.values[name][lot] for name in measure.needs() for lot in lots]
+        forms = stated_forms(measure, table)
+        known = [form for lot in lots if (form := forms[lot]) is not None]
+        assert len(known) == len(lots), "usable lots report what their limits need"
+        return _Forms(
+            measure,
+            table,
+            lots,
+            tuple(above for above, _ in known),
+            tuple(below for _, below in known),
+            all(value is None or value.least == value.stated == value.most for value in values),
+        )
+
+    def row(self, side: Side, bound: Fraction, typed: Fraction) -> Row:
+        """The row of one side."""
+        sign = -1 if side == "low" else 1
+        if self.is_plain or side == "exact":
+            terms = tuple(sign * (n - bound * d) for n, d in zip(self.above, self.below, strict=True))
+            return Row(self.measure.name, side, bound, typed, terms, self.below)
+        terms = tuple(excess(self.measure, bound, side, self.table, lot) for lot in self.lots)
+        further = (excess(self.measure, bound + 1, side, self.table, lot) for lot in self.lots)
+        base = tuple(-sign * (more - term) for more, term in zip(further, terms, strict=True))
+        return Row(self.measure.name, side, bound, typed, terms, base)
+
+
+def _rows(limit: Limit, bounds: tuple[Fraction | None, Fraction | None], forms: _Forms) -> list[Row]:
     low, high = bounds
-    typed_low, typed_high = (limit.high, limit.low) if measure.rule.decreases else (limit.low, limit.high)
+    typed_low, typed_high = (limit.high, limit.low) if forms.measure.rule.decreases else (limit.low, limit.high)
     sides: list[tuple[Side, Fraction, Fraction | None]] = []
     if low is not None and low == high:
         sides.append(("exact", low, typed_low))
@@ -239,15 +259,7 @@ def _rows(
             sides.append(("low", low, typed_low))
         if high is not None:
             sides.append(("high", high, typed_high))
-    return [_row(measure, side, bound, bound if typed is None else typed, table, lots) for side, bound, typed in sides]
-
-
-def _row(measure: Measure, side: Side, bound: Fraction, typed: Fraction, table: Table, lots: Sequence[int]) -> Row:
-    terms = tuple(excess(measure, bound, side, table, lot) for lot in lots)
-    sign = 1 if side == "low" else -1
-    further = (excess(measure, bound + 1, side, table, lot) for lot in lots)
-    base = tuple(sign * (more - term) for more, term in zip(further, terms, strict=True))
-    return Row(measure.name, side, bound, typed, terms, base)
+    return [forms.row(side, bound, bound if typed is None else typed) for side, bound, typed in sides]
 
 
 def _problems(

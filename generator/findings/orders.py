@@ -6,25 +6,34 @@ from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
-from generator.findings.assured import assured
-from generator.findings.conformity import conformity_of, uncertain_rows
+from generator.findings.ask import Asking, answered, ask_all_best, ask_nothing, both, together
+from generator.findings.assured import ask_assured
+from generator.findings.conformity import conformities_of, uncertain_rows
 from generator.findings.house import UndecidedError
 from generator.findings.measures import Measure
 from generator.findings.model import OrderModel, model_of, without_lot
 from generator.findings.programs import ONE, ZERO, amount_rows, share_bound_rows
-from generator.findings.ranges import limit_findings
-from generator.findings.recipes import cheapest, cheapest_shares, closest, fewest, roomiest
+from generator.findings.ranges import ask_limit_findings
+from generator.findings.recipes import (
+    Best,
+    LeastCost,
+    ask_cheapest,
+    ask_closest,
+    ask_fewest,
+    ask_least_cost,
+    ask_roomiest,
+)
 from generator.findings.records import CurvePoint, OrderFinding, Proof, Recipe, RecipeProof, Verdict
-from generator.findings.room import Room, Scales, allowed, room_of, scales_of
+from generator.findings.room import Room, Scales, allowed, ask_room, scales_of
 from generator.findings.sentences import answer_sentence
-from generator.findings.tradeoff import curve
+from generator.findings.tradeoff import ask_curve
 from generator.findings.uncertainty import Uncertainty
 from generator.findings.values import Table
-from generator.findings.verdicts import Judgement, judge
-from generator.findings.ways_out import can_be_met_at_all, nearest_blend, wanted_lots
-from generator.findings.worth import has_all_costs, lot_prices, worths
-from generator.geometry.decide import decide
-from generator.geometry.program import Optimum, Program
+from generator.findings.verdicts import Judgement, ask_face, ask_judgement, ask_verdict
+from generator.findings.ways_out import ask_can_be_met_at_all, ask_nearest_blend, ask_wanted_lots
+from generator.findings.worth import ask_lot_prices, ask_worths, has_all_costs
+from generator.geometry.asked import Point
+from generator.geometry.program import Program
 from generator.intake.records import Campaign, Order
 from generator.problems import Problem
 
@@ -42,26 +51,31 @@ class Desk:
     uncertainty: Uncertainty
 
 
-def order_finding(desk: Desk, order: Order, problems: list[Problem]) -> OrderFinding:
-    """Everything known of one order; its own problems are added to ``problems``."""
+@dataclass(frozen=True, slots=True)
+class Reported:
+    """What is known of one order, and its own problems."""
+
+    finding: OrderFinding
+    problems: tuple[Problem, ...] = ()
+
+
+def ask_order(desk: Desk, order: Order) -> Asking[Reported]:
+    """Everything known of one order."""
     model = model_of(desk.campaign, order, desk.table, desk.measures)
     if not isinstance(model, OrderModel):
-        problems.extend(model)
-        return _without_verdict(order, model[0])
-    vanishing = _vanishing(model)
+        return Reported(_without_verdict(order, model[0]), model)
+    vanishing = yield from _ask_vanishing(model)
     if vanishing is not None:
-        problems.append(vanishing)
-        return _without_verdict(order, vanishing)
+        return Reported(_without_verdict(order, vanishing), (vanishing,))
     try:
-        return _answered(desk, model)
+        return Reported((yield from _ask_answers(desk, model)))
     except UndecidedError as undecided:
         problem = _undecided(order, undecided)
-        problems.append(problem)
-        return _without_verdict(order, problem)
+        return Reported(_without_verdict(order, problem), (problem,))
 
 
-def _answered(desk: Desk, model: OrderModel) -> OrderFinding:
-    judgement = judge(model)
+def _ask_answers(desk: Desk, model: OrderModel) -> Asking[OrderFinding]:
+    judgement, limits = yield from both(ask_judgement(model), ask_limit_findings(model))
     greatest = judgement.greatest
     finding = replace(
         _blank(model.order),
@@ -69,77 +83,105 @@ def _answered(desk: Desk, model: OrderModel) -> OrderFinding:
         greatest_amount=_greatest_amount(judgement),
         greatest_recipe=None if greatest is None else {name: float(x) for name, x in greatest.shares.items()},
         runs_out=greatest.runs_out if greatest else (),
-        limits=limit_findings(model),
+        limits=limits,
         left_out=model.left_out,
     )
     scales = scales_of(model, {component.name: component for component in desk.campaign.components})
-    is_met = judgement.verdict in MET
-    room = room_of(model, scales, in_amount=is_met)
-    finding = replace(finding, room=None if room is None else float(room.t), room_unit=scales.unit if room else None)
-    finding = _met(desk, model, finding, scales, room) if is_met else finding
-    finding = _ways_out(desk, model, finding, scales) if judgement.verdict in LOST else finding
-    finding = _barred(desk, model, finding) if judgement.verdict == "barred" else finding
+    if judgement.verdict in MET:
+        finding = yield from _ask_met(desk, model, finding, scales)
+    else:
+        room = yield from ask_room(model, scales, in_amount=False)
+        finding = _with_room(finding, scales, room)
+    if judgement.verdict in LOST:
+        finding = yield from _ask_ways_out(desk, model, finding, scales)
+    if judgement.verdict == "barred":
+        finding = yield from _ask_barred(desk, model, finding)
     finding = replace(finding, proof=_proof(judgement, finding.recipes.get("cheapest")))
-    return replace(
-        finding, sentence=answer_sentence(desk.campaign, model, judgement, finding, _absurd(desk, model, judgement))
-    )
+    absurd = yield from _ask_absurd(desk, model, judgement)
+    return replace(finding, sentence=answer_sentence(desk.campaign, model, judgement, finding, absurd))
 
 
-def _met(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales, room: Room | None) -> OrderFinding:
+def _with_room(finding: OrderFinding, scales: Scales, room: Room | None) -> OrderFinding:
+    return replace(finding, room=None if room is None else float(room.t), room_unit=scales.unit if room else None)
+
+
+def _ask_met(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales) -> Asking[OrderFinding]:
     """The recipes of an order that is met, what room costs, and what changes are worth."""
-    recipes = {"cheapest": cheapest(model, desk.table, desk.measures)}
-    if room is not None:
-        recipes["roomiest"] = roomiest(model, desk.table, desk.measures, scales, room)
-    recipes["closest"] = closest(model, desk.table, desk.measures)
-    recipes["fewest"] = fewest(model, desk.table, desk.measures)
+    (cheapest, best), (room, closest) = yield from both(
+        ask_cheapest(model, desk.table, desk.measures),
+        both(ask_room(model, scales, in_amount=True), ask_closest(model, desk.table, desk.measures)),
+    )
+    (roomiest, fewest), without = yield from both(
+        both(
+            ask_nothing(None) if room is None else ask_roomiest(model, desk.table, desk.measures, scales, room),
+            ask_fewest(model, desk.table, desk.measures, cheapest),
+        ),
+        _ask_without_each(model, tuple(cheapest.exact)),
+    )
+    recipes = {"cheapest": cheapest, "roomiest": roomiest, "closest": closest, "fewest": fewest}
     uncertain = uncertain_rows(model, desk.table, desk.uncertainty)
-    held = assured(model, desk.table, desk.measures, uncertain, desk.campaign.settings.confidence)
-    if held is not None:
-        recipes["assured"] = held
-    recipes = {
-        name: replace(_with_room(model, scales, recipe), conformity=conformity_of(model, uncertain, recipe.exact))
-        for name, recipe in recipes.items()
-    }
-    finding = replace(finding, recipes=recipes)
-    without = {name: _without(desk, model, name) for name in recipes["cheapest"].exact}
+    confidence = desk.campaign.settings.confidence
+    recipes["assured"] = yield from ask_assured(model, desk.table, desk.measures, uncertain, confidence, best)
+    there = {name: recipe for name, recipe in recipes.items() if recipe is not None}
+    conformities = conformities_of(model, uncertain, [recipe.exact for recipe in there.values()])
     finding = replace(
-        finding,
+        _with_room(finding, scales, room),
+        recipes={
+            name: replace(recipe, room=_room_left(model, scales, recipe), conformity=conformity)
+            for (name, recipe), conformity in zip(there.items(), conformities, strict=True)
+        },
         without_lot={
             name: (verdict, None if cost is None else float(cost)) for name, (verdict, cost) in without.items()
         },
     )
     if not has_all_costs(model):
         return finding
-    # With house rules these are the winning branch's.
-    branch = cheapest_shares(model).branch
-    enters, stays = lot_prices(branch, recipes["cheapest"], {name: cost for name, (_, cost) in without.items()})
-    worth = worths(branch, recipes["cheapest"], scales.by_row)
+    costs_without = {name: cost for name, (_, cost) in without.items()}
+    return (yield from _ask_worth(model, finding, best, scales, room, costs_without))
+
+
+def _ask_worth(
+    model: OrderModel,
+    finding: OrderFinding,
+    best: Best,
+    scales: Scales,
+    room: Room | None,
+    costs_without: Mapping[str, Fraction | None],
+) -> Asking[OrderFinding]:
+    """Prices, what limits are worth and the curve; with house rules these are the winning branch's."""
+    recipe = finding.recipes["cheapest"]
+    (enters, stays), (worth, curve) = yield from both(
+        ask_lot_prices(best.branch, recipe, costs_without, best.staged.stages[0]),
+        both(
+            ask_worths(best.branch, recipe, scales.by_row, best.staged.stages[0]),
+            _ask_curve(model, scales, recipe, room),
+        ),
+    )
     limits = tuple(
         replace(limit, worth=float(worth[limit.on].saving), worth_holds=worth[limit.on].holds)
         if limit.on in worth
         else limit
         for limit in finding.limits
     )
-    return replace(
-        finding,
-        enters_at=enters,
-        stays_up_to=stays,
-        limits=limits,
-        curve=_curve(model, scales, recipes["cheapest"], room),
-    )
+    return replace(finding, enters_at=enters, stays_up_to=stays, limits=limits, curve=curve)
 
 
-def _barred(desk: Desk, model: OrderModel, finding: OrderFinding) -> OrderFinding:
+def _ask_barred(desk: Desk, model: OrderModel, finding: OrderFinding) -> Asking[OrderFinding]:
     """Which rules stand in the way, and what each, lifted alone, would allow (a fact, no advice)."""
     names = model.rules.names()
-    lifted = {}
-    for name in names:
-        freed = replace(model, rules=model.rules.without(name))
-        verdict = judge(freed).verdict
-        cost = cheapest(freed, desk.table, desk.measures).cost if verdict in MET else None
-        lifted[name] = (verdict, cost)
+    freed = [replace(model, rules=model.rules.without(name)) for name in names]
+    found = yield from together([_ask_lifted(desk, one) for one in freed])
+    lifted = dict(zip(names, found, strict=True))
     alone = tuple(name for name in names if lifted[name][0] not in LOST)
     return replace(finding, barred_by=alone or names, lifted=lifted)
+
+
+def _ask_lifted(desk: Desk, model: OrderModel) -> Asking[tuple[Verdict, float | None]]:
+    verdict = yield from ask_verdict(model)
+    if verdict not in MET:
+        return verdict, None
+    recipe, _ = yield from ask_cheapest(model, desk.table, desk.measures)
+    return verdict, recipe.cost
 
 
 def _undecided(order: Order, undecided: UndecidedError) -> Problem:
@@ -153,48 +195,56 @@ def _undecided(order: Order, undecided: UndecidedError) -> Problem:
     )
 
 
-def _with_room(model: OrderModel, scales: Scales, recipe: Recipe) -> Recipe:
+def _room_left(model: OrderModel, scales: Scales, recipe: Recipe) -> float | None:
     t = allowed(model, scales, [recipe.exact.get(name, ZERO) for name in model.names])
-    return replace(recipe, room=None if t is None else float(t))
+    return None if t is None else float(t)
 
 
-def _curve(model: OrderModel, scales: Scales, recipe: Recipe, room: Room | None) -> tuple[CurvePoint, ...]:
+def _ask_curve(model: OrderModel, scales: Scales, recipe: Recipe, room: Room | None) -> Asking[tuple[CurvePoint, ...]]:
     first = allowed(model, scales, [recipe.exact.get(name, ZERO) for name in model.names])
     if room is None or first is None:
         return ()
+    points = yield from ask_curve(model, scales, first, room.t)
     return tuple(
         CurvePoint(room=float(point.t), cost=float(point.cost), shares={name: float(x) for name, x in point.shares})
-        for point in curve(model, scales, first, room.t)
+        for point in points
     )
 
 
-def _without(desk: Desk, model: OrderModel, name: str) -> tuple[Verdict | None, Fraction | None]:
+Without = tuple[Verdict | None, Fraction | None]
+
+
+def _ask_without_each(model: OrderModel, names: tuple[str, ...]) -> Asking[dict[str, Without]]:
+    found = yield from together([_ask_without(model, name) for name in names])
+    return dict(zip(names, found, strict=True))
+
+
+def _ask_without(model: OrderModel, name: str) -> Asking[Without]:
     """Verdict and least cost of the order without one lot; no verdict where no lot is left to use."""
     rest = without_lot(model, name) if len(model.lots) > 1 else None
     if rest is None:
         return None, None
-    verdict = judge(rest).verdict
-    if verdict not in MET:
-        return verdict, None
-    recipe = cheapest(rest, desk.table, desk.measures)
-    known = all(rest.cost[rest.names.index(used)] is not None for used in recipe.exact)
-    if not known:
-        return verdict, None
-    costs = dict(zip(rest.names, rest.cost, strict=True))
-    return verdict, sum(((costs[used] or ZERO) * share for used, share in recipe.exact.items()), ZERO)
+    least: LeastCost | None = None
+    if any(cost is not None and top != 0 for cost, top in zip(rest.cost, rest.upper, strict=True)):
+        least = yield from ask_least_cost(rest)
+    if least is None:
+        return (yield from ask_verdict(rest)), None
+    return ("edge" if (yield from ask_face(rest)) else "makeable"), least.cost
 
 
-def _ways_out(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales) -> OrderFinding:
-    return replace(
-        finding,
-        nearest=nearest_blend(model, desk.table, desk.measures, scales),
-        wanted_lot=wanted_lots(desk.campaign, model, desk.table, desk.measures),
+def _ask_ways_out(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales) -> Asking[OrderFinding]:
+    nearest, wanted = yield from both(
+        ask_nearest_blend(model, desk.table, desk.measures, scales),
+        ask_wanted_lots(desk.campaign, model, desk.table, desk.measures),
     )
+    return replace(finding, nearest=nearest, wanted_lot=wanted)
 
 
-def _absurd(desk: Desk, model: OrderModel, judgement: Judgement) -> bool:
+def _ask_absurd(desk: Desk, model: OrderModel, judgement: Judgement) -> Asking[bool]:
     """Whether the limits are such that no material at all could meet them."""
-    return judgement.verdict == "unreachable" and not can_be_met_at_all(desk.campaign, model, desk.table, desk.measures)
+    if judgement.verdict != "unreachable":
+        return False
+    return not (yield from ask_can_be_met_at_all(desk.campaign, model, desk.table, desk.measures))
 
 
 def _greatest_amount(judgement: Judgement) -> float | None:
@@ -231,7 +281,7 @@ def _without_verdict(order: Order, problem: Problem) -> OrderFinding:
     return replace(_blank(order), sentence=f"No answer: {problem.message}.")
 
 
-def _vanishing(model: OrderModel) -> Problem | None:
+def _ask_vanishing(model: OrderModel) -> Asking[Problem | None]:
     """The problem of a ratio whose denominator can vanish in a blend within the limits."""
     rows = amount_rows(model)
     bounds = share_bound_rows(model)
@@ -248,8 +298,8 @@ def _vanishing(model: OrderModel) -> Problem | None:
             upper=(None,) * n,
             cost=below,
         )
-        answer = decide(program)
-        if isinstance(answer, Optimum) and answer.value == 0:
+        (best,) = yield from ask_all_best([program])
+        if isinstance(best, Point) and best.value == 0:
             place = model.order.limits[name].place if name in model.order.limits else None
             return Problem(
                 file=model.order.place.file,
@@ -261,3 +311,6 @@ def _vanishing(model: OrderModel) -> Problem | None:
                 severity="drops",
             )
     return None
+
+
+_vanishing = answered(_ask_vanishing)

@@ -130,7 +130,7 @@ def _block(order: Order, model: OrderModel, *, is_valued: bool) -> Block | Probl
                 row=order.place.row,
                 column="amount",
                 found=amount.text if amount else None,
-                message="the stock sets no bound to what this order could take at a gain, so it has no part in the plan",
+                message="nothing bounds what this order could take at a gain, so it has no part in the plan",
                 remedy="give the most that the order takes, or the stock of the lots",
                 severity="drops",
             )
@@ -139,13 +139,13 @@ def _block(order: Order, model: OrderModel, *, is_valued: bool) -> Block | Probl
 
 def _most(order: Order, model: OrderModel, *, is_valued: bool) -> Fraction | None:
     """The most that the stock makes of an order, house rules aside; None where more is always a gain."""
-    greatest = _best(model, tuple(-ONE for _ in model.lots))
+    greatest = best_of(model, tuple(-ONE for _ in model.lots))
     if isinstance(greatest, Optimum):
         return -greatest.value
     price = order.price.value if order.price else ZERO
     if not is_valued:
         return None
-    gain = _best(model, tuple((cost or ZERO) - price for cost in model.cost))
+    gain = best_of(model, tuple((cost or ZERO) - price for cost in model.cost))
     if not isinstance(gain, Optimum):
         return None
     typed = order.amount.low if order.amount and order.amount.low else ZERO
@@ -153,7 +153,8 @@ def _most(order: Order, model: OrderModel, *, is_valued: bool) -> Fraction | Non
     return FAR * (sum(gain.x, ZERO) + typed + stocked)
 
 
-def _best(model: OrderModel, cost: Vector) -> Optimum | Unbounded:
+def best_of(model: OrderModel, cost: Vector) -> Optimum | Unbounded:
+    """The least cost that the order's limits and the stock allow, its amount and the house rules aside."""
     rows = [(entry.terms, entry.low, entry.high) for entry in amount_rows(model).entries]
     rows += [(terms, None, ZERO) for _, terms in share_bound_rows(model)]
     answer = decide(

@@ -11,6 +11,7 @@ from dataclasses import dataclass
 from math import inf
 
 from generator.findings.plan_model import Block, PlanModel, Stage
+from generator.findings.programs import ZERO
 from generator.geometry.mixed import Mixed, SparseRow
 
 
@@ -31,13 +32,20 @@ class Part:
         return frozenset(range(self.n, len(self.upper)))
 
 
-def part_of(block: Block, *, counts_lots: bool = False) -> Part:
-    """The block in floats; ``counts_lots`` gives every lot a column that says whether it is used."""
+def part_of(block: Block, *, counts_lots: bool = False, caps_by_stock: bool = True) -> Part:
+    """The block in floats; ``counts_lots`` gives every lot a column that says whether it is used.
+
+    Without ``caps_by_stock`` only the shared stock rows, which come later, know of the stock.
+    """
     model, rules = block.model, block.model.rules
     n, scale = len(model.lots), float(block.most) or 1.0
-    tops = tuple(_top(block, i) for i in range(n))
+    tops = tuple(_top(block, i, caps_by_stock=caps_by_stock) for i in range(n))
     rows = [
-        SparseRow({i: float(a) for i, a in enumerate(terms) if a}, _low(low), _high(high))
+        SparseRow(
+            {i: float(a) for i, a in enumerate(terms) if a},
+            -inf if low is None else float(low),
+            inf if high is None else float(high),
+        )
         for terms, low, high in block.rows
     ]
     upper = list(tops)
@@ -70,19 +78,29 @@ def part_of(block: Block, *, counts_lots: bool = False) -> Part:
     return Part(scale=scale, n=n, upper=tuple(upper), rows=tuple(rows), accepted=accepted, used=used)
 
 
-def _top(block: Block, i: int) -> float:
+def _top(block: Block, i: int, *, caps_by_stock: bool) -> float:
     """The greatest amount of one lot, in units of the block's most."""
-    stock, share = block.model.stock[i], block.model.upper[i]
+    stock = block.model.stock[i] if caps_by_stock else None
+    share = block.model.upper[i]
     caps = [1.0, *([float(stock / block.most)] if stock is not None and block.most else [])]
     return min([*caps, *([float(share)] if share is not None else [])])
 
 
-def _low(bound: object) -> float:
-    return -inf if bound is None else float(bound)  # type: ignore[arg-type]
-
-
-def _high(bound: object) -> float:
-    return inf if bound is None else float(bound)  # type: ignore[arg-type]
+def rows_over(block: Block, place: Mapping[int, int]) -> list[SparseRow]:
+    """Limits, share bounds and least shares over chosen lots, all of them used; ``place`` gives their columns."""
+    sparse = [({i: terms[i] for i in place}, low, high) for terms, low, high in block.rows]
+    for i in place:
+        least = block.model.rules.least[i]
+        if least:
+            sparse.append(({j: least - (1 if j == i else 0) for j in place}, None, ZERO))
+    return [
+        SparseRow(
+            {place[i]: float(a) for i, a in terms.items() if a},
+            -inf if low is None else float(low),
+            inf if high is None else float(high),
+        )
+        for terms, low, high in sparse
+    ]
 
 
 def _amount_rows(block: Block, n: int, scale: float, accepted: int | None) -> list[SparseRow]:
@@ -168,15 +186,15 @@ def stage_costs(stage: Stage, parts: Sequence[Part]) -> tuple[list[dict[int, flo
 
 def joined(whole: Whole, by_part: Sequence[Mapping[int, float]]) -> dict[int, float]:
     """Terms by part and column as terms over all columns."""
-    return {
-        start + j: value
-        for start, terms in zip(whole.starts, by_part, strict=True)
-        for j, value in terms.items()
-    }
+    return {start + j: value for start, terms in zip(whole.starts, by_part, strict=True) for j, value in terms.items()}
 
 
 def program_of(
-    model: PlanModel, whole: Whole, cost: Mapping[int, float], more: Sequence[SparseRow] = (), closed: frozenset[int] = frozenset()
+    model: PlanModel,
+    whole: Whole,
+    cost: Mapping[int, float],
+    more: Sequence[SparseRow] = (),
+    closed: frozenset[int] = frozenset(),
 ) -> Mixed:
     """One program of all parts, the stock rows and ``more``; the parts in ``closed`` get nothing."""
     rows = []
@@ -184,9 +202,7 @@ def program_of(
         rows += [SparseRow({start + j: a for j, a in row.terms.items()}, row.low, row.high) for row in part.rows]
     rows += [SparseRow(joined(whole, uses), -inf, 1.0) for uses in stock_rows(model, whole.parts).values()]
     upper = [0.0 if k in closed else top for k, part in enumerate(whole.parts) for top in part.upper]
-    integral = {
-        start + j for start, part in zip(whole.starts, whole.parts, strict=True) for j in part.whole
-    }
+    integral = {start + j for start, part in zip(whole.starts, whole.parts, strict=True) for j in part.whole}
     return Mixed(
         cost=[cost.get(j, 0.0) for j in range(whole.width)],
         upper=upper,

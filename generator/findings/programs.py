@@ -6,11 +6,13 @@ carriers) share one program row with two bounds; :class:`Rows` remembers which i
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, replace
 from fractions import Fraction
+from functools import lru_cache
 
 from generator.findings.model import OrderModel, Row
+from generator.findings.same import Same
 from generator.geometry.program import Bound, Program, Vector
 
 ZERO = Fraction(0)
@@ -19,9 +21,10 @@ ONE = Fraction(1)
 
 @dataclass(frozen=True, slots=True)
 class ProgramRow:
-    """One program row; ``low_of`` and ``high_of`` are the positions of the model rows that its low and
-    high bound stand for (None where it has none; an exact row stands on both)."""
+    """One program row of the limit ``on``; ``low_of`` and ``high_of`` are the positions of the model rows that
+    its low and high bound stand for (None where it has none; an exact row stands on both)."""
 
+    on: str
     terms: Vector
     low: Bound
     high: Bound
@@ -46,36 +49,66 @@ class Rows:
             weights[position] = -y if entry.low_of == entry.high_of else abs(y)
         return weights
 
+    def without(self, name: str) -> Rows:
+        """All rows but those of one limit."""
+        return Rows(tuple(entry for entry in self.entries if entry.on != name))
 
-def share_rows(model: OrderModel, skip: str | None = None) -> Rows:
-    """The rows over shares that sum to 1; the limit on ``skip`` is left out."""
-    return _rows(model, skip, paired=True)
+    def tightened(self, by: Mapping[int, Fraction]) -> Rows:
+        """The rows with model row k at most −by[k] instead of 0; exact rows stay."""
+        if not any(by.values()):
+            return self
+        return Rows(
+            tuple(
+                entry
+                if entry.low_of == entry.high_of
+                else replace(
+                    entry,
+                    low=None if entry.low is None else entry.low + by.get(entry.low_of, ZERO),  # type: ignore[arg-type]
+                    high=None if entry.high is None else entry.high - by.get(entry.high_of, ZERO),  # type: ignore[arg-type]
+                )
+                for entry in self.entries
+            )
+        )
 
 
-def amount_rows(model: OrderModel, skip: str | None = None) -> Rows:
+def share_rows(model: OrderModel) -> Rows:
+    """The rows over shares that sum to 1."""
+    return _rows(Same(model.rows), paired=True)
+
+
+def amount_rows(model: OrderModel) -> Rows:
     """The rows over amounts of any sum: every side is a homogeneous row of its own."""
-    return _rows(model, skip, paired=False)
+    return _rows(Same(model.rows), paired=False)
 
 
-def _rows(model: OrderModel, skip: str | None, *, paired: bool) -> Rows:
+@lru_cache(maxsize=256)
+def _rows(same: Same[tuple[Row, ...]], *, paired: bool) -> Rows:
     entries: list[ProgramRow] = []
     lows: dict[str, tuple[int, Row]] = {}
-    for k, row in enumerate(model.rows):
-        if row.on == skip:
-            continue
+    for k, row in enumerate(same.value):
         if row.side == "exact":
-            entries.append(ProgramRow(row.terms, ZERO, ZERO, k, k))
+            entries.append(ProgramRow(row.on, row.terms, ZERO, ZERO, k, k))
             continue
         partner = lows.get(row.on) if paired and row.side == "high" else None
         width = _constant_sum(row, partner[1]) if partner else None
         if partner and width is not None:
             entries = [entry for entry in entries if entry.high_of != partner[0]]
-            entries.append(ProgramRow(row.terms, width, ZERO, partner[0], k))
+            entries.append(ProgramRow(row.on, row.terms, width, ZERO, partner[0], k))
         else:
-            entries.append(ProgramRow(row.terms, None, ZERO, None, k))
+            entries.append(ProgramRow(row.on, row.terms, None, ZERO, None, k))
         if row.side == "low":
             lows[row.on] = (k, row)
     return Rows(tuple(entries))
+
+
+def level_rows(model: OrderModel) -> tuple[bool, ...]:
+    """For each model row whether one unit more of its bound is the same for all lots: equal carriers."""
+    return _level(Same(model.rows))
+
+
+@lru_cache(maxsize=256)
+def _level(same: Same[tuple[Row, ...]]) -> tuple[bool, ...]:
+    return tuple(all(base == row.base[0] for base in row.base) for row in same.value)
 
 
 def _constant_sum(high: Row, low: Row) -> Fraction | None:
@@ -104,7 +137,7 @@ def share_program(
     padding = (ZERO,) * (width - n)
     return Program(
         rows=(
-            *((*entry.terms, *padding) for entry in rows.entries),
+            *((*entry.terms, *padding) if padding else entry.terms for entry in rows.entries),
             (*((ONE,) * n), *padding),
             *(vector for vector, _, _ in more),
         ),
@@ -118,10 +151,13 @@ def share_program(
 
 def capped_upper(model: OrderModel, amount: Fraction | None) -> tuple[Bound, ...]:
     """Upper share bounds with the stock in them: the lesser of max share and stock / amount."""
-    if not amount:
-        return model.upper
+    return _capped(Same(model.upper), Same(model.stock), amount) if amount else model.upper
+
+
+@lru_cache(maxsize=256)
+def _capped(uppers: Same[tuple[Bound, ...]], stocks: Same[tuple[Bound, ...]], amount: Fraction) -> tuple[Bound, ...]:
     capped = []
-    for bound, stock in zip(model.upper, model.stock, strict=True):
+    for bound, stock in zip(uppers.value, stocks.value, strict=True):
         most = [b for b in (bound, None if stock is None else stock / amount) if b is not None]
         capped.append(min(most) if most else None)
     return tuple(capped)

@@ -8,19 +8,23 @@ from __future__ import annotations
 
 from fractions import Fraction
 
+from generator.findings.ask import Asking, ask_all_best
 from generator.findings.measures import own_value
 from generator.findings.model import OrderModel
 from generator.findings.programs import ONE, ZERO, amount_rows, share_bound_rows, share_program, share_rows
 from generator.findings.records import LimitFinding, Range
-from generator.geometry.decide import decide_many
-from generator.geometry.program import Answer, Infeasible, Optimum, Program
+from generator.geometry.asked import Point
+from generator.geometry.program import Program, Unbounded
+
+#: One end of a range as it is answered: unbounded, or None where the other limits block.
+End = Point | Unbounded | None
 
 
-def limit_findings(model: OrderModel) -> tuple[LimitFinding, ...]:
+def ask_limit_findings(model: OrderModel) -> Asking[tuple[LimitFinding, ...]]:
     """Every limit of the order with its attainable range and the range of its lots."""
     names = list(model.limits)
     programs = [program for name in names for program in _programs(model, name)]
-    answers = decide_many(programs)
+    answers = yield from ask_all_best(programs)
     found = []
     for k, name in enumerate(names):
         limit = model.limits[name]
@@ -40,10 +44,10 @@ def _programs(model: OrderModel, name: str) -> tuple[Program, Program]:
     """Least and greatest index value of the quantity, both as least cost."""
     above, below = model.numerators[name], model.denominators[name]
     if len(set(below)) == 1 and below[0] > 0:
-        rows = share_rows(model, skip=name)
+        rows = share_rows(model).without(name)
         cost = tuple(value / below[0] for value in above)
         return share_program(model, rows, cost), share_program(model, rows, tuple(-c for c in cost))
-    rows = amount_rows(model, skip=name)
+    rows = amount_rows(model).without(name)
     bounds = share_bound_rows(model)
     programs = [
         Program(
@@ -59,11 +63,11 @@ def _programs(model: OrderModel, name: str) -> tuple[Program, Program]:
     return programs[0], programs[1]
 
 
-def _range(model: OrderModel, name: str, least: Answer, greatest: Answer) -> Range | None:
-    if isinstance(least, Infeasible) or isinstance(greatest, Infeasible):
+def _range(model: OrderModel, name: str, least: End, greatest: End) -> Range | None:
+    if least is None or greatest is None:
         return None
-    low = _own(model, name, least.value) if isinstance(least, Optimum) else None
-    high = _own(model, name, -greatest.value) if isinstance(greatest, Optimum) else None
+    low = _own(model, name, least.value) if isinstance(least, Point) else None
+    high = _own(model, name, -greatest.value) if isinstance(greatest, Point) else None
     return (high, low) if model.measures[name].rule.decreases else (low, high)
 
 

@@ -10,9 +10,11 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from functools import lru_cache
 
+from generator.findings.ask import Asking, answered, ask_best, ask_proven
 from generator.findings.fewest import fewest_lots
-from generator.findings.house import Offer, best_within
+from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import Measure, blend_value
 from generator.findings.model import OrderModel
 from generator.findings.programs import (
@@ -26,11 +28,12 @@ from generator.findings.programs import (
     share_rows,
 )
 from generator.findings.records import CostBound, Recipe
-from generator.findings.room import Room, Scales, tightened
+from generator.findings.room import Room, Scales, is_linear, tight_rows, tightened
 from generator.findings.values import Table
 from generator.findings.verdicts import multipliers_of
-from generator.geometry.decide import decide
+from generator.geometry.asked import Point
 from generator.geometry.elimination import cleared, independent_rows
+from generator.geometry.integral import integral
 from generator.geometry.program import Bound, Optimum, Program, Vector
 from generator.intake.records import Limit
 
@@ -53,22 +56,58 @@ class Best:
     is_whole: bool
 
 
-def cheapest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Recipe:
+@dataclass(frozen=True, slots=True)
+class LeastCost:
+    """The least cost per unit of amount; None where a lot of unknown cost is needed."""
+
+    cost: Fraction | None
+
+
+def ask_cheapest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Asking[tuple[Recipe, Best]]:
     """The cheapest recipe in the order's amount; where no cost at all is known, the closest one.
 
     ValueError if no shares meet the limits and the house rules in that amount.
     """
     if all(cost is None for cost in model.cost):
-        return closest(model, table, measures)
-    best = cheapest_shares(model)
+        best = yield from _ask_closest_shares(model)
+        return recipe_of(model, table, measures, named_shares(model, best.staged.x)), best
+    best = yield from ask_cheapest_shares(model)
     has_bound = best.is_whole and all(cost is not None for cost in model.cost)
     bound = _cost_bound(model, share_rows(model), best.staged.stages[0]) if has_bound else None
-    return recipe_of(model, table, measures, named_shares(model, best.staged.x), bound)
+    return recipe_of(model, table, measures, named_shares(model, best.staged.x), bound), best
 
 
-def cheapest_shares(model: OrderModel) -> Best:
-    """Least share of lots of unknown cost, then least cost; ValueError if there are none."""
-    return best_shares(model, _costs_in_turn(model))
+def ask_cheapest_shares(model: OrderModel, rows: Rows | None = None) -> Asking[Best]:
+    """Least share of lots of unknown cost, then least cost; ValueError if there are none.
+
+    ``rows`` instead of the model's own: the same limits moved.
+    """
+    return (yield from ask_best_shares(model, _costs_in_turn(model), rows=rows))
+
+
+cheapest_shares = answered(ask_cheapest_shares)
+
+
+def ask_least_cost(model: OrderModel) -> Asking[LeastCost | None]:
+    """What the cheapest recipe costs; None where no shares meet the limits and rules in the amount."""
+    if any(cost is None for cost in model.cost):
+        try:
+            best = yield from ask_cheapest_shares(model)
+        except ValueError:
+            return None
+        used = [(cost, x) for cost, x in zip(model.cost, best.staged.x, strict=False) if x]
+        if any(cost is None for cost, _ in used):
+            return LeastCost(None)
+        return LeastCost(sum(((cost or ZERO) * x for cost, x in used), ZERO))
+    costs = tuple(cost or ZERO for cost in model.cost)
+
+    def ask(branch: OrderModel) -> Asking[Offer[Fraction] | None]:
+        program = share_program(branch, share_rows(branch), costs, upper=capped_upper(branch, branch.amount))
+        best = yield from ask_best(program)
+        return Offer(best.x, (best.value,), best.value) if isinstance(best, Point) else None
+
+    found = yield from ask_best_within(model, ask)
+    return None if found is None else LeastCost(found.answer)
 
 
 def _costs_in_turn(model: OrderModel) -> list[Vector]:
@@ -77,13 +116,18 @@ def _costs_in_turn(model: OrderModel) -> list[Vector]:
     return [unknown, known] if any(unknown) else [known]
 
 
-def closest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Recipe:
+def ask_closest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Asking[Recipe]:
     """The recipe nearest the aims, else the middles of the windows.
 
     Least Σ |value − aim| / scale over the limits that have an aim or two sides, each difference taken
     in its row (N − aim·D, over the mean denominator); the scale is half the window, or 1 % of the
     aim where that is 0, or 1.
     """
+    best = yield from _ask_closest_shares(model)
+    return recipe_of(model, table, measures, named_shares(model, best.staged.x))
+
+
+def _ask_closest_shares(model: OrderModel) -> Asking[Best]:
     n = len(model.lots)
     extra: list[tuple[Vector, Bound, Bound]] = []
     aims = [(name, aim) for name, limit in model.limits.items() if (aim := _aim(model, name, limit)) is not None]
@@ -96,31 +140,45 @@ def closest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) ->
         row[n + 2 * k], row[n + 2 * k + 1] = -ONE, ONE
         extra.append((tuple(row), ZERO, ZERO))
     distance = (*((ZERO,) * n), *((ONE,) * (width - n)))
-    best = best_shares(model, [distance], extra=extra, width=width)
-    return recipe_of(model, table, measures, named_shares(model, best.staged.x))
+    return (yield from ask_best_shares(model, [distance], extra=extra, width=width))
 
 
-def roomiest(model: OrderModel, table: Table, measures: Mapping[str, Measure], scales: Scales, room: Room) -> Recipe:
+def ask_roomiest(
+    model: OrderModel, table: Table, measures: Mapping[str, Measure], scales: Scales, room: Room
+) -> Asking[Recipe]:
     """The cheapest recipe among those with the greatest room."""
-    moved = tightened(model, scales, room.t)
-    assert moved is not None, "the greatest room is inside every rule's domain"
+    if room.is_only:
+        return recipe_of(model, table, measures, named_shares(model, room.shares))
     try:
-        best = cheapest_shares(moved)
+        best = yield from ask_shares_at(model, scales, room.t)
     except ValueError:
         # A blend rule rounds its indices to 15 digits: the last one can cost these shares their place.
         return recipe_of(model, table, measures, named_shares(model, room.shares))
     return recipe_of(model, table, measures, named_shares(model, best.staged.x))
 
 
-def fewest(model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> Recipe:
-    """The cheapest recipe among those of the fewest lots."""
-    support = fewest_lots(model)
+def ask_shares_at(model: OrderModel, scales: Scales, t: Fraction) -> Asking[Best]:
+    """The cheapest shares at room t; ValueError if there are none."""
+    if is_linear(model):
+        return (yield from ask_cheapest_shares(model, tight_rows(model, scales, t)))
+    moved = tightened(model, scales, t)
+    if moved is None:
+        raise ValueError(f"room {t} is outside the domain of a blend rule")
+    return (yield from ask_cheapest_shares(moved))
+
+
+def ask_fewest(model: OrderModel, table: Table, measures: Mapping[str, Measure], cheapest: Recipe) -> Asking[Recipe]:
+    """The cheapest recipe among those of the fewest lots: the cheapest of all where it takes no more."""
+    has_costs = any(cost is not None for cost in model.cost)
+    support = fewest_lots(model, len(cheapest.exact) - has_costs)
+    if support is None:
+        return replace(cheapest, bound=None)
     upper = tuple(top if i in support else ZERO for i, top in enumerate(model.upper))
     try:
-        best = cheapest_shares(replace(model, upper=upper))
+        best = yield from ask_cheapest_shares(replace(model, upper=upper))
     except ValueError:
         # The search is in floats: what it found a hair outside the limits does not count.
-        best = cheapest_shares(model)
+        return replace(cheapest, bound=None)
     return recipe_of(model, table, measures, named_shares(model, best.staged.x))
 
 
@@ -149,44 +207,52 @@ def named_shares(model: OrderModel, x: Sequence[Fraction]) -> dict[str, Fraction
     return {name: share for name, share in zip(model.names, x, strict=False) if share}
 
 
-def best_shares(
+def ask_best_shares(
     model: OrderModel,
     objectives: Sequence[Vector],
     *,
+    rows: Rows | None = None,
     extra: Sequence[tuple[Vector, Bound, Bound]] = (),
     width: int | None = None,
-) -> Best:
+) -> Asking[Best]:
     """Shares in the order's amount, within the house rules, best by each objective in turn.
 
     Ties by file order.  ``width`` columns in all: those beyond the lots are ≥ 0 and stand in ``extra``
-    rows only.  ValueError if no shares meet the limits and rules in that amount.
+    rows only; ``rows`` stand for the model's own.  ValueError if no shares meet the limits and rules in
+    that amount.
     """
     n = len(model.lots)
     more = (width or n) - n
-    rows = share_rows(model)
+    rows = rows or share_rows(model)
     positions = tuple(Fraction(i) for i in range(n))
-    one_by_one = [tuple(ONE if j == i else ZERO for j in range(n)) for i in reversed(range(n))]
-    every = [*objectives, positions, *one_by_one]
+    every = [*objectives, positions, *_one_by_one(n)]
 
-    def solve(branch: OrderModel) -> Offer[Staged] | None:
+    def ask(branch: OrderModel) -> Asking[Offer[Staged] | None]:
         upper = (*capped_upper(branch, branch.amount), *((None,) * more))
-        staged = lexicographic(share_program(branch, rows, (ZERO,) * (n + more), upper=upper, extra=extra), every)
+        program = share_program(branch, rows, (ZERO,) * (n + more), upper=upper, extra=extra)
+        staged = yield from ask_lexicographic(program, every)
         if staged is None:
             return None
-        key = tuple(_dot(objective, staged.x) for objective in every)
+        key = (*(_dot(objective, staged.x) for objective in (*objectives, positions)), *reversed(staged.x[:n]))
         return Offer(staged.x[:n], key, staged)
 
-    found = best_within(model, solve)
+    found = yield from ask_best_within(model, ask)
     if found is None:
         raise ValueError(f"no shares meet the limits of order {model.order.name} in its amount")
     return Best(found.answer, found.branch.model, not found.branch.path)
+
+
+@lru_cache(maxsize=16)
+def _one_by_one(n: int) -> tuple[Vector, ...]:
+    """The share of the last lot, of the one before, …"""
+    return tuple(tuple(ONE if j == i else ZERO for j in range(n)) for i in reversed(range(n)))
 
 
 def _dot(one: Vector, other: Vector) -> Fraction:
     return sum((a * b for a, b in zip(one, other, strict=False) if a and b), ZERO)
 
 
-def lexicographic(program: Program, objectives: Sequence[Vector]) -> Staged | None:
+def ask_lexicographic(program: Program, objectives: Sequence[Vector]) -> Asking[Staged | None]:
     """The best point by each objective in turn (least first); None if there is no point at all.
 
     After each stage the program is cut down to its optimal face: columns with a reduced cost are held
@@ -194,35 +260,26 @@ def lexicographic(program: Program, objectives: Sequence[Vector]) -> Staged | No
     """
     stages: list[Optimum] = []
     for objective in objectives:
-        cost = (*objective, *((ZERO,) * (len(program.cost) - len(objective))))
-        program = _with_cost(program, cost)
-        answer = decide(program)
-        if not isinstance(answer, Optimum):
+        program = replace(program, cost=(*objective, *((ZERO,) * (len(program.cost) - len(objective)))))
+        proven = yield from ask_proven(program)
+        if not isinstance(proven.answer, Optimum):
             return None
-        stages.append(answer)
-        program = _optimal_face(program, answer)
+        stages.append(proven.answer)
+        if proven.is_only:
+            break
+        program = _optimal_face(program, proven.answer)
         if _is_one_point(program):
             break
     return Staged(stages[-1].x, tuple(stages))
 
 
-def _with_cost(program: Program, cost: Vector) -> Program:
-    return Program(
-        rows=program.rows,
-        row_low=program.row_low,
-        row_high=program.row_high,
-        lower=program.lower,
-        upper=program.upper,
-        cost=cost,
-    )
+lexicographic = answered(ask_lexicographic)
 
 
 def _optimal_face(program: Program, answer: Optimum) -> Program:
     lower, upper = list(program.lower), list(program.upper)
-    for j, cost in enumerate(program.cost):
-        reduced = cost - sum((y * row[j] for y, row in zip(answer.multipliers, program.rows, strict=True) if y), ZERO)
-        if reduced != 0:
-            lower[j] = upper[j] = answer.x[j]
+    for j in _priced(program, answer):
+        lower[j] = upper[j] = answer.x[j]
     low: list[Bound] = list(program.row_low)
     high: list[Bound] = list(program.row_high)
     for k, y in enumerate(answer.multipliers):
@@ -230,14 +287,15 @@ def _optimal_face(program: Program, answer: Optimum) -> Program:
             high[k] = low[k]
         elif y < 0:
             low[k] = high[k]
-    return Program(
-        rows=program.rows,
-        row_low=tuple(low),
-        row_high=tuple(high),
-        lower=tuple(lower),
-        upper=tuple(upper),
-        cost=program.cost,
-    )
+    return replace(program, row_low=tuple(low), row_high=tuple(high), lower=tuple(lower), upper=tuple(upper))
+
+
+def _priced(program: Program, answer: Optimum) -> list[int]:
+    """The columns with a reduced cost, reckoned in whole numbers."""
+    form = integral(program)
+    weights, below = cleared([y / scale for y, scale in zip(answer.multipliers, form.row_scale, strict=True)])
+    held = [(weight * form.cost_scale, row) for weight, row in zip(weights, form.rows, strict=True) if weight]
+    return [j for j, cost in enumerate(form.cost) if cost * below != sum(weight * row[j] for weight, row in held)]
 
 
 def _is_one_point(program: Program) -> bool:

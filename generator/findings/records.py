@@ -261,33 +261,112 @@ class ComponentFinding:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class PlannedOrder:
-    """What the plan gives one order."""
+    """What the plan gives one order; ``exact`` are the amounts exactly.
+
+    ``asked`` is the amount at which it counts as served in full (None: any amount).  ``income`` is price
+    × accepted and ``cost`` that of the lots used (None where a price or a lot's cost is unknown).
+    """
 
     accepted: float
     amounts: Mapping[str, float]
+    exact: Mapping[str, Fraction] = field(default_factory=dict)
+    asked: float | None = None
+    priority: int = 1
+    income: float | None = None
+    cost: float | None = None
+    values: Mapping[str, float] = field(default_factory=dict)
+
+    @property
+    def state(self) -> Literal["full", "part", "none"]:
+        """Whether the order gets all that it asks, some of it, or nothing."""
+        if self.accepted <= 0:
+            return "none"
+        return "part" if self.asked is not None and self.accepted < self.asked else "full"
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class PlanStage:
+    """One objective of the plan, in its turn: ``best`` is what was reached.
+
+    ``gap``: by how much of itself it could still be better (0: proven best; None: not searched).
+    """
+
+    aim: Literal["value", "amount", "unknown cost", "cost", "lots"]
+    priority: int | None
+    best: float
+    gap: float | None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Loser:
+    """An order that the plan does not serve in full, and why.
+
+    ``reason``: "alone" (its verdict is no better taken alone), "price" (it would cost more than it
+    brings), "stock" (others take what it needs), "left out" (it takes no part in the plan; ``remark``
+    says why).  ``short`` are lots of which more, all others kept, would serve it in full: each alone,
+    or only together (``is_together``); ``instead`` are accepted orders that could be cut by so much
+    (by all of it: dropped) for it.  ``remark`` is a word on the search.
+    """
+
+    order: str
+    alone: Verdict | None
+    reason: Literal["alone", "price", "stock", "left out"]
+    short: tuple[str, ...] = ()
+    is_together: bool = False
+    instead: Mapping[str, float] = field(default_factory=dict)
+    remark: str = ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Plan:
-    """All orders served together from the stock."""
+    """All orders served together from the stock.
 
-    value: float
+    ``value`` is Σ price·accepted − Σ cost·used where prices are given (``measure`` "value"), else the
+    amount accepted.  ``status``: "proven", "within gap" (searched to the end of the effort; ``gap`` is
+    relative) or "out of time" (the last guard stopped it).  ``one_more`` is what one unit more of a lot
+    that runs out would add to ``value``, the accepted orders and their lots kept.  ``leftover`` is what the stock
+    left could still make of each order, as far as known.  ``unchecked`` are lots whose stock was not given.
+    """
+
+    value: float | None
     orders: Mapping[str, PlannedOrder]
     left: Mapping[str, float]
     runs_out: tuple[str, ...]
     status: str
     gap: float | None
+    measure: Literal["value", "amount"] = "value"
+    stages: tuple[PlanStage, ...] = ()
+    nodes: int = 0
+    losers: tuple[Loser, ...] = ()
+    one_more: Mapping[str, float] = field(default_factory=dict)
+    never_used: tuple[str, ...] = ()
+    leftover: Mapping[str, float] = field(default_factory=dict)
+    unchecked: tuple[str, ...] = ()
+    unpriced: tuple[str, ...] = ()
+    uncosted: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Batch:
-    """One weighing of one order."""
+    """One weighing of one order.
+
+    It stands for ``times`` equal ones, ``batch`` the first of them, ``of`` all of the order.  ``exact`` are
+    the amounts as weighed, exactly; ``steps`` the weigh step of each lot (absent: none is
+    given, amounts to sensible digits).  ``breaks`` names what the amounts break, with the blend's
+    excess in words, where ``holds`` is False; ``remark`` says so of a total that can't be weighed.
+    """
 
     order: str
     batch: int
     amounts: Mapping[str, float]
     values: Mapping[str, float]
     holds: bool
+    of: int = 1
+    times: int = 1
+    exact: Mapping[str, Fraction] = field(default_factory=dict)
+    steps: Mapping[str, float] = field(default_factory=dict)
+    breaks: tuple[str, ...] = ()
+    remark: str = ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

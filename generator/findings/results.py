@@ -26,12 +26,14 @@ from generator.findings.records import (
     HalfPlane,
     HullFinding,
     LimitFinding,
+    Loser,
     LotFinding,
     Multiplier,
     Nearest,
     OrderFinding,
     Plan,
     PlannedOrder,
+    PlanStage,
     Proof,
     Recipe,
     RecipeProof,
@@ -82,7 +84,7 @@ def to_json(findings: Findings) -> Json:
         "lots": [_lot_to(lot) for lot in findings.lots],
         "orders": [_order_to(order) for order in findings.orders],
         "plan": None if findings.plan is None else _plan_to(findings.plan),
-        "batches": [_plain(batch, _BATCH) for batch in findings.batches],
+        "batches": [_batch_to(batch) for batch in findings.batches],
         "read": [{"file": note.file, "row": note.row, "what": note.what} for note in findings.read],
         "problems": [_plain(problem, _PROBLEM) for problem in findings.problems],
     }
@@ -103,7 +105,7 @@ def from_json(data: Json) -> Findings:
         lots=tuple(_lot_from(item) for item in data.get("lots", [])),
         orders=tuple(_order_from(item) for item in data.get("orders", [])),
         plan=None if plan is None else _plan_from(plan),
-        batches=tuple(Batch(**_named(item, _BATCH)) for item in data.get("batches", [])),
+        batches=tuple(_batch_from(item) for item in data.get("batches", [])),
         read=tuple(ReadNote(item["file"], item["row"], item["what"]) for item in data.get("read", [])),
         problems=tuple(Problem(**_named(item, _PROBLEM)) for item in data.get("problems", [])),
         revision=None if revision is None else RevisionMark(**_named(revision, ("number", "digest", "recorded"))),
@@ -111,7 +113,7 @@ def from_json(data: Json) -> Findings:
 
 
 _COMPONENT = ("name", "label", "unit", "rule", "basis", "limit_basis", "sd")
-_BATCH = ("order", "batch", "amounts", "values", "holds")
+_BATCH = ("order", "batch", "amounts", "values", "holds", "of", "times", "steps", "remark")
 _PROBLEM = ("file", "row", "column", "found", "message", "remedy", "severity")
 _LOT = ("lot", "role", "stock", "cost", "assay", "imitated_by", "stock_worth")
 _LIMIT = ("on", "low", "high", "worth")
@@ -372,23 +374,44 @@ def _blocking_from(item: Json) -> Json:
     }
 
 
+_PLANNED = ("accepted", "amounts", "asked", "priority", "income", "cost", "values")
+_PLAN = ("value", "left", "status", "gap", "measure", "nodes", "one_more", "leftover")
+_PLAN_LISTS = ("runs_out", "never_used", "unchecked", "unpriced", "uncosted")
+_STAGE = ("aim", "priority", "best", "gap")
+_LOSER = ("order", "alone", "reason", "is_together", "instead", "remark")
+
+
 def _plan_to(plan: Plan) -> Json:
     return {
-        "value": plan.value,
-        "orders": {name: _plain(order, ("accepted", "amounts")) for name, order in plan.orders.items()},
-        "left": plan.left,
-        "runs_out": list(plan.runs_out),
-        "status": plan.status,
-        "gap": plan.gap,
+        **_plain(plan, _PLAN),
+        "orders": {
+            name: {**_plain(order, _PLANNED), "exact": _exact(order.exact)} for name, order in plan.orders.items()
+        },
+        **{key: list(getattr(plan, key)) for key in _PLAN_LISTS},
+        "stages": [_plain(stage, _STAGE) for stage in plan.stages],
+        "losers": [{**_plain(loser, _LOSER), "short": list(loser.short)} for loser in plan.losers],
     }
 
 
 def _plan_from(item: Json) -> Plan:
+    lists: dict[str, Any] = {key: tuple(item.get(key, ())) for key in _PLAN_LISTS}
     return Plan(
-        value=item["value"],
-        orders={name: PlannedOrder(**_named(order, ("accepted", "amounts"))) for name, order in item["orders"].items()},
-        left=item["left"],
-        runs_out=tuple(item["runs_out"]),
-        status=item["status"],
-        gap=item.get("gap"),
+        **_named(item, _PLAN),
+        orders={
+            name: PlannedOrder(**_named(order, _PLANNED), exact=_fractions(order.get("exact")))
+            for name, order in item["orders"].items()
+        },
+        **lists,
+        stages=tuple(PlanStage(**_named(stage, _STAGE)) for stage in item.get("stages", [])),
+        losers=tuple(
+            Loser(**_named(loser, _LOSER), short=tuple(loser.get("short", ()))) for loser in item.get("losers", [])
+        ),
     )
+
+
+def _batch_to(batch: Batch) -> Json:
+    return {**_plain(batch, _BATCH), "exact": _exact(batch.exact), "breaks": list(batch.breaks)}
+
+
+def _batch_from(item: Json) -> Batch:
+    return Batch(**_named(item, _BATCH), exact=_fractions(item.get("exact")), breaks=tuple(item.get("breaks", ())))

@@ -12,13 +12,14 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
 
-from generator.findings.house import Offer, best_within
+from generator.findings.ask import Asking, answered, ask_best
+from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import own_value
 from generator.findings.model import OrderModel, Row
-from generator.findings.programs import ONE, ZERO, capped_upper, share_program, share_rows
+from generator.findings.programs import ONE, ZERO, Rows, capped_upper, level_rows, share_program, share_rows
 from generator.findings.rules import OutsideDomain
-from generator.geometry.decide import decide
-from generator.geometry.program import Bound, Infeasible, Optimum, Vector
+from generator.geometry.asked import Point
+from generator.geometry.program import Bound, Vector
 from generator.intake.records import Component
 
 #: Dinkelbach's steps stop when t grows by less than this: far below what any page shows.
@@ -37,10 +38,11 @@ class Scales:
 
 @dataclass(frozen=True, slots=True)
 class Room:
-    """The greatest t, and shares that stand at it."""
+    """The greatest t, and shares that stand at it; ``is_only``: no others do (False where that is not known)."""
 
     t: Fraction
     shares: Vector
+    is_only: bool = False
 
 
 def scales_of(model: OrderModel, components: dict[str, Component]) -> Scales:
@@ -90,7 +92,7 @@ def tightened(model: OrderModel, scales: Scales, t: Fraction) -> OrderModel | No
     return replace(model, rows=tuple(rows))
 
 
-def room_of(model: OrderModel, scales: Scales, *, in_amount: bool) -> Room | None:
+def ask_room(model: OrderModel, scales: Scales, *, in_amount: bool) -> Asking[Room | None]:
     """The greatest t, exactly with equal carriers; None where nothing can move or exact limits alone block.
 
     Within the house rules.  ``in_amount`` keeps the stock's caps on the shares in the order's amount.
@@ -98,41 +100,46 @@ def room_of(model: OrderModel, scales: Scales, *, in_amount: bool) -> Room | Non
     if all(row.side == "exact" for row in model.rows):
         return None
 
-    def solve(branch: OrderModel) -> Offer[Room] | None:
-        room = _room_on(branch, scales, in_amount=in_amount)
+    def ask(branch: OrderModel) -> Asking[Offer[Room] | None]:
+        room = yield from _ask_room_on(branch, scales, in_amount=in_amount)
         return None if room is None else Offer(room.shares, (-room.t,), room)
 
-    found = best_within(model, solve)
-    return None if found is None else found.answer
+    found = yield from ask_best_within(model, ask)
+    if found is None:
+        return None
+    # Another branch of the rules may have as much room.
+    return replace(found.answer, is_only=False) if model.rules.names() else found.answer
 
 
-def _room_on(model: OrderModel, scales: Scales, *, in_amount: bool) -> Room | None:
+room_of = answered(ask_room)
+
+
+def _ask_room_on(model: OrderModel, scales: Scales, *, in_amount: bool) -> Asking[Room | None]:
     """The greatest t on one branch of the house rules."""
     upper = capped_upper(model, model.amount) if in_amount else model.upper
     if is_linear(model):
-        step = _step(model, model, scales, upper)
-        return None if step is None else Room(step[0], step[1])
+        return (yield from _ask_step(model, model, scales, upper))
     exact_only = replace(model, rows=tuple(row for row in model.rows if row.side == "exact"))
-    start = decide(share_program(model, share_rows(exact_only), (ZERO,) * len(model.lots), upper=upper))
-    if not isinstance(start, Optimum):
+    start = yield from ask_best(share_program(model, share_rows(exact_only), (ZERO,) * len(model.lots), upper=upper))
+    if not isinstance(start, Point):
         return None
     best = allowed(model, scales, start.x)
-    return None if best is None else _dinkelbach(model, scales, upper, Room(best, start.x))
+    return None if best is None else (yield from _ask_dinkelbach(model, scales, upper, Room(best, start.x)))
 
 
-def _dinkelbach(model: OrderModel, scales: Scales, upper: tuple[Bound, ...], best: Room) -> Room:
+def _ask_dinkelbach(model: OrderModel, scales: Scales, upper: tuple[Bound, ...], best: Room) -> Asking[Room]:
     for _ in range(MOST_STEPS):
         # Floor to a coarse grid: the next program's numbers stay short, and t still stands.
         at = _floored(best.t)
         moved = tightened(model, scales, at)
         if moved is None:
             return best
-        step = _step(model, moved, scales, upper)
-        reached = None if step is None else allowed(model, scales, step[1])
+        step = yield from _ask_step(model, moved, scales, upper)
+        reached = None if step is None else allowed(model, scales, step.shares)
         if step is None or reached is None or reached <= best.t:
             return best
         gained = reached - best.t
-        best = Room(reached, step[1])
+        best = Room(reached, step.shares)
         if gained < STEP:
             break
     return best
@@ -142,21 +149,30 @@ def _floored(t: Fraction) -> Fraction:
     return Fraction((t / STEP).__floor__()) * STEP
 
 
+def tight_rows(model: OrderModel, scales: Scales, t: Fraction) -> Rows:
+    """The program rows of :func:`tightened` where moving the limits is linear: only their bounds move."""
+    return share_rows(model).tightened(
+        {
+            k: t * scale * row.base[0]
+            for k, (row, scale) in enumerate(zip(model.rows, scales.by_row, strict=True))
+            if row.side != "exact"
+        }
+    )
+
+
 def is_linear(model: OrderModel) -> bool:
     """Whether moving all limits at once is linear: linear rules, and denominators alike in all lots."""
     return all(
-        model.measures[row.on].rule.name == "linear" and len(set(row.base)) == 1
-        for row in model.rows
+        model.measures[row.on].rule.name == "linear" and level
+        for row, level in zip(model.rows, level_rows(model), strict=True)
         if row.side != "exact"
     )
 
 
-def _step(
-    model: OrderModel, moved: OrderModel, scales: Scales, upper: tuple[Bound, ...]
-) -> tuple[Fraction, Vector] | None:
+def _ask_step(model: OrderModel, moved: OrderModel, scales: Scales, upper: tuple[Bound, ...]) -> Asking[Room | None]:
     """The greatest μ with terms·x + μ·weight ≤ 0 over the rows of ``moved``; with equal carriers, t itself.
 
-    μ = free column: up minus down.
+    μ is the last column, free.
     """
     weight_of = {
         (row.on, row.side): weight_of_scale(model, row, scale)
@@ -167,21 +183,14 @@ def _step(
     for row in moved.rows:
         weight = weight_of[row.on, row.side]
         if row.side == "exact":
-            extra.append(((*row.terms, ZERO, ZERO), ZERO, ZERO))
+            extra.append(((*row.terms, ZERO), ZERO, ZERO))
         else:
-            extra.append(((*row.terms, weight, -weight), None, ZERO))
+            extra.append(((*row.terms, weight), None, ZERO))
     bare = replace(model, rows=())
-    program = share_program(
-        bare,
-        share_rows(bare),
-        (*((ZERO,) * n), -ONE, ONE),
-        upper=(*upper, None, None),
-        extra=extra,
-    )
-    answer = decide(program)
-    if isinstance(answer, Infeasible) or not isinstance(answer, Optimum):
-        return None
-    return -answer.value, answer.x[:n]
+    cost = (*((ZERO,) * n), -ONE)
+    program = share_program(bare, share_rows(bare), cost, upper=(*upper, None), extra=extra)
+    best = yield from ask_best(replace(program, lower=(*model.lower, None)))
+    return Room(-best.value, best.x[:n], best.is_only) if isinstance(best, Point) else None
 
 
 def weight_of_scale(model: OrderModel, row: Row, scale: Fraction) -> Fraction:
@@ -197,11 +206,13 @@ def weight_of_scale(model: OrderModel, row: Row, scale: Fraction) -> Fraction:
 def allowed(model: OrderModel, scales: Scales, x: Sequence[Fraction]) -> Fraction | None:
     """The greatest t at which these shares still stand; None where nothing can move or has a value."""
     least: Fraction | None = None
-    for row, scale in zip(model.rows, scales.by_row, strict=True):
+    used = [(i, share) for i, share in enumerate(x) if share]
+    is_whole = sum(share for _, share in used) == 1
+    for row, scale, is_level in zip(model.rows, scales.by_row, level_rows(model), strict=True):
         if row.side == "exact":
             continue
-        base = sum((b * share for b, share in zip(row.base, x, strict=True)), ZERO)
-        over = sum((a * share for a, share in zip(row.terms, x, strict=True)), ZERO)
+        base = row.base[0] if is_level and is_whole else sum((row.base[i] * share for i, share in used), ZERO)
+        over = sum((row.terms[i] * share for i, share in used), ZERO)
         if base <= 0:
             return None
         rule = model.measures[row.on].rule

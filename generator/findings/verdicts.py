@@ -1,6 +1,6 @@
 """Verdict and proof of one order: unreachable, short, edge or makeable.
 
-Every answer comes from :func:`generator.geometry.decide.decide_many`, which has proven it; here the
+Every answer comes proven from :mod:`generator.geometry.asked`; here the
 exact shares and multipliers are put in the order's own terms.
 """
 
@@ -11,15 +11,16 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
 
+from generator.findings.ask import Asking, answered, ask_answer, ask_best, ask_possible, both, together
 from generator.findings.house import Branch as HouseBranch
-from generator.findings.house import Offer, best_within, closed_branches
-from generator.findings.house_rules import Rules
+from generator.findings.house import Offer, ask_best_within, ask_closed_branches
 from generator.findings.model import OrderModel, Row
 from generator.findings.programs import (
     ONE,
     ZERO,
     Rows,
     amount_rows,
+    capped_upper,
     combined,
     least_over_shares,
     share_bound_rows,
@@ -27,14 +28,15 @@ from generator.findings.programs import (
     share_rows,
 )
 from generator.findings.records import BlockingProof, Branch, BranchProof, Cap, Face, Multiplier, Verdict
-from generator.geometry.decide import decide
+from generator.geometry.asked import Point
 from generator.geometry.program import Bound, Infeasible, Optimum, Program, Unbounded, Vector
 from generator.geometry.proofs import fewest_rows, tidy
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Greatest:
-    """The greatest amount (None: no bound), with shares that make it and the proof of its bound."""
+    """The greatest amount (None: no bound), with shares that make it; the proof of its bound where that is
+    less than the order asks for."""
 
     amount: Fraction | None
     shares: Mapping[str, Fraction]
@@ -54,47 +56,66 @@ class Judgement:
     greatest: Greatest | None = None
 
 
-def judge(model: OrderModel) -> Judgement:
+def ask_judgement(model: OrderModel) -> Asking[Judgement]:
     """The first verdict that applies, proven: unreachable, barred, short, edge, makeable.
 
     UndecidedError where the house rules leave too many branches.
     """
     rows = share_rows(model)
     program = share_program(model, rows, (ZERO,) * len(model.lots))
-    answer = decide(program)
-    if isinstance(answer, Infeasible):
+    if not (yield from ask_possible(program)):
+        answer = yield from ask_answer(program)
+        assert isinstance(answer, Infeasible), "a verdict is the same whichever way it was proven"
         return Judgement(verdict="unreachable", blocking=blocking_proof(model, rows, program, answer))
-    if model.rules.names() and best_within(model, _any_shares) is None:
-        return Judgement(verdict="barred", branches=branch_proof(model))
-    greatest = greatest_amount(model)
+    if model.rules.names() and not (yield from _ask_allowed(model)):
+        return Judgement(verdict="barred", branches=(yield from _ask_branch_proof(model)))
+    greatest, face = yield from both(ask_greatest_amount(model), ask_face(model))
     if greatest and greatest.amount is not None and model.amount is not None and greatest.amount < model.amount:
         return Judgement(verdict="short", greatest=greatest)
-    face = face_of(model)
     return Judgement(verdict="edge" if face else "makeable", face=face, greatest=greatest)
 
 
-def _any_shares(branch: OrderModel) -> Offer[None] | None:
-    answer = decide(share_program(branch, share_rows(branch), (ZERO,) * len(branch.lots)))
-    return None if not isinstance(answer, Optimum) else Offer(answer.x, (), None)
+judge = answered(ask_judgement)
 
 
-def is_allowed(model: OrderModel, rules: Rules) -> bool:
-    """Whether some blend within the limits, stock aside, keeps these rules."""
-    return best_within(model, _any_shares, rules) is not None
+def ask_verdict(model: OrderModel) -> Asking[Verdict]:
+    """The verdict alone, without what proves it to a reader."""
+    possible = yield from ask_possible(share_program(model, share_rows(model), (ZERO,) * len(model.lots)))
+    if not possible:
+        return "unreachable"
+    if model.rules.names() and not (yield from _ask_allowed(model)):
+        return "barred"
+    capped = replace(model, upper=capped_upper(model, model.amount))
+    if capped.upper != model.upper and not (yield from _ask_allowed(capped)):
+        return "short"
+    return "edge" if (yield from ask_face(model)) else "makeable"
 
 
-def branch_proof(model: OrderModel) -> BranchProof:
+def _ask_allowed(model: OrderModel) -> Asking[bool]:
+    """Whether some shares within the limits keep the house rules."""
+    if not model.rules.names():
+        return (yield from ask_possible(share_program(model, share_rows(model), (ZERO,) * len(model.lots))))
+    return (yield from ask_best_within(model, _ask_any_shares)) is not None
+
+
+def _ask_any_shares(branch: OrderModel) -> Asking[Offer[None] | None]:
+    answer = yield from ask_best(share_program(branch, share_rows(branch), (ZERO,) * len(branch.lots)))
+    return Offer(answer.x, (), None) if isinstance(answer, Point) else None
+
+
+def _ask_branch_proof(model: OrderModel) -> Asking[BranchProof]:
     """One blocking proof for each branch of the house rules, which together leave none open."""
-    return BranchProof(branches=tuple(_closed(branch) for branch in closed_branches(model, _any_shares)))
+    closed = yield from ask_closed_branches(model, _ask_any_shares)
+    return BranchProof(branches=tuple((yield from together([_ask_closed(branch) for branch in closed]))))
 
 
-def _closed(branch: HouseBranch) -> Branch:
+def _ask_closed(branch: HouseBranch) -> Asking[Branch]:
     if branch.is_empty:
         return Branch(rules=branch.path, multipliers=(), scores={})
     model = branch.model
     rows = share_rows(model)
     program = share_program(model, rows, (ZERO,) * len(model.lots))
-    answer = decide(program)
+    answer = yield from ask_answer(program)
     assert isinstance(answer, Infeasible), "a closed branch has no shares"
     proof = blocking_proof(model, rows, program, answer)
     usable = {name for name, top in zip(model.names, model.upper, strict=True) if top != 0}
@@ -141,21 +162,21 @@ def _tidied(weights: Mapping[int, Fraction]) -> dict[int, Fraction]:
     return dict(zip(weights, tidy(tuple(weights.values())), strict=True))
 
 
-def greatest_amount(model: OrderModel) -> Greatest | None:
+def ask_greatest_amount(model: OrderModel) -> Asking[Greatest | None]:
     """The most that the stock makes within the limits and rules; None where no stock is given.
 
     An order that some blend meets has a greatest amount above 0: a little of that blend.
     """
     if all(stock is None for stock in model.stock):
         return None
-    found = best_within(model, _greatest_on)
+    found = yield from ask_best_within(model, _ask_greatest_on)
     if found is None:
         return Greatest(amount=ZERO, shares={}, runs_out=(), cap=None)
     # With house rules the cap of one branch says nothing about the others.
     return found.answer if not found.branch.path else replace(found.answer, cap=None)
 
 
-def _greatest_on(model: OrderModel) -> Offer[Greatest] | None:
+def _ask_greatest_on(model: OrderModel) -> Asking[Offer[Greatest] | None]:
     rows = amount_rows(model)
     bound_rows = share_bound_rows(model)
     n = len(model.lots)
@@ -167,27 +188,28 @@ def _greatest_on(model: OrderModel) -> Offer[Greatest] | None:
         upper=model.stock,
         cost=(-ONE,) * n,
     )
-    answer = decide(program)
-    if isinstance(answer, Unbounded):
-        shares = _shares(model, answer.ray)
+    best = yield from ask_best(program)
+    if isinstance(best, Unbounded):
+        shares = _shares(model, best.ray)
         found = Greatest(amount=None, shares=shares, runs_out=(), cap=None)
         # Without bound comes before any amount.
         return Offer([shares.get(name, ZERO) for name in model.names], (ZERO, ZERO), found)
-    assert isinstance(answer, Optimum), "nothing at all is always within homogeneous limits"
-    amount = -answer.value
+    assert best is not None, "nothing at all is always within homogeneous limits"
+    amount, x = -best.value, best.x
     if amount == 0:
         return None
-    shares = _shares(model, answer.x)
-    found = Greatest(
-        amount=amount,
-        shares=shares,
-        runs_out=tuple(
-            name
-            for name, x, stock in zip(model.names, answer.x, model.stock, strict=True)
-            if stock is not None and x == stock
-        ),
-        cap=_cap(model, rows, bound_rows, answer),
+    cap = None
+    if model.amount is not None and amount < model.amount:
+        answer = yield from ask_answer(program)
+        assert isinstance(answer, Optimum), "the amount is bounded"
+        cap, x = _cap(model, rows, bound_rows, answer), answer.x
+    shares = _shares(model, x)
+    runs_out = tuple(
+        name
+        for name, used, stock in zip(model.names, x, model.stock, strict=True)
+        if stock is not None and used == stock
     )
+    found = Greatest(amount=amount, shares=shares, runs_out=runs_out, cap=cap)
     return Offer([shares.get(name, ZERO) for name in model.names], (ONE, -amount), found)
 
 
@@ -215,7 +237,7 @@ def _cap(model: OrderModel, rows: Rows, bound_rows: Sequence[tuple[Row, Vector]]
     )
 
 
-def face_of(model: OrderModel) -> Face | None:
+def ask_face(model: OrderModel) -> Asking[Face | None]:
     """The face on which a reachable order lies, or None where no share is stuck.
 
     One program finds all stuck shares at once: x = bound·λ + t + s with t ≤ 1, most Σ t.  As λ may
@@ -225,8 +247,13 @@ def face_of(model: OrderModel) -> Face | None:
     free = _varying(model)
     if not free:
         return None
+    program = _free_program(model, free)
+    if program is not None and (yield from ask_possible(program)):
+        return None
     program = _face_program(model, free)
-    answer = decide(program)
+    if (yield from ask_possible(_with_all(program, len(free)))):
+        return None
+    answer = yield from ask_answer(program)
     assert isinstance(answer, Optimum), "the sum of the t is bounded"
     n = len(model.lots)
     stuck: dict[str, Literal["zero", "min", "max"]] = {}
@@ -259,6 +286,32 @@ def _varying(model: OrderModel) -> list[tuple[int, Literal["lower", "upper"]]]:
         if model.upper[i] is not None and most == top:
             varying.append((i, "upper"))
     return varying
+
+
+face_of = answered(ask_face)
+
+
+def _free_program(model: OrderModel, free: Sequence[tuple[int, Literal["lower", "upper"]]]) -> Program | None:
+    """Amounts in which every share that can vary is above 0; None where other bounds than 0 would have to be left."""
+    varying = {i for i, _ in free}
+    if any(model.lower) or any(top != 0 for i, top in enumerate(model.upper) if top is not None or i not in varying):
+        return None
+    entries = amount_rows(model).entries
+    n = len(model.lots)
+    return Program(
+        rows=tuple(entry.terms for entry in entries),
+        row_low=tuple(entry.low for entry in entries),
+        row_high=tuple(entry.high for entry in entries),
+        lower=tuple(ONE if i in varying else ZERO for i in range(n)),
+        upper=tuple(None if i in varying else ZERO for i in range(n)),
+        cost=(ZERO,) * n,
+    )
+
+
+def _with_all(program: Program, count: int) -> Program:
+    """The program with its first columns held at 1: every share leaves its bound in one blend."""
+    ones = (ONE,) * count
+    return replace(program, lower=(*ones, *program.lower[count:]), cost=(ZERO,) * len(program.cost))
 
 
 def _face_program(model: OrderModel, free: Sequence[tuple[int, Literal["lower", "upper"]]]) -> Program:

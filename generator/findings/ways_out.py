@@ -6,16 +6,17 @@ from collections.abc import Mapping, Sequence
 from dataclasses import replace
 from fractions import Fraction
 
-from generator.findings.house import Offer, best_within
+from generator.findings.ask import Asking, answered, ask_best, together
+from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import Measure, blend_value, own_value, reports, stated
 from generator.findings.model import OrderModel, Row
 from generator.findings.programs import ONE, ZERO
-from generator.findings.recipes import best_shares
+from generator.findings.recipes import ask_best_shares
 from generator.findings.records import Nearest, WantedLot
 from generator.findings.room import Scales, weight_of_scale
 from generator.findings.values import Table
-from generator.geometry.decide import decide
-from generator.geometry.program import Bound, Infeasible, Optimum, Program, Vector
+from generator.geometry.asked import Point
+from generator.geometry.program import Bound, Program, Vector
 from generator.intake.records import Campaign, Component
 
 #: Shares of the order at which a wanted lot is described.
@@ -31,7 +32,9 @@ WHOLES = {
 }
 
 
-def nearest_blend(model: OrderModel, table: Table, measures: Mapping[str, Measure], scales: Scales) -> Nearest:
+def ask_nearest_blend(
+    model: OrderModel, table: Table, measures: Mapping[str, Measure], scales: Scales
+) -> Asking[Nearest]:
     """The blend that breaks the limits least: Σ row excess / (scale × mean carrier), exact limits too.
 
     Stock is aside.  Of equal ones, the one that takes the lots in file order.
@@ -48,7 +51,7 @@ def nearest_blend(model: OrderModel, table: Table, measures: Mapping[str, Measur
     excess = (*((ZERO,) * n), *((ONE,) * len(sides)))
     # Stock is aside: the counter-offer is about composition.
     freed = replace(model, rows=(), stock=(None,) * n)
-    best = best_shares(freed, [excess], extra=extra, width=width)
+    best = yield from ask_best_shares(freed, [excess], extra=extra, width=width)
     shares = {lot: x for lot, x in zip(model.lots, best.staged.x, strict=False) if x}
     names = dict(zip(model.lots, model.names, strict=True))
     values = {name: blend_value(measure, table, model.lots, shares) for name, measure in measures.items()}
@@ -74,24 +77,32 @@ def _broken_by(model: OrderModel, name: str, value: Fraction | None) -> Fraction
     return max(below, above, ZERO)
 
 
-def wanted_lots(
+def ask_wanted_lots(
     campaign: Campaign, model: OrderModel, table: Table, measures: Mapping[str, Measure]
-) -> tuple[WantedLot, ...]:
+) -> Asking[tuple[WantedLot, ...]]:
     """For each share, the composition nearest to the hull that one further lot would need.
 
     The lot has the mean carriers of the order's lots, and is in no group; the distance is the sum of
     the components' differences over their scales.
     """
     names = _wanted_components(model, measures)
+    found = yield from together(
+        [_ask_wanted(campaign, model, table, measures, names, share) for share in WANTED_SHARES]
+    )
     return tuple(
-        WantedLot(share=float(share), values=_wanted(campaign, model, table, measures, names, share))
-        for share in WANTED_SHARES
+        WantedLot(share=float(share), values=values) for share, values in zip(WANTED_SHARES, found, strict=True)
     )
 
 
-def can_be_met_at_all(campaign: Campaign, model: OrderModel, table: Table, measures: Mapping[str, Measure]) -> bool:
+def ask_can_be_met_at_all(
+    campaign: Campaign, model: OrderModel, table: Table, measures: Mapping[str, Measure]
+) -> Asking[bool]:
     """Whether some composition, of any material, meets the limits on components."""
-    return _wanted(campaign, model, table, measures, _wanted_components(model, measures), ONE) is not None
+    names = _wanted_components(model, measures)
+    return (yield from _ask_wanted(campaign, model, table, measures, names, ONE)) is not None
+
+
+can_be_met_at_all = answered(ask_can_be_met_at_all)
 
 
 def _wanted_components(model: OrderModel, measures: Mapping[str, Measure]) -> tuple[str, ...]:
@@ -103,25 +114,24 @@ def _is_group(measure: Measure) -> bool:
     return measure.denominator.basis == "amount"
 
 
-def _wanted(
+def _ask_wanted(
     campaign: Campaign,
     model: OrderModel,
     table: Table,
     measures: Mapping[str, Measure],
     names: Sequence[str],
     share: Fraction,
-) -> dict[str, float] | None:
+) -> Asking[dict[str, float] | None]:
     """The composition nearest to the hull, over the branches that keep apart what is kept apart."""
 
-    def solve(branch: OrderModel) -> Offer[Vector] | None:
-        program = _wanted_program(campaign, branch, table, measures, names, share)
-        answer = decide(program)
-        if isinstance(answer, Infeasible):
+    def ask(branch: OrderModel) -> Asking[Offer[Vector] | None]:
+        best = yield from ask_best(_wanted_program(campaign, branch, table, measures, names, share))
+        if best is None:
             return None
-        assert isinstance(answer, Optimum), "a distance is at least 0"
-        return Offer(answer.x[: len(model.lots)], (answer.value,), answer.x)
+        assert isinstance(best, Point), "a distance is at least 0"
+        return Offer(best.x[: len(model.lots)], (best.value,), best.x)
 
-    found = best_within(model, solve, model.rules.only_apart())
+    found = yield from ask_best_within(model, ask, model.rules.only_apart())
     if found is None:
         return None
     values = {}

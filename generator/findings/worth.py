@@ -9,11 +9,12 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
+from generator.findings.ask import Asking, ask_all_best, ask_answer, together
 from generator.findings.model import OrderModel, Row
-from generator.findings.programs import ONE, ZERO, capped_upper, share_program, share_rows
+from generator.findings.programs import ONE, ZERO, ProgramRow, capped_upper, level_rows, share_program, share_rows
 from generator.findings.records import Range, Recipe
 from generator.findings.rules import OutsideDomain
-from generator.geometry.decide import decide, decide_many
+from generator.geometry.asked import Point
 from generator.geometry.program import Bound, Optimum, Program, Vector
 
 #: A limit is first loosened by this part of its scale to see which way the cost leaves (one-sided).
@@ -36,16 +37,19 @@ def has_all_costs(model: OrderModel) -> bool:
     return all(cost is not None for cost in model.cost)
 
 
-def lot_prices(
-    model: OrderModel, recipe: Recipe, costs_without: Mapping[str, Fraction | None]
-) -> tuple[dict[str, float | None], dict[str, float | None]]:
+def ask_lot_prices(
+    model: OrderModel, recipe: Recipe, costs_without: Mapping[str, Fraction | None], optimum: Optimum
+) -> Asking[tuple[dict[str, float | None], dict[str, float | None]]]:
     """At what price each unused lot enters, and up to what price each used one stays.
 
     The threshold of lot j is the greatest (reference − cost of the other lots) per share of j, over all
     blends that use j: with the least cost as reference for an unused lot, and with the least cost
     without j (``costs_without``; None: there is none, it stays at any price) for a used one.  Scaled so
-    that x_j = 1 that is one linear program (Charnes and Cooper 1962), and no degeneracy blurs it.
+    that x_j = 1 that is one linear program (Charnes and Cooper 1962), and no degeneracy blurs it.  Where the
+    ``optimum`` of the cheapest recipe has one set of multipliers only, an unused lot's is its cost less
+    its reduced cost.
     """
+    prices = _prices_by_multipliers(model, optimum)
     enters: dict[str, float | None] = {}
     stays: dict[str, float | None] = {}
     best = sum((cost * recipe.exact.get(name, ZERO) for name, cost in _costs(model).items()), ZERO)
@@ -56,9 +60,13 @@ def lot_prices(
         if used and reference is None:
             stays[name] = None
             continue
+        if not used and prices is not None:
+            enters[name] = prices[j]
+            continue
         asked.append((name, _threshold_program(model, j, reference or ZERO)))
-    for (name, _), answer in zip(asked, decide_many([program for _, program in asked]), strict=True):
-        price = -float(answer.value) if isinstance(answer, Optimum) else None
+    answers = yield from ask_all_best([program for _, program in asked])
+    for (name, _), answer in zip(asked, answers, strict=True):
+        price = -float(answer.value) if isinstance(answer, Point) else None
         if name in recipe.exact:
             stays[name] = price
         else:
@@ -68,6 +76,35 @@ def lot_prices(
 
 def _costs(model: OrderModel) -> dict[str, Fraction]:
     return {name: cost or ZERO for name, cost in zip(model.names, model.cost, strict=True)}
+
+
+def _prices_by_multipliers(model: OrderModel, optimum: Optimum) -> list[float | None] | None:
+    """For each lot the cost at which its reduced cost would be 0; None where it can't be used at all.
+
+    No list where the optimum is degenerate: then other multipliers may serve as well.
+    """
+    rows = share_rows(model).entries
+    upper = capped_upper(model, model.amount)
+    if not _is_single(rows, model.lower, upper, optimum):
+        return None
+    held = [(y, entry.terms) for y, entry in zip(optimum.multipliers, rows, strict=False) if y]
+    level = optimum.multipliers[len(rows)]
+    return [None if top == 0 else float(sum((y * terms[j] for y, terms in held), level)) for j, top in enumerate(upper)]
+
+
+def _is_single(rows: Sequence[ProgramRow], lower: Vector, upper: Sequence[Bound], optimum: Optimum) -> bool:
+    """Whether exactly as many columns and rows rest at a bound as must: then the multipliers are the only ones."""
+    if optimum.basis is None:
+        return False
+    basic, n = set(optimum.basis.basic), len(lower)
+    shares = all(
+        low != x != top for j, (low, x, top) in enumerate(zip(lower, optimum.x, upper, strict=True)) if j in basic
+    )
+    loose = [entry for k, entry in enumerate(rows) if n + k in basic]
+    used = [(j, x) for j, x in enumerate(optimum.x) if x]
+    values = [sum((entry.terms[j] * x for j, x in used), ZERO) for entry in loose]
+    free = all(entry.low != value != entry.high for entry, value in zip(loose, values, strict=True))
+    return shares and free and n + len(rows) not in basic
 
 
 def _threshold_program(model: OrderModel, j: int, reference: Fraction) -> Program:
@@ -85,7 +122,8 @@ def _threshold_program(model: OrderModel, j: int, reference: Fraction) -> Progra
         top = upper[i]
         if model.lower[i]:
             rows.append(((*unit, -model.lower[i]), ZERO, None))
-        if top is not None:
+        # A top of 1 or more is no bound: the shares sum to 1.
+        if top is not None and top < 1:
             rows.append(((*unit, -top), None, ZERO))
     fixed = tuple(ONE if k == j else ZERO for k in range(n))
     return Program(
@@ -98,20 +136,26 @@ def _threshold_program(model: OrderModel, j: int, reference: Fraction) -> Progra
     )
 
 
-def worths(model: OrderModel, recipe: Recipe, scales: Sequence[Fraction]) -> dict[str, Worth]:
+def ask_worths(
+    model: OrderModel, recipe: Recipe, scales: Sequence[Fraction], optimum: Optimum
+) -> Asking[dict[str, Worth]]:
     """What loosening each binding limit by one unit saves, on its loose side.
 
     The cost is convex in a bound (equal carriers: piecewise linear), so that under degeneracy the worth
-    differs by side; this is the side on which the limit gives way.
+    differs by side; this is the side on which the limit gives way.  ``optimum`` is the cheapest recipe's:
+    where its multipliers are the only ones, they are the worths.
     """
     found: dict[str, Worth] = {}
     best = sum((cost * recipe.exact.get(name, ZERO) for name, cost in _costs(model).items()), ZERO)
-    for k, (row, scale) in enumerate(zip(model.rows, scales, strict=True)):
-        if row.side == "exact" or not _binds(model, row, recipe):
-            continue
-        worth = _worth(model, k, scale, best)
+    rows = share_rows(model)
+    is_single = _is_single(rows.entries, model.lower, capped_upper(model, model.amount), optimum)
+    weights = rows.weights(optimum.multipliers) if is_single else {}
+    slopes = {k: weight * model.rows[k].base[0] for k, weight in weights.items() if level_rows(model)[k]}
+    binding = [k for k, row in enumerate(model.rows) if row.side != "exact" and _binds(model, row, recipe)]
+    asked = yield from together([_ask_worth(model, k, scales[k], best, slopes.get(k)) for k in binding])
+    for k, worth in zip(binding, asked, strict=True):
         if worth is not None and worth.saving != 0:
-            found[row.on] = worth
+            found[model.rows[k].on] = worth
     return found
 
 
@@ -121,17 +165,20 @@ def _binds(model: OrderModel, row: Row, recipe: Recipe) -> bool:
     )
 
 
-def _worth(model: OrderModel, k: int, scale: Fraction, best: Fraction) -> Worth | None:
+def _ask_worth(
+    model: OrderModel, k: int, scale: Fraction, best: Fraction, slope: Fraction | None
+) -> Asking[Worth | None]:
     row = model.rows[k]
     loose = -1 if (row.side == "low") != model.measures[row.on].rule.decreases else 1
     first = scale * NUDGE
-    near = _line(model, k, loose * first)
-    if near is None:
-        return None
-    slope = (best - near.cost) / first
-    if not slope or model.measures[row.on].rule.name != "linear" or len(set(row.base)) != 1:
+    if slope is None or model.measures[row.on].rule.name != "linear":
+        near = yield from _ask_line(model, k, loose * first)
+        if near is None:
+            return None
+        slope = (best - near.cost) / first
+    if not slope or model.measures[row.on].rule.name != "linear" or not level_rows(model)[k]:
         return Worth(slope, None)
-    reach = _reach(model, k, loose, best, slope, first)
+    reach = yield from _ask_reach(model, k, loose, best, slope, first)
     ends = (row.typed, row.typed + loose * reach)
     return Worth(slope, (float(min(ends)), float(max(ends))))
 
@@ -144,37 +191,40 @@ class _Line:
     slope: Fraction
 
 
-def _line(model: OrderModel, k: int, move: Fraction) -> _Line | None:
+def _ask_line(model: OrderModel, k: int, move: Fraction) -> Asking[_Line | None]:
     """The least cost with row k's typed bound moved by ``move``; None outside the rule's domain."""
     row = model.rows[k]
-    typed = row.typed + move
-    try:
-        moved = row.moved(model.measures[row.on].rule.index(typed), typed)
-    except OutsideDomain:
-        return None
-    other = replace(model, rows=tuple(moved if i == k else kept for i, kept in enumerate(model.rows)))
-    rows = share_rows(other)
-    costs = tuple(_costs(model).values())
-    answer = decide(share_program(other, rows, costs, upper=capped_upper(model, model.amount)))
+    rule, typed = model.measures[row.on].rule, row.typed + move
+    if rule.name == "linear" and level_rows(model)[k]:
+        # Only the bound of its program row moves.
+        rows = share_rows(model).tightened({k: (move if row.side == "low" else -move) * row.base[0]})
+    else:
+        try:
+            moved = row.moved(rule.index(typed), typed)
+        except OutsideDomain:
+            return None
+        rows = share_rows(replace(model, rows=(*model.rows[:k], moved, *model.rows[k + 1 :])))
+    program = share_program(model, rows, tuple(_costs(model).values()), upper=capped_upper(model, model.amount))
+    answer = yield from ask_answer(program, to_publish=False)
     assert isinstance(answer, Optimum), "a loosened order stays reachable"
     return _Line(answer.value, rows.weights(answer.multipliers).get(k, ZERO) * row.base[0])
 
 
-def _reach(model: OrderModel, k: int, loose: int, best: Fraction, slope: Fraction, first: Fraction) -> Fraction:
+def _ask_reach(
+    model: OrderModel, k: int, loose: int, best: Fraction, slope: Fraction, first: Fraction
+) -> Asking[Fraction]:
     """How far the saving grows by ``slope``: where the tangents from further out meet it, exactly.
 
     The saving is concave in the move, so a tangent lies above it; where the tangent at a farther move
     crosses the first line and the saving still is on that line, the line ends.
     """
     row = model.rows[k]
-    values = [
-        above / below
-        for above, below in zip(model.numerators[row.on], model.denominators[row.on], strict=True)
-        if below
-    ]
-    step = max(first, loose * ((max(values) if loose > 0 else min(values)) - row.typed))
+    above, below = model.numerators[row.on], model.denominators[row.on]
+    values = above if len(set(below)) == 1 else [a / b for a, b in zip(above, below, strict=True) if b]
+    furthest = (max(values) if loose > 0 else min(values)) / (below[0] if values is above else ONE)
+    step = max(first, loose * (furthest - row.typed))
     while True:
-        line = _line(model, k, loose * step)
+        line = yield from _ask_line(model, k, loose * step)
         assert line is not None, "a linear rule has no edge"
         saving = best - line.cost
         if saving == slope * step:

@@ -10,7 +10,7 @@ Quantiles and Φ are scipy's, widened by 2⁻³⁶ for the proof (see ``chance``
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import Literal
@@ -18,7 +18,7 @@ from typing import Literal
 import numpy as np
 from scipy.special import ndtr, ndtri
 
-from generator.geometry.chance import Chance, Image, holds, probability, spare, tangent
+from generator.geometry.chance import Chance, Image, Images, holds, probability
 from generator.geometry.decide import decide
 from generator.geometry.nearby import feasible_near
 from generator.geometry.program import Infeasible, Optimum, Program, Unbounded, Vector
@@ -37,6 +37,10 @@ _PATIENCE = 5
 _MOST_TANGENTS = 60
 #: Quantiles beyond this (one failure in 10⁹) are not told apart.
 _SURE = 6.0
+#: A column or row this near to its bound counts as at it; so does a chance with so little to spare.
+_AT_BOUND, _AT_END = 1e-9, 1e-6
+#: A way that needs more than this of itself to be sure is not worth going on.
+_FAR_IN = 2.0**-28
 #: Stands for a proof that no point will do.
 _IMPOSSIBLE: Vector = ()
 
@@ -66,10 +70,13 @@ class Surest:
     at_most: float
 
 
-def assured(program: Program, chances: Sequence[Chance], wanted: float, gap: float = 1e-9) -> Assured:
+def assured(
+    program: Program, chances: Sequence[Chance], wanted: float, gap: float = 1e-9, plain: Vector | None = None
+) -> Assured:
     """The least cost of ``program`` at which every chance holds with probability ``wanted``, ½ ≤ p < 1.
 
-    ``gap``: how far value may lie above ``least``, relative to the largest cost.  Raises ValueError for
+    ``gap``: how far value may lie above ``least``, relative to the largest cost.  ``plain``: the best point of
+    the program with all sides met on their means, where the caller has it already.  Raises ValueError for
     columns that may be negative, a p outside its range, and a cost without a least value.
     """
     if not 0.5 <= wanted < 1.0:
@@ -77,13 +84,16 @@ def assured(program: Program, chances: Sequence[Chance], wanted: float, gap: flo
     if any(low is None or low < 0 for low in program.lower):
         raise ValueError("columns must be ≥ 0")
     linear = _with_rows(program, [side for chance in chances for side in chance.sides])
-    first = decide(linear)
-    if isinstance(first, Infeasible):
-        return Assured(status="impossible")
-    if isinstance(first, Unbounded):
-        raise ValueError("the cost has no least value")
-    if _all_hold(chances, first.x, wanted):
-        return Assured(status="solved", x=first.x, value=first.value, least=first.value)
+    if plain is None:
+        first = decide(linear)
+        if isinstance(first, Infeasible):
+            return Assured(status="impossible")
+        if isinstance(first, Unbounded):
+            raise ValueError("the cost has no least value")
+        plain = first.x
+    if _all_hold(chances, plain, wanted):
+        value = _value(linear, plain)
+        return Assured(status="solved", x=plain, value=value, least=value)
     inner = _Search(linear, chances).inside(wanted, patience=_PATIENCE)
     if not inner:
         return Assured(status="undecided" if inner is None else "impossible")
@@ -138,11 +148,6 @@ def _all_hold(chances: Sequence[Chance], x: Vector, wanted: float) -> bool:
     return all(holds(chance, x, wanted) for chance in chances)
 
 
-def _spare(images: Sequence[Image], x: Floats, wanted: float) -> float:
-    """The least any row has to spare."""
-    return min((spare(image, x, wanted) for image in images), default=1.0)
-
-
 class _Relaxation:
     """A program that grows by rows ≤ 0 and is solved in floats, each time from the basis before."""
 
@@ -151,14 +156,14 @@ class _Relaxation:
         self.own = len(program.rows)
         self.start: Start | None = None
 
-    def add(self, rows: Sequence[Vector]) -> None:
+    def add(self, rows: Floats) -> None:
         """Further rows; their slacks join the basis.  Too many: those that don't bind now are dropped first."""
         more = len(rows)
         if self.stack.shape[0] + more > self.own + _MOST_TANGENTS:
             self._drop_loose()
         m, n = self.stack.shape
         self._set(
-            np.vstack([self.stack.rows, [[float(value) for value in row] for row in rows]]),
+            np.vstack([self.stack.rows, rows]),
             np.append(self.stack.row_low, [[-np.inf] * more], axis=1),
             np.append(self.stack.row_high, [[0.0] * more], axis=1),
         )
@@ -207,7 +212,7 @@ class _Search:
         sizes = [max(map(abs, side)) or _ONE for chance in chances for side in chance.sides]
         rows = len(linear.rows) - len(sizes)
         self.linear, self.chances = linear, chances
-        self.images = [Image.of(chance) for chance in chances]
+        self.images = Images.of([Image.of(chance) for chance in chances])
         self.relaxation = _Relaxation(
             replace(
                 linear,
@@ -226,91 +231,112 @@ class _Search:
 
         After the first one found, ``patience`` more rounds look for one with more to spare.
         """
-        best, most, rounds = None, 0.0, 0
+        found: list[Vector] = []
+        ampler, most, rounds = None, 0.0, 0
         for _ in range(_ROUNDS):
             x = self.relaxation.solve()
             if x is None or x[-1] < 1e-12:
-                return best or (_IMPOSSIBLE if self.relaxation.least() > 0 else None)
+                if found:
+                    break
+                return _IMPOSSIBLE if self.relaxation.least() > 0 else None
             shares = np.maximum(x[:-1], 0.0)
-            spare = _spare(self.images, shares, wanted)
-            if spare > most:
-                exact = feasible_near(self.linear, shares)
-                if exact is not None and _all_hold(self.chances, exact, wanted):
-                    best, most = exact, spare
-            rounds += best is not None
-            if best is not None and (rounds > patience or most > _AMPLE):
-                return best
-            cuts = [cut for image in self.images if (cut := tangent(image, shares, wanted)) is not None]
-            self.relaxation.add([(*cut, _size(cut)) for cut in cuts])
-        return best
+            spare = float(self.images.spares(shares, wanted).min(initial=1.0))
+            if spare > most and found:
+                ampler, most = shares, spare
+            elif spare > most:
+                found = self._exact(shares, wanted)
+                most = spare if found else most
+            rounds += bool(found)
+            if found and (rounds > patience or most > _AMPLE):
+                break
+            cuts = _real(self.images.tangents(shares, wanted))
+            # the last column's term is about the largest of its row
+            self.relaxation.add(np.column_stack([cuts, 2.0 ** np.frexp(np.abs(cuts).max(axis=1))[1]]))
+        if ampler is not None:
+            found = self._exact(ampler, wanted) or found
+        return found[0] if found else None
+
+    def _exact(self, shares: Floats, wanted: float) -> list[Vector]:
+        """The exact point near the shares, if all chances hold there."""
+        exact = feasible_near(self.linear, shares)
+        return [exact] if exact is not None and _all_hold(self.chances, exact, wanted) else []
 
 
-def _size(terms: Vector) -> Fraction:
-    """About the largest term, as a power of two."""
-    return Fraction(2) ** math.frexp(float(max(map(abs, terms))) or 1.0)[1]
+def _real(cuts: Floats) -> Floats:
+    """The tangents that there are."""
+    return cuts[~np.isnan(cuts).any(axis=1)]
 
 
 def _between(linear: Program, chances: Sequence[Chance], wanted: float, inner: Vector, gap: float) -> Assured:
     """Tangents where the way from the interior point to the relaxation's optimum leaves the allowed set."""
-    relaxation, images = _Relaxation(linear), [Image.of(chance) for chance in chances]
+    relaxation, images = _Relaxation(linear), Images.of([Image.of(chance) for chance in chances])
     inside = np.array([float(value) for value in inner])
     cost = np.array([float(value) for value in linear.cost])
     tolerance = gap * float(np.abs(cost).max(initial=0.0))
-    edge = inside
+    edge = outside = inside
     for _ in range(_ROUNDS):
         x = relaxation.solve()
         if x is None:
             break
-        edge = _edge(images, wanted, inside, x)
+        outside, edge = x, inside + images.last(inside, x, wanted) * (x - inside)
         if float(cost @ (edge - x)) <= tolerance / 2:
             break
         # No tangent of a row that x meets can cut x off.
-        broken = [image for image in images if spare(image, x, wanted) < 0]
-        cuts = [cut for image in broken for at in (edge, x) if (cut := _cutting(image, at, x, wanted))]
-        if not cuts:
+        broken = images.some(images.spares(x, wanted) < 0)
+        cuts = _real(np.vstack([broken.tangents(np.maximum(at, 0.0), wanted) for at in (edge, x)]))
+        cuts = cuts[cuts @ x > 1e-14 * np.abs(cuts).max(axis=1, initial=0.0)]
+        if not cuts.size:
             break
         relaxation.add(cuts)
     least = relaxation.least()
-    best = _pulled_in(linear, chances, wanted, inner, edge)
+    best = _pulled_in(linear, chances, images, wanted, outside, (inner, edge))
     value = _value(linear, best)
     return Assured(status="solved", x=best, value=value, least=Fraction(least) if math.isfinite(least) else None)
 
 
-def _pulled_in(linear: Program, chances: Sequence[Chance], wanted: float, inner: Vector, edge: Floats) -> Vector:
-    """An exact point at which all chances hold, as near to ``edge`` as rounding lets it be."""
+def _pulled_in(
+    linear: Program,
+    chances: Sequence[Chance],
+    images: Images,
+    wanted: float,
+    outside: Floats,
+    ends: tuple[Vector, Floats],
+) -> Vector:
+    """An exact point at which all chances hold, as near to the best one as rounding lets it be.
+
+    Where it goes, from the relaxation's optimum ``outside`` with all columns and rows kept that are at a bound;
+    else from the last point on the way from the inner point, back to it (``ends``: inner point, last point).
+    """
+    inner, edge = ends
     inside = np.array([float(value) for value in inner])
-    for step in 2.0 ** np.arange(-44, 0):
-        exact = feasible_near(linear, edge + step * (inside - edge))
-        if exact is not None and _all_hold(chances, exact, wanted):
-            return exact
+    along = _inward(linear, images, wanted, outside)
+    ways = [(edge, inside - edge, 1.0)] if along is None else [(outside, along, _FAR_IN), (edge, inside - edge, 1.0)]
+    for begin, way, most in ways:
+        for step in 2.0 ** np.arange(-44, 0):
+            point = begin + step * way
+            if step > most or not images.seem_held(point, wanted):
+                continue
+            exact = feasible_near(linear, point)
+            if exact is not None and _all_hold(chances, exact, wanted):
+                return exact
     return inner
+
+
+def _inward(linear: Program, images: Images, wanted: float, begin: Floats) -> Floats | None:
+    """A way that makes all chances near their end surer and moves no column or row off its bound."""
+    stack = stack_of([linear])
+    values = stack.rows @ begin
+    size = np.abs(stack.rows) @ np.abs(begin)
+    held = stack.rows[np.minimum(abs(values - stack.row_low[0]), abs(stack.row_high[0] - values)) <= _AT_BOUND * size]
+    moving = np.minimum(begin - stack.lower[0], stack.upper[0] - begin) > _AT_BOUND
+    near = _real(images.some(images.spares(begin, wanted) < _AT_END).tangents(np.maximum(begin, 0.0), wanted))
+    rows = np.vstack([held, near])[:, moving]
+    rows = rows / np.maximum(np.abs(rows).max(axis=1, initial=0.0, keepdims=True), 1e-300)
+    target = np.concatenate([np.zeros(len(held)), -np.ones(len(near))])
+    way = np.zeros(begin.size)
+    way[moving] = np.linalg.lstsq(rows, target, rcond=None)[0]
+    return way if np.abs(rows @ way[moving] - target).max(initial=0.0) < 1e-6 else None
 
 
 def _value(program: Program, x: Vector) -> Fraction:
     return sum((c * share for c, share in zip(program.cost, x, strict=True)), _ZERO)
-
-
-def _edge(images: Sequence[Image], wanted: float, inside: Floats, outside: Floats) -> Floats:
-    """The last point on the way from inside to outside at which all chances hold, in floats."""
-    way = outside - inside
-    return inside + _last(lambda t: _spare(images, inside + t * way, wanted) >= 0) * way
-
-
-def _cutting(image: Image, x: Floats, outside: Floats, wanted: float) -> Vector | None:
-    """The tangent at x if it cuts off ``outside``."""
-    cut = tangent(image, np.maximum(x, 0.0), wanted)
-    if cut is None:
-        return None
-    terms = np.array([float(value) for value in cut])
-    return cut if float(terms @ outside) > 1e-14 * float(np.abs(terms).max()) else None
-
-
-def _last(holds: Callable[[float], bool]) -> float:
-    """The greatest t in [0, 1] (to 2⁻⁴⁰) up to which a claim holds that holds at 0."""
-    if holds(1.0):
-        return 1.0
-    low, high = 0.0, 1.0
-    for _ in range(40):
-        middle = (low + high) / 2
-        low, high = (middle, high) if holds(middle) else (low, middle)
-    return low

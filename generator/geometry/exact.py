@@ -14,16 +14,18 @@ from generator.geometry.bland import exact_simplex
 from generator.geometry.checks import proves_infeasible, proves_optimum, proves_unbounded
 from generator.geometry.elimination import cleared, solve_square
 from generator.geometry.integral import Integral, integral, rest
-from generator.geometry.program import Basis, Infeasible, Optimum, Program
+from generator.geometry.program import Basis, Infeasible, Optimum, Program, Vector
 
 __all__ = [
     "exact_simplex",
     "farkas_on_basis",
+    "point_on_basis",
     "proves_infeasible",
     "proves_optimum",
     "proves_unbounded",
     "rounded_farkas",
     "solve_on_basis",
+    "vertex_on_basis",
 ]
 
 #: Bits kept of a proposed weight: powers of two, the usual row scales, pass unchanged.
@@ -34,6 +36,15 @@ def solve_on_basis(program: Program, basis: Basis, form: Integral | None = None)
     """The optimum that the basis stands for, checked; None where it is singular or not optimal.
 
     ``form`` is ``integral(program)`` where the caller has it already.
+    """
+    optimum = vertex_on_basis(program, basis, form)
+    return optimum if optimum is not None and proves_optimum(program, optimum) else None
+
+
+def vertex_on_basis(program: Program, basis: Basis, form: Integral | None = None) -> Optimum | None:
+    """The feasible point and the multipliers that the basis stands for; None where it is singular or not feasible.
+
+    Whether it is optimal is not asked: that is for whoever has proven it already.
     """
     form = form or integral(program)
     layout = _layout(form, basis)
@@ -49,8 +60,22 @@ def solve_on_basis(program: Program, basis: Basis, form: Integral | None = None)
         weights[k] = weight
     x = form.shares(*point)
     value = sum((c * v for c, v in zip(program.cost, x, strict=True) if c and v), Fraction(0))
-    optimum = Optimum(x, value, form.multipliers(weights, solved[1]), basis)
-    return optimum if proves_optimum(program, optimum) else None
+    return Optimum(x, value, form.multipliers(weights, solved[1]), basis)
+
+
+def point_on_basis(program: Program, basis: Basis, form: Integral | None = None) -> tuple[Vector, Fraction] | None:
+    """The feasible point that the basis stands for, and its value; None where it is singular or not feasible.
+
+    Whether the point is a best one is not asked: that is for whoever has proven it already.
+    """
+    form = form or integral(program)
+    layout = _layout(form, basis)
+    point = layout and _basic_point(form, basis, *layout)
+    if point is None or not all(_is_within(form, column, *point) for column in basis.basic):
+        return None
+    values, denominator = point
+    value = sum(c * v for c, v in zip(form.cost, values, strict=False) if c and v)
+    return form.shares(values, denominator), Fraction(value, denominator * form.unit * form.cost_scale)
 
 
 def farkas_on_basis(

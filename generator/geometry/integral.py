@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from fractions import Fraction
+from math import lcm
 
 from generator.geometry.elimination import cleared, common_denominator, whole
 from generator.geometry.program import Program, Vector
@@ -37,20 +38,37 @@ class Integral:
         return tuple(Fraction(value * scale, below) for value, scale in zip(numerators, self.row_scale, strict=True))
 
 
-def integral(program: Program) -> Integral:
-    """The program in whole numbers."""
+@dataclass(slots=True)
+class Memory:
+    """Vectors that were brought to whole numbers before, by identity: programs of one order share their rows."""
+
+    known: dict[int, tuple[Vector, list[int], int]] = field(default_factory=dict)
+
+    def cleared(self, vector: Vector) -> tuple[list[int], int]:
+        """As :func:`generator.geometry.elimination.cleared`; the list is not to be changed."""
+        kept = self.known.get(id(vector))
+        if kept is None:
+            # the vector is kept as well, so that no other one can take its place in storage
+            kept = self.known[id(vector)] = (vector, *cleared(vector))
+        return kept[1], kept[2]
+
+
+def integral(program: Program, memory: Memory | None = None) -> Integral:
+    """The program in whole numbers; ``memory`` spares the work on vectors that were seen before."""
+    memory = memory or Memory()
     unit = common_denominator((*program.lower, *program.upper))
     rows: list[list[int]] = []
     row_scale: list[int] = []
     floor = [None if bound is None else whole(bound, unit) for bound in program.lower]
     ceiling = [None if bound is None else whole(bound, unit) for bound in program.upper]
     for row, low, high in zip(program.rows, program.row_low, program.row_high, strict=True):
-        scale = common_denominator((*row, low, high))
-        rows.append([whole(value, scale) for value in row])
+        values, own = memory.cleared(row)
+        scale = lcm(own, common_denominator((low, high)))
+        rows.append(values if scale == own else [value * (scale // own) for value in values])
         row_scale.append(scale)
         floor.append(None if low is None else whole(low, scale) * unit)
         ceiling.append(None if high is None else whole(high, scale) * unit)
-    cost, cost_scale = cleared(program.cost)
+    cost, cost_scale = memory.cleared(program.cost)
     return Integral(rows, floor, ceiling, cost, unit, row_scale, cost_scale)
 
 

@@ -14,6 +14,8 @@ from typing import Any, Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from generator.geometry.muted import muted
+
 Floats = NDArray[np.float64]
 Status = Literal["proven", "stopped", "infeasible", "unbounded", "unknown"]
 
@@ -63,22 +65,23 @@ def search(program: Mixed, *, nodes: int, seconds: float, gap: float = 0.0) -> F
     matrix, low, high = _scaled(program)
     cost = np.array(program.cost, dtype=np.float64)
     scale = float(_power_of_two(np.abs(cost).max(initial=0.0, keepdims=True))[0])
-    integrality = np.zeros(n)
+    integrality = np.zeros(n, dtype=np.int64)
     integrality[sorted(program.whole)] = 1
-    result: Any = milp(
-        cost * scale,
-        constraints=LinearConstraint(matrix, low, high) if len(low) else None,
-        bounds=Bounds(0.0, np.array(program.upper, dtype=np.float64)),
-        integrality=integrality,
-        options={"node_limit": max(1, nodes), "time_limit": max(0.1, seconds), "mip_rel_gap": gap},
-    )
+    with muted():
+        result: Any = milp(
+            cost * scale,
+            constraints=LinearConstraint(matrix, low, high) if len(low) else None,
+            bounds=Bounds(0.0, np.array(program.upper, dtype=np.float64)),
+            integrality=integrality,
+            options={"node_limit": max(1, nodes), "time_limit": max(0.1, seconds), "mip_rel_gap": gap},
+        )
     spent = int(getattr(result, "mip_node_count", None) or 0)
     status = _STATUS.get(int(result.status), "unknown")
     if result.x is None:
         return Found(status=status if status != "proven" else "unknown", nodes=spent)
     bound = getattr(result, "mip_dual_bound", None)
     value = float(cost @ result.x)
-    below = value if bound is None or status == "proven" and not program.whole else float(bound) / scale
+    below = value if bound is None or (status == "proven" and not program.whole) else float(bound) / scale
     return Found(status=status, x=np.asarray(result.x), value=value, bound=below, nodes=spent)
 
 
@@ -88,13 +91,14 @@ _STATUS: dict[int, Status] = {0: "proven", 1: "stopped", 2: "infeasible", 3: "un
 def linear(program: Mixed) -> Found:
     """The optimum with whole numbers waived, and its row multipliers."""
     from scipy.optimize import linprog
+    from scipy.sparse import vstack
 
     matrix, low, high, scales = *_scaled(program), _row_scales(program)
     equal = low == high
     has_low, has_high = ~equal & np.isfinite(low), ~equal & np.isfinite(high)
-    from scipy.sparse import vstack
 
-    result: Any = linprog(
+    solver: Any = linprog  # its stubs know no sparse matrices
+    result = solver(
         np.array(program.cost, dtype=np.float64),
         A_ub=vstack([-matrix[has_low], matrix[has_high]]).tocsr() if (has_low | has_high).any() else None,
         b_ub=np.concatenate([-low[has_low], high[has_high]]) if (has_low | has_high).any() else None,

@@ -110,9 +110,10 @@ def stack_of(programs: Sequence[Program]) -> Stack:
         raise ValueError("programs of different shapes")
     first = programs[0].rows
     shared = all(program.rows is first or program.rows == first for program in programs)
-    matrices = [float_table(program.rows, n) for program in (programs[:1] if shared else programs)]
+    asked = programs[:1] if shared else programs
+    rows = float_table([row for program in asked for row in program.rows], n).reshape(len(asked), m, n)
     return Stack(
-        rows=matrices[0] if shared else np.array(matrices),
+        rows=rows[0] if shared else rows,
         row_low=float_table([program.row_low for program in programs], m, -np.inf),
         row_high=float_table([program.row_high for program in programs], m, np.inf),
         lower=float_table([program.lower for program in programs], n, -np.inf),

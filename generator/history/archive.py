@@ -16,6 +16,7 @@ from __future__ import annotations
 
 import contextlib
 import json
+import os
 import re
 import shutil
 import time
@@ -53,6 +54,10 @@ _LOCK_PAUSE = 0.05
 
 class DamagedError(HullbookError):
     """A revision is not what was recorded."""
+
+
+class OvertakenError(HullbookError):
+    """Another program has recorded a revision since the draft was made: its changes must be told anew."""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -104,7 +109,8 @@ class Draft:
     """What a new revision is made of, but for its number and digest.
 
     ``results`` and ``changes`` make the bytes of the two files once the number is known: ``results``
-    gets the mark with an empty digest.  ``cause`` is "inputs" or "program version".
+    gets the mark with an empty digest.  ``cause`` is "inputs" or "program version".  ``since`` is the
+    digest of the revision that ``changes`` were found against ("" for a first one; None: never mind).
     """
 
     inputs: Mapping[str, bytes]
@@ -115,6 +121,7 @@ class Draft:
     moment: datetime
     program: str
     engine: str
+    since: str | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -135,20 +142,31 @@ class Entry:
     path: Path
     name: str
 
+    @property
+    def moment(self) -> datetime:
+        """When it was recorded, as its name says; long ago where that is no moment at all."""
+        match = _FOLDER.fullmatch(self.name)
+        try:
+            return datetime.strptime(match[2] if match else "", "%Y-%m-%dT%H%M%SZ").replace(tzinfo=UTC)
+        except ValueError:
+            return datetime(1970, 1, 1, tzinfo=UTC)
+
 
 def head_key(folder: Path) -> str:
     """Digest which revisions there are, by their names alone: cheap, for fingerprints."""
-    return digest_of([entry.name for entry in entries(folder)])
+    return digest_of(_names(folder))
 
 
-def read_history(folder: Path) -> History:
-    """Read all undamaged revisions of a history folder, by their ``revision.json``; others are named.
+def read_history(folder: Path, *, newest: int | None = None) -> History:
+    """Read the undamaged revisions of a history folder, by their ``revision.json``; others are named.
 
-    Files are not read (:func:`contents` does that, and ``check``).  Nothing is raised.
+    Only the ``newest`` so many folders are looked at, if that is given.  Files are not read
+    (:func:`contents` does that, and ``check``).  Nothing is raised.
     """
     revisions: list[Revision] = []
     problems: list[Problem] = []
-    for entry in entries(folder):
+    found = entries(folder)
+    for entry in found if newest is None else found[-newest:]:
         try:
             revisions.append(read_revision(entry))
         except DamagedError as error:
@@ -173,25 +191,36 @@ def record(folder: Path, draft: Draft) -> Revision:
     """Write a new revision, whole or not at all, and return it; the first gets number 1.
 
     Where another program has recorded the same inputs meanwhile with the same engine, that revision
-    is returned instead.  Raises WriteError (disk full, read-only) or LockedError.
+    is returned instead.  Raises WriteError (disk full, read-only), LockedError, or OvertakenError
+    where the newest revision is not the one that the draft's changes were found against.
     """
     try:
-        folder.mkdir(parents=True, exist_ok=True)
+        folder.mkdir(exist_ok=True)  # without parents: a campaign that was moved away must not come back empty
     except OSError as error:
         raise WriteError(f"the history can't be written ({reason(error)})") from error
     with _locked(folder):
         sweep([folder])  # the lock is held, so no other recorder is at work
-        head = read_history(folder).head
+        head = _head(folder)
         if head is not None and head.engine == draft.engine and head.holds(draft.inputs):
             return head
+        if draft.since is not None and draft.since != (head.digest if head else ""):
+            raise OvertakenError("another program has recorded a revision meanwhile")
         return _write(folder, draft, head)
+
+
+def _head(folder: Path) -> Revision | None:
+    """The newest undamaged revision, looked for from the newest back."""
+    for entry in reversed(entries(folder)):
+        with contextlib.suppress(DamagedError):
+            return read_revision(entry)
+    return None
 
 
 def can_record(folder: Path) -> bool:
     """Whether a revision could be recorded now, as far as a small trial tells."""
     trial = unfinished(folder)
     try:
-        folder.mkdir(parents=True, exist_ok=True)
+        folder.mkdir(exist_ok=True)
         create(trial, b"")
         trial.unlink()
     except OSError:
@@ -201,11 +230,7 @@ def can_record(folder: Path) -> bool:
 
 def entries(folder: Path) -> list[Entry]:
     """List the revision folders by number; of two with one number (which no recorder makes) both."""
-    try:
-        names = sorted(path.name for path in folder.iterdir())
-    except OSError:
-        return []
-    matches = [(name, _FOLDER.fullmatch(name)) for name in names]
+    matches = [(name, _FOLDER.fullmatch(name)) for name in _names(folder)]
     return sorted(
         (
             Entry(number=int(match[1]), short_digest=match[3], path=folder / name, name=name)
@@ -214,6 +239,14 @@ def entries(folder: Path) -> list[Entry]:
         ),
         key=lambda entry: (entry.number, entry.name),
     )
+
+
+def _names(folder: Path) -> list[str]:
+    """The names of revision folders, sorted."""
+    try:
+        return sorted(name for name in os.listdir(folder) if _FOLDER.fullmatch(name))  # noqa: PTH208 - names alone
+    except OSError:
+        return []
 
 
 def read_revision(entry: Entry) -> Revision:
@@ -316,7 +349,8 @@ def _write_folder(target: Path, files: Mapping[str, bytes]) -> None:
     """Write the folder beside its place, wait until the disk has it, and rename it into place."""
     beside = unfinished(target.parent)
     try:
-        (beside / "inputs").mkdir(parents=True)
+        beside.mkdir()
+        (beside / "inputs").mkdir()
         for path, data in sorted(files.items()):
             create(beside / path, data, durable=True)
         sync_folder(beside / "inputs")

@@ -14,7 +14,7 @@ from dataclasses import dataclass, replace
 from fractions import Fraction
 from itertools import combinations
 
-from generator.findings.records import Findings, OrderFinding
+from generator.findings.records import Findings
 from generator.history.division import MOST_EXACT, SAMPLED_ORDERS, divided
 from generator.history.edits import renamed
 from generator.history.records import Cause, Change, Edit, Part
@@ -28,7 +28,7 @@ MOST_IN_ALL = 3000
 #: Costs and rooms are floats in findings: a difference below this is none.
 _SAME = 1e-9
 
-TOO_MANY = "Too many answers changed in this revision to divide each among its edits."
+TOO_MANY = "Too many answers changed in this revision to find the causes of each."
 TOGETHER = "The edits can't be told apart here: made one by one, they leave no answer in between."
 UNTOLD = "The edits alone do not account for this change."
 PROGRAM = "program version"
@@ -48,14 +48,15 @@ def explained(
     edits: Sequence[Edit],
     changes: Sequence[Change],
     *,
+    same_program: bool = False,
     most: int = MOST_IN_ALL,
-    most_for_a_verdict: int = MOST_FOR_A_VERDICT,
 ) -> tuple[Change, ...]:
     """The changes with the causes of changed verdicts, costs and rooms; at most ``most`` answers are asked again.
 
-    Verdicts come first, then the greatest changes of cost and room.
+    Verdicts come first, then the greatest changes of cost and room.  ``same_program``: both answers were found
+    by this very program, so that a change that one edit alone can have made needs no replay.
     """
-    work = _Work(old, new, edits, most, most_for_a_verdict)
+    work = _Work(old, new, edits, most, same_program=same_program)
     told = list(changes)
     for position in sorted(range(len(changes)), key=lambda position: _urgency(changes[position])):
         told[position] = work.told(changes[position])
@@ -73,12 +74,12 @@ def _urgency(change: Change) -> tuple[int, float]:
 class _Work:
     """The causes of one revision's changes, and how many answers may still be asked again."""
 
-    def __init__(self, old: Side, new: Side, edits: Sequence[Edit], most: int, most_for_a_verdict: int) -> None:
+    def __init__(self, old: Side, new: Side, edits: Sequence[Edit], most: int, *, same_program: bool) -> None:
         self._old = old
         self._new = new
         self._edits = edits
         self._left = most
-        self._most_for_a_verdict = most_for_a_verdict
+        self._same_program = same_program
         self._was = {name: was for was, name in renamed(edits, "order").items()}
         self._before = {order.order: order for order in old.findings.orders}
         self._replays: dict[str, Replay] = {}
@@ -89,8 +90,9 @@ class _Work:
             return change
         replay = self._replay(change.subject)
         asked = replay.asked
+        cause: Cause | None
         if change.kind == "verdict":
-            cause = verdict_cause(replay, change.old, change.new, min(self._left, self._most_for_a_verdict))
+            cause = self._verdict_cause(replay, change)
         else:
             question: Question = "cost" if change.kind == "cost" else "room"
             cause = self._number_cause(replay, change, question)
@@ -103,10 +105,19 @@ class _Work:
             self._replays[order] = Replay(self._old.campaign, self._new.campaign, self._edits, order, was)
         return self._replays[order]
 
+    def _verdict_cause(self, replay: Replay, change: Change) -> Cause:
+        relevant = replay.relevant("verdict")
+        if self._same_program and len(relevant) == 1:
+            return Cause(suffices=(relevant,), at_least=1, restores=relevant)
+        return verdict_cause(replay, change.old, change.new, min(self._left, MOST_FOR_A_VERDICT))
+
     def _number_cause(self, replay: Replay, change: Change, question: Question) -> Cause | None:
         if not isinstance(change.old, float) or not isinstance(change.new, float):
             return None
         groups = grouped(self._edits, replay.relevant(question))
+        if self._same_program and len(groups) == 1:
+            ((group, positions),) = groups.items()
+            return Cause(parts=(Part(group=group, edits=positions, amount=change.new - change.old),))
         needed = 2 ** len(groups) if len(groups) <= MOST_EXACT else SAMPLED_ORDERS * len(groups)
         if needed > self._left:
             return Cause(remark=TOO_MANY)
@@ -123,6 +134,8 @@ def grouped(edits: Sequence[Edit], chosen: Iterable[int]) -> dict[str, tuple[int
 
 def verdict_cause(replay: Replay, old: object, new: object, most: int = MOST_FOR_A_VERDICT) -> Cause:
     """Why a verdict changed from ``old`` to ``new`` (None: no answer); at most about ``most`` replays."""
+    if most <= 0:
+        return Cause(remark=TOO_MANY)
     wanted, was = str(new or NO_ANSWER), str(old or NO_ANSWER)
     every = replay.relevant("verdict")
     start = replay.verdict(())
@@ -146,7 +159,7 @@ def verdict_cause(replay: Replay, old: object, new: object, most: int = MOST_FOR
 def _smallest(replay: Replay, every: Sequence[int], wanted: str, until: int) -> tuple[tuple[tuple[int, ...], ...], int]:
     """All smallest sets that give the wanted verdict; none if the replays run out, and what is then known."""
     for size in range(1, len(every) + 1):
-        found = []
+        found: list[tuple[int, ...]] = []
         for chosen in combinations(every, size):
             if replay.asked >= until:
                 return tuple(found), size
@@ -212,8 +225,3 @@ def _value_of(
         return replay.number(question, [position for player in players for position in groups[player]])
 
     return value
-
-
-def order_named(findings: Findings, name: str) -> OrderFinding | None:
-    """The finding of an order, or None."""
-    return next((order for order in findings.orders if order.order == name), None)

@@ -1,99 +1,86 @@
 """What changed between the answers of two revisions: a pure function of two Findings.
 
 ``changes(a, a) == ()``.  A difference counts as a change when it shows at the precision that pages
-print; an answer that an older program did not give (null) is no change.  In a sentence the newer
-answer comes first.
+print, a share when it moved by at least ``SHARE_MOVED``; an answer that an older program did not give
+(null) is no change.  In a sentence the newer answer comes first.
 """
 
 from __future__ import annotations
 
-import json
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import asdict, dataclass
-from typing import Literal, get_args
+from collections.abc import Mapping, Sequence
+from dataclasses import replace
+from typing import TypeVar
 
 from generator import numbers
 from generator.findings.records import Findings, HullFinding, LotFinding, OrderFinding, Plan, Recipe
+from generator.history.records import GRAVITY, Change, ChangeKind, Value
 
-Kind = Literal[
-    "verdict",
-    "order gone",
-    "order new",
-    "accepted",
-    "amount",
-    "cost",
-    "room",
-    "recipe",
-    "lot gone",
-    "lot new",
-    "role",
-    "hull",
-]
-Value = str | float | None
-
-#: Gravest first: the order in which changes are listed, and from which the headline is taken.
-_GRAVITY: tuple[Kind, ...] = get_args(Kind)
 _BETTER_FIRST = ("makeable", "edge", "short", "barred", "unreachable", None)
 #: Costs and amounts are told to so many significant digits, enough to see a change worth telling.
 _DIGITS = 5
 _ROOM_DIGITS = 3
+_VOLUME_DIGITS = 4
 #: A recipe has moved when a share did by as much as pages print: 0.1 %.
-_SHARE_MOVED = 0.001
+SHARE_MOVED = 0.001
 
-NO_CHANGE = "No answer changed."
-FIRST = "First answers."
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Change:
-    """One answer that differs: of which order, lot or hull, what it was and what it is."""
-
-    kind: Kind
-    subject: str
-    old: Value
-    new: Value
-    sentence: str
+_Value = TypeVar("_Value")
 
 
-def changes(old: Findings, new: Findings) -> tuple[Change, ...]:
-    """Every answer that differs, gravest kind first, then in the order of the newer findings."""
+def changes(
+    old: Findings,
+    new: Findings,
+    *,
+    renamed_orders: Mapping[str, str] | None = None,
+    renamed_lots: Mapping[str, str] | None = None,
+) -> tuple[Change, ...]:
+    """Every answer that differs, gravest kind first, then in the order of the newer findings.
+
+    Orders and lots that were renamed (older name → newer) are compared under their newer names.
+    """
+    old = _under_new_names(old, renamed_orders or {}, renamed_lots or {})
     found = [
         *_order_changes(old, new),
         *_plan_changes(old.plan, new.plan, new.quantity_unit),
         *_lot_changes(old.lots, new.lots),
         *_hull_changes(old.hulls, new.hulls),
     ]
-    return tuple(sorted(found, key=lambda change: (_GRAVITY.index(change.kind), _loss(change))))
+    return tuple(sorted(found, key=lambda change: (GRAVITY.index(change.kind), _loss(change))))
 
 
-def headline(found: Sequence[Change]) -> str:
-    """One sentence for a list of changes: the gravest one, and how many more there are."""
-    if not found:
-        return NO_CHANGE
-    more = len(found) - 1
-    if more == 0:
-        return found[0].sentence
-    return f"{found[0].sentence.removesuffix('.')}, and {more} more change{'s' if more > 1 else ''}."
+def is_lost(change: Change) -> bool:
+    """Whether a changed verdict is worse than it was."""
+    return change.kind == "verdict" and _rank(change.new) > _rank(change.old)
 
 
-def to_bytes(found: Iterable[Change]) -> bytes:
-    """Make the content of ``changes.json``."""
-    return json.dumps([asdict(change) for change in found], indent=1, ensure_ascii=False).encode() + b"\n"
+def _under_new_names(old: Findings, orders: Mapping[str, str], lots: Mapping[str, str]) -> Findings:
+    """The older findings with renamed orders and lots under their newer names, where answers are compared."""
+    if not orders and not lots:
+        return old
+    renamed = [replace(order, order=orders.get(order.order, order.order)) for order in old.orders]
+    plan = old.plan
+    return replace(
+        old,
+        orders=tuple(
+            replace(order, recipes={name: _recipe_under(recipe, lots) for name, recipe in order.recipes.items()})
+            for order in renamed
+        ),
+        lots=tuple(replace(lot, lot=lots.get(lot.lot, lot.lot)) for lot in old.lots),
+        hulls=tuple(replace(hull, corners=tuple(lots.get(lot, lot) for lot in hull.corners)) for hull in old.hulls),
+        plan=None if plan is None else replace(plan, orders=_keys_renamed(plan.orders, orders)),
+    )
 
 
-def from_bytes(data: bytes) -> tuple[Change, ...]:
-    """Read what :func:`to_bytes` made; ValueError if it is something else."""
-    try:
-        return tuple(Change(**item) for item in json.loads(data))
-    except TypeError as error:
-        raise ValueError("changes.json is not a list of changes") from error
+def _recipe_under(recipe: Recipe, lots: Mapping[str, str]) -> Recipe:
+    return replace(recipe, shares=_keys_renamed(recipe.shares, lots))
+
+
+def _keys_renamed(mapping: Mapping[str, _Value], names: Mapping[str, str]) -> dict[str, _Value]:
+    return {names.get(key, key): value for key, value in mapping.items()}
 
 
 def _loss(change: Change) -> int:
     """Lost verdicts come before gained ones; of other kinds all are alike."""
-    if change.kind != "verdict":
-        return 0
-    return 0 if _rank(change.new) > _rank(change.old) else 1
+    return 0 if change.kind != "verdict" or is_lost(change) else 1
 
 
 def _rank(verdict: Value) -> int:
@@ -166,7 +153,21 @@ def _recipe_changes(old: OrderFinding, new: OrderFinding, unit: str) -> list[Cha
     before, after = old.recipes.get("cheapest"), new.recipes.get("cheapest")
     if before is None or after is None:
         return []
-    return [*_cost_changes(new.order, before.cost, after.cost, unit), *_share_changes(new.order, before, after)]
+    return [
+        *_cost_changes(new.order, before.cost, after.cost, unit),
+        *_conformity_changes(new.order, before.conformity.all, after.conformity.all),
+        *_share_changes(new.order, before, after),
+    ]
+
+
+def _conformity_changes(order: str, before: float | None, after: float | None) -> list[Change]:
+    if before is None or after is None:
+        return []
+    was, now = numbers.text(100 * before, 1), numbers.text(100 * after, 1)
+    if was == now:
+        return []
+    sentence = f"Order {order}: the cheapest recipe holds all limits with {now} %; it was {was} %."
+    return [Change(kind="conformity", subject=order, old=before, new=after, sentence=sentence)]
 
 
 def _cost_changes(order: str, before: float | None, after: float | None, unit: str) -> list[Change]:
@@ -182,24 +183,26 @@ def _cost_changes(order: str, before: float | None, after: float | None, unit: s
 def _share_changes(order: str, before: Recipe, after: Recipe) -> list[Change]:
     lots = dict.fromkeys([*after.shares, *before.shares])
     moves = {lot: after.shares.get(lot, 0.0) - before.shares.get(lot, 0.0) for lot in lots}
-    most = max(moves, key=lambda lot: abs(moves[lot]), default=None)
-    if most is None or abs(moves[most]) < _SHARE_MOVED:
+    moved = [lot for lot, by in moves.items() if abs(by) >= SHARE_MOVED]
+    if not moved:
         return []
+    most = max(moved, key=lambda lot: abs(moves[lot]))
     was, now = before.shares.get(most, 0.0), after.shares.get(most, 0.0)
     shown = f"{numbers.text(100 * now, 1)} % from {numbers.text(100 * was, 1)} %"
-    sentence = f"Order {order}: the cheapest recipe moved, most of all lot {most}, to {shown}."
+    others = f" ({len(moved)} lots moved)" if len(moved) > 2 else ""
+    sentence = f"Order {order}: the cheapest recipe moved, most of all lot {most}, to {shown}{others}."
     return [Change(kind="recipe", subject=order, old=was, new=now, sentence=sentence)]
 
 
 def _room_changes(old: OrderFinding, new: OrderFinding) -> list[Change]:
     if old.room_unit != new.room_unit:
         return []
-    unit = " sd" if new.room_unit == "sd" else ""
+    unit = {"sd": " sd", "scale": " scale steps"}.get(new.room_unit or "", "")
     return _moved("room", new.order, "room", old.room, new.room, unit, _ROOM_DIGITS)
 
 
 def _moved(
-    kind: Kind, order: str, what: str, old: float | None, new: float | None, unit: str, digits: int
+    kind: ChangeKind, order: str, what: str, old: float | None, new: float | None, unit: str, digits: int
 ) -> list[Change]:
     """Tell of a number that was known and is known, and prints differently."""
     if old is None or new is None:
@@ -257,15 +260,37 @@ def _article(role: str) -> str:
 
 
 def _hull_changes(old: Sequence[HullFinding], new: Sequence[HullFinding]) -> list[Change]:
-    """Tell of hulls over the same components whose dimension changed."""
-    before = {(hull.basis, hull.over): hull.dimension for hull in old}
+    """Tell of hulls over the same components: their dimension, corners gained and lost, their volume."""
+    before = {(hull.basis, hull.over): hull for hull in old}
     found: list[Change] = []
     for hull in new:
         was = before.get((hull.basis, hull.over))
-        if was is not None and was != hull.dimension:
-            over = ", ".join(hull.over)
-            sentence = (
-                f"The hull over {over} ({hull.basis}) is now of dimension {hull.dimension}; it was of dimension {was}."
-            )
-            found.append(Change(kind="hull", subject=over, old=was, new=hull.dimension, sentence=sentence))
+        if was is not None:
+            found += _one_hull(was, hull)
     return found
+
+
+def _one_hull(old: HullFinding, new: HullFinding) -> list[Change]:
+    over = ", ".join(new.over)
+    name = f"The hull over {over} ({new.basis})"
+    found: list[Change] = []
+    if old.dimension != new.dimension:
+        sentence = f"{name} is now of dimension {new.dimension}; it was of dimension {old.dimension}."
+        found.append(Change(kind="hull", subject=over, old=old.dimension, new=new.dimension, sentence=sentence))
+    lost = ", ".join(lot for lot in old.corners if lot not in new.corners)
+    gained = ", ".join(lot for lot in new.corners if lot not in old.corners)
+    if lost or gained:
+        said = [f"gained {gained} as a corner" if gained else "", f"lost {lost}" if lost else ""]
+        sentence = f"{name} {' and '.join(part for part in said if part)}."
+        found.append(Change(kind="hull", subject=over, old=lost or None, new=gained or None, sentence=sentence))
+    return found + _volume_changes(name, over, old.volume, new.volume)
+
+
+def _volume_changes(name: str, over: str, old: float | None, new: float | None) -> list[Change]:
+    if old is None or new is None:
+        return []
+    before, after = numbers.significant(old, _VOLUME_DIGITS), numbers.significant(new, _VOLUME_DIGITS)
+    if before == after:
+        return []
+    sentence = f"{name}: its volume {'grew' if new > old else 'shrank'} to {after} from {before}."
+    return [Change(kind="volume", subject=over, old=old, new=new, sentence=sentence)]

@@ -18,9 +18,9 @@ Value = Callable[[frozenset[int]], Fraction | None]
 
 #: Up to so many players every subset is asked: 256 answers.
 MOST_EXACT = 8
-#: Orders sampled beyond that, half of them the others reversed; the seed makes them the same every time.
+#: Orders sampled beyond that, half of them the others reversed; the same ones every time.
 SAMPLED_ORDERS = 48
-_SEED = 20260302
+_START = 20260302
 
 
 @dataclass(frozen=True, slots=True)
@@ -74,7 +74,7 @@ def _ways(
 
 def _sampled(players: int, value: Value) -> Division | None:
     """The mean over sampled orders, each beside its reverse, which takes out much of the chance."""
-    chance = random.Random(_SEED)  # noqa: S311  (the same orders every time are what is wanted)
+    chance = random.Random(_START)  # noqa: S311  (the same orders every time are what is wanted)
     order = list(range(players))
     samples: list[list[Fraction]] = []
     for _ in range(SAMPLED_ORDERS // 2):

@@ -221,7 +221,7 @@ def _moved(old: str, new: str, unit: str = "") -> str:
 
 
 def _with(text: str, unit: str) -> str:
-    return f"{text} {unit}" if unit and text != "unlimited" else text
+    return f"{text}\N{NO-BREAK SPACE}{unit}" if unit and text != "unlimited" else text
 
 
 def _text(value: object, item: str) -> str:

@@ -48,11 +48,12 @@ class _Found:
         self._wording = wording
         self._edits: list[Edit] = []
         self._shared: dict[tuple[str, str], list[CellChange]] = {}
+        self._last: list[Edit] = []
 
     def all(self) -> tuple[Edit, ...]:
-        """Shared edits first, each with everything that follows from it."""
+        """Shared edits first, each with everything that follows from it; the notes last."""
         together = [self._wording.shared(key, tuple(cells)) for key, cells in self._shared.items()]
-        return (*together, *self._edits)
+        return (*together, *self._edits, *self._last)
 
     def settings(self, old: Cells, new: Cells) -> None:
         """Note the settings that differ; all that was declared anew of one component is one edit."""
@@ -62,6 +63,8 @@ class _Found:
                 self._shared.setdefault(("component", path[1]), []).append(cell)
             elif path == ("setting", "accept"):
                 self._shared.setdefault(path, []).append(cell)
+            elif path == ("notes",):
+                self._last.append(self._wording.setting(cell))
             else:
                 self._edits.append(self._wording.setting(cell))
 

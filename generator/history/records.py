@@ -34,6 +34,8 @@ GRAVITY: tuple[ChangeKind, ...] = get_args(ChangeKind)
 
 #: The paths of a campaign's meaning and the values there: ("lot", name, "assay", component), …
 Path = tuple[str, ...]
+#: A place in a plane: across, up.
+Pair = tuple[float, float]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -125,7 +127,7 @@ class Change:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class OrderPoint:
-    """One order in one revision, as trends draw it; ``verdict`` "none": no answer."""
+    """One order in one revision, as trends draw it; ``verdict`` "none": no answer; ``room`` in sd."""
 
     verdict: str
     cost: float | None = None
@@ -151,16 +153,52 @@ class Summary:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Outline:
+    """The lots of two revisions in one plane: (across, up) by lot, on the limits' bases."""
+
+    labels: tuple[str, str]
+    units: tuple[str, str]
+    old: Mapping[str, Pair]
+    new: Mapping[str, Pair]
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Comparison:
+    """What changed since an earlier revision: the one before, the first, one a week before.
+
+    ``number`` and ``recorded`` are the earlier revision's; ``title`` says which one it is.  ``changes``
+    hold their causes; ``by_program``: another version of the program gave the earlier answers.
+    ``remark`` says why something is missing, if it is.
+    """
+
+    number: int
+    recorded: str
+    title: str
+    edits: tuple[Edit, ...] = ()
+    changes: tuple[Change, ...] = ()
+    by_program: bool = False
+    remark: str = ""
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Story:
     """What ``changes.json`` keeps of one revision.
 
-    ``by_program``: the program's version differs from that of the revision before.  ``remark`` says why
-    causes are missing, if they are.
+    ``comparisons``: with the revision before (always the first of them, unless this is the first
+    revision), and with useful earlier ones.
     """
 
     headline: str
-    edits: tuple[Edit, ...] = ()
-    changes: tuple[Change, ...] = ()
+    comparisons: tuple[Comparison, ...] = ()
     summary: Summary = field(default_factory=Summary)
-    by_program: bool = False
-    remark: str = ""
+    outline: Outline | None = None
+
+    @property
+    def edits(self) -> tuple[Edit, ...]:
+        """The edits since the revision before."""
+        return self.comparisons[0].edits if self.comparisons else ()
+
+    @property
+    def changes(self) -> tuple[Change, ...]:
+        """The changes since the revision before."""
+        return self.comparisons[0].changes if self.comparisons else ()

@@ -14,14 +14,13 @@ from typing import Literal
 from generator.findings.house import UndecidedError
 from generator.findings.measures import measures_of
 from generator.findings.model import OrderModel, model_of
-from generator.findings.orders import MET, _vanishing
+from generator.findings.orders import _vanishing
 from generator.findings.programs import ZERO
-from generator.findings.recipes import cheapest_shares
 from generator.findings.room import room_of, scales_of
 from generator.findings.values import table_of
-from generator.findings.verdicts import judge
 from generator.history.applying import apply
 from generator.history.meaning import meaning
+from generator.history.quick import Quick
 from generator.history.records import CellChange, Edit
 from generator.intake.records import Campaign, Derived, Limit, LinearForm, Measured, Order
 
@@ -53,6 +52,7 @@ class Replay:
     _needs: frozenset[str] = frozenset()
     _models: dict[frozenset[int], OrderModel | None] = field(default_factory=dict)
     _verdicts: dict[frozenset[int], str] = field(default_factory=dict)
+    _quick: Quick = field(default_factory=Quick)
     _numbers: dict[tuple[Question, frozenset[int]], Fraction | None] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
@@ -86,7 +86,7 @@ class Replay:
     def _judged(self, subset: frozenset[int]) -> str:
         model = self._model(subset)
         try:
-            return NO_ANSWER if model is None or _vanishing(model) is not None else judge(model).verdict
+            return NO_ANSWER if model is None or _vanishing(model) is not None else self._quick.verdict(model)
         except UndecidedError:
             return NO_ANSWER
 
@@ -95,8 +95,10 @@ class Replay:
         if model is None or all(cost is None for cost in model.cost) or _vanishing(model) is not None:
             return None
         try:
-            shares = cheapest_shares(model).staged.x
-        except (ValueError, UndecidedError):
+            shares = self._quick.cost(model)
+        except UndecidedError:
+            return None
+        if shares is None:
             return None
         total = ZERO
         for share, cost in zip(shares, model.cost, strict=False):
@@ -106,13 +108,12 @@ class Replay:
         return total
 
     def _room(self, subset: frozenset[int]) -> Fraction | None:
-        verdict = self.verdict(subset)
         model = self._model(subset)
-        if model is None or verdict == NO_ANSWER:
+        if model is None or _vanishing(model) is not None:
             return None
         scales = scales_of(model, {component.name: component for component in self._campaign(subset).components})
         try:
-            room = room_of(model, scales, in_amount=verdict in MET)
+            room = room_of(model, scales, in_amount=self._quick.is_met(model))
         except UndecidedError:
             return None
         return None if room is None else room.t

@@ -29,13 +29,20 @@ __all__ = ["INPUT_NAMES", "input_name", "is_whole", "read_campaign"]
 
 ASSAYS, TARGETS, STOCK, NOTES = "assays.csv", "targets.csv", "stock.csv", "notes.md"
 
+#: More of these in one campaign is no blending question any more; each has its problem.
+MOST_LOTS = 2_000
+MOST_ORDERS = 2_000
+MOST_COMPONENTS = 100
+
 #: The files that are input; anything else in a campaign's folder is none.
 INPUT_NAMES: tuple[str, ...] = (ASSAYS, TARGETS, STOCK, CAMPAIGN, SITE, NOTES)
+_INPUTS = frozenset(INPUT_NAMES)
 
 
 def input_name(name: str) -> str | None:
     """The input that a directory entry's name stands for, case ignored; None for everything else."""
-    return name.lower() if name.lower() in INPUT_NAMES else None
+    lower = name.lower()
+    return lower if lower in _INPUTS else None
 
 
 def read_campaign(files: Mapping[str, bytes], *, slug: str, folder: str) -> Campaign:
@@ -80,6 +87,8 @@ def _filled(
 ) -> Campaign:
     """The campaign with its quantities, lots and orders."""
     components = find_components(assays, targets, options, faults)
+    if _has_too_many(assays, targets, components, faults):
+        return campaign
     derived = find_derived(components, options, faults)
     check_basis(assays, stock, components, options, faults)
     lots = read_lots(assays, stock, components, options, faults)
@@ -116,6 +125,26 @@ def _filled(
         lots=kept,
         orders=orders,
     )
+
+
+def _has_too_many(assays: Sheet, targets: Sheet | None, components: tuple[Component, ...], faults: Faults) -> bool:
+    """Whether there are more lots, orders or components than are answered; a problem at the first beyond."""
+    before = faults.count
+    remedy = "split it into several campaigns"
+    for sheet, most, what in ((assays, MOST_LOTS, "lots"), (targets, MOST_ORDERS, "orders")):
+        if sheet is None:
+            continue
+        names: set[str] = set()
+        for row in sheet.rows:
+            names.add(sheet.name(row))
+            if len(names) > most:
+                faults.stops(sheet.place(row), f"has more than {most:,} {what}", remedy, sheet.name(row))
+                break
+    if len(components) > MOST_COMPONENTS:
+        name = components[MOST_COMPONENTS].name
+        place = Place(assays.file, assays.header_row, name)
+        faults.stops(place, f"is one of more than {MOST_COMPONENTS} components", "leave out what no order limits")
+    return faults.count > before
 
 
 def _reported(quantities: Iterable[Quantity], lots: tuple[Lot, ...]) -> frozenset[str]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
@@ -186,6 +187,10 @@ def check_aliases(lots: Iterable[Lot], faults: Faults) -> None:
             )
 
 
+#: Editions are folders of the output and words of the command line.
+_EDITION = re.compile(r"[A-Za-z0-9][\w-]*")
+
+
 @dataclass(frozen=True, slots=True)
 class Named:
     """What settings may name."""
@@ -212,8 +217,15 @@ def check_names(named: Named, options: Options, faults: Faults) -> None:
     planes = (name for plane in options.settings.planes for name in plane)
     _check_known(planes, tuple(named.quantities), ("views", "planes"), options, faults)
     hideable = (*LOT_COLUMNS, *ORDER_COLUMNS, "notes", "remarks", *named.quantities, *named.remarks)
-    hidden = options.section("editions").get("client", {}).get("hide", ())
-    _check_known(hidden, hideable, ("editions", "client", "hide"), options, faults)
+    for edition, says in options.section("editions").items():
+        if edition == "internal" or not _EDITION.fullmatch(edition):
+            faults.stops(
+                options.place("editions", edition),
+                "can't be the name of an edition" if edition != "internal" else "shows everything and hides nothing",
+                "write a name of letters, digits, - and _, such as client",
+                found=edition,
+            )
+        _check_known(says.get("hide", ()), hideable, ("editions", edition, "hide"), options, faults)
 
 
 def _check_known(

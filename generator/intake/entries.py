@@ -10,7 +10,7 @@ from typing import Protocol
 
 from generator.intake.cells import NOT_MEASURED, is_numeric_date, parse_date, parse_number, suggest_number
 from generator.intake.faults import Faults, fold
-from generator.intake.records import Number, Place
+from generator.intake.records import Number
 from generator.intake.settings import Options
 from generator.intake.sheets import Cell
 from generator.intake.units import conversion
@@ -69,8 +69,8 @@ def _factor(cell: Cell, unit: str | None, faults: Faults) -> Fraction | None:
         return Fraction(1)
     factor = conversion(typed, _spelled_out(unit))
     if factor is None:
-        faults.stops(
-            Place(cell.place.file, None, cell.place.column),
+        faults.stops_once(
+            cell.place,
             f"is in {cell.unit}, and {unit} is wanted",
             f"write the values in {unit}, or change quantity_unit or currency in campaign.toml",
             found=cell.unit,

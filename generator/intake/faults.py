@@ -10,6 +10,10 @@ from collections.abc import Iterable
 from generator.intake.records import Place, ReadNote
 from generator.problems import Problem, Severity
 
+#: No more problems than these are listed: a reader mends the first and sees the rest go.
+MOST_PROBLEMS = 1_000
+_GRAVITY: tuple[Severity, ...] = ("stops", "drops", "note")
+
 #: Among more names than this no likeness is looked for: it would take longer than the reading.
 MOST_CANDIDATES = 500
 
@@ -50,12 +54,17 @@ def clipped(text: str) -> str:
     return text if len(text) <= LONGEST_FOUND else text[: LONGEST_FOUND - 1] + "…"
 
 
+def _by_place(problem: Problem) -> tuple[str, int, str, str, str]:
+    return problem.file, problem.row or 0, problem.column or "", problem.message, problem.found or ""
+
+
 class Faults:
     """What one reading of a folder has to tell; filled on the way, frozen at the end."""
 
     def __init__(self) -> None:
         self._problems: dict[Problem, None] = {}
         self._read: dict[ReadNote, None] = {}
+        self._first: dict[tuple[str, str | None, str], Place] = {}
         #: How many problems so far leave something out; a reader compares before and after.
         self.count = 0
 
@@ -78,6 +87,11 @@ class Faults:
         """A problem that leaves the campaign without answers."""
         self._add("stops", place, found, message, remedy)
 
+    def stops_once(self, place: Place, message: str, remedy: str, found: str | None = None) -> None:
+        """As :meth:`stops`, for what is wrong with a whole column: told at the first row where it shows."""
+        first = self._first.setdefault((place.file, place.column, message), place)
+        self.stops(first, message, remedy, found)
+
     def drops(self, place: Place, message: str, remedy: str, found: str | None = None) -> None:
         """A problem that leaves out a lot or an order."""
         self._add("drops", place, found, message, remedy)
@@ -91,10 +105,18 @@ class Faults:
         self._read[ReadNote(file, row, what)] = None
 
     def problems(self) -> tuple[Problem, ...]:
-        """Every problem once, by file, row and column."""
-        return tuple(
-            sorted(self._problems, key=lambda p: (p.file, p.row or 0, p.column or "", p.message, p.found or ""))
+        """Every problem once, by file, row and column; of very many the gravest and first, and how many there are."""
+        found = sorted(self._problems, key=_by_place)
+        if len(found) <= MOST_PROBLEMS:
+            return tuple(found)
+        shown = sorted(found, key=lambda problem: _GRAVITY.index(problem.severity))[:MOST_PROBLEMS]
+        rest = Problem(
+            file=shown[-1].file,
+            message=f"there are {len(found) - len(shown):,} more problems, which are not listed",
+            remedy="mend these first",
+            severity="note",
         )
+        return (*sorted(shown, key=_by_place), rest)
 
     def read(self) -> tuple[ReadNote, ...]:
         """Every line of "what was read" once, by file and row."""

@@ -45,8 +45,8 @@ def unit_factor(unit: str | None, component: Component, place: Place, faults: Fa
         return Fraction(1)
     factor = conversion(unit, component.unit)
     if factor is None:
-        faults.stops(
-            Place(place.file, None, place.column),
+        faults.stops_once(
+            place,
             f"is in {unit or 'no unit'}, and {component.name} is in {component.unit or 'no unit'}",
             f'write the values in one unit, or declare unit under [components."{component.name}"] in campaign.toml',
             found=unit,

@@ -154,8 +154,8 @@ def _amount(read: Reader, options: Options, faults: Faults) -> Limit | None:
         return None
     wanted = options.settings.quantity_unit
     if cell.unit and fold(cell.unit) != fold(wanted):
-        faults.stops(
-            Place(cell.place.file, None, cell.place.column),
+        faults.stops_once(
+            cell.place,
             f"is in {cell.unit}, and quantity_unit is {wanted}",
             f"write the amounts in {wanted}, or change quantity_unit in campaign.toml",
             found=cell.unit,
@@ -280,8 +280,8 @@ def _factor(unit: str | None, quantity: Quantity, cell: Cell, faults: Faults) ->
         return Fraction(1)
     factor = conversion(unit, quantity.unit)
     if factor is None:
-        faults.stops(
-            Place(cell.place.file, None, cell.place.column),
+        faults.stops_once(
+            cell.place,
             f"is in {unit or 'no unit'}, and {quantity.name} is in {quantity.unit or 'no unit'}",
             f"write the limits in one unit with the values, or declare the unit of {quantity.name} in campaign.toml",
             found=unit,

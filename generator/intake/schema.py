@@ -253,7 +253,7 @@ SCHEMA: Mapping[str, Node] = {
     },
     "whole": {"components": components, "total": number(above="0")},
     "views": {"planes": planes},
-    "editions": {"client": {"hide": texts}},
+    "editions": Each({"hide": texts}),
     "csv": {
         "decimal": one_of(".", ","),
         "delimiter": delimiter,

@@ -116,13 +116,13 @@ def _check_columns(toml: TomlFile, faults: Faults) -> None:
 def _settings(values: Mapping[str, Any], folder: str) -> Settings:
     given = {name: values[name] for name in _PLAIN if name in values}
     whole: Mapping[str, Any] = values.get("whole", {})
-    hide = values.get("editions", {}).get("client", {}).get("hide", HIDDEN_FROM_CLIENTS)
+    editions: Mapping[str, Any] = {"client": {}, **values.get("editions", {})}
     return Settings(
         **{"title": folder, **given},
         whole=whole.get("components", ()),
         whole_total=whole.get("total", Fraction(100)),
         planes=values.get("views", {}).get("planes", ()),
-        hidden={"client": tuple(hide)},
+        hidden={name: tuple(edition.get("hide", HIDDEN_FROM_CLIENTS)) for name, edition in editions.items()},
     )
 
 

@@ -85,12 +85,18 @@ def _rows(text: str) -> dict[tuple[str, ...], int]:
         header = _TABLE.fullmatch(line)
         if header is not None:
             table = _path(header["path"])
-            rows.setdefault(table, number)
+            _note(table, number, rows)
             continue
         key = _KEY.match(line)
         if key is not None:
-            rows.setdefault((*table, *_path(key["key"])), number)
+            _note((*table, *_path(key["key"])), number, rows)
     return rows
+
+
+def _note(path: tuple[str, ...], number: int, rows: dict[tuple[str, ...], int]) -> None:
+    """Note the row of a path, and of the tables above it that are not named before."""
+    for length in range(1, len(path) + 1):
+        rows.setdefault(path[:length], number)
 
 
 def _path(text: str) -> tuple[str, ...]:

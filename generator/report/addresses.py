@@ -6,6 +6,7 @@ An address is a path below the output folder, with forward slashes: ``spring-ble
 from __future__ import annotations
 
 import posixpath
+import re
 import unicodedata
 from collections.abc import Iterable
 from urllib.parse import quote
@@ -17,10 +18,14 @@ RESERVED = frozenset(
 
 #: Most file systems stop at 255 bytes; this leaves room for a number, an extension and a partial file's suffix.
 LONGEST = 120
+#: A name that is a slug as it stands.
+_PLAIN = re.compile(r"[A-Za-z0-9_-][A-Za-z0-9_.-]*")
 
 
 def slugify(name: str) -> str:
     """``name`` as part of an address: letters, digits, ``-``, ``_`` and ``.``, no leading dot, never empty."""
+    if _PLAIN.fullmatch(name) and len(name) <= LONGEST:
+        return name
     kept = "".join(
         character if character.isalnum() or character in "-_." else "-"
         for character in unicodedata.normalize("NFC", name)
@@ -62,7 +67,7 @@ def anchor(*words: str) -> str:
 
 
 def _folded(slug: str) -> str:
-    return unicodedata.normalize("NFKC", slug).casefold()
+    return slug.lower() if slug.isascii() else unicodedata.normalize("NFKC", slug).casefold()
 
 
 def _stem(plain: str) -> str:

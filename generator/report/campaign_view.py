@@ -9,13 +9,19 @@ from generator.findings.records import HalfPlane, HullFinding, LotFinding, Order
 from generator.intake.records import Lot
 from generator.problems import Problem
 from generator.report import words
+from generator.report.history_view import history_index, revision_address
 from generator.report.lookup import Lookup, as_typed, order_of
-from generator.report.order_view import amount_text, room_text
+from generator.report.order_view import amount_text
 from generator.report.parts import Cell, Column, Row, Section, Table, aligned, text_cell
+from generator.report.plan_view import plan_summary
 from generator.report.planes import Planes
-from generator.report.shares import amount_places, lot_cell
+from generator.report.shares import lot_cell
 from generator.report.wholes import Wholes
 
+#: Revisions listed on the campaign's page; the history has them all.
+_MOST_REVISIONS = 10
+#: More changes than this are folded.
+_MOST_CHANGES = 6
 _SEVERITIES = {"stops": "stops the campaign", "drops": "left out", "note": "note"}
 
 
@@ -26,7 +32,7 @@ def campaign_sections(lookup: Lookup, planes: Planes, wholes: Wholes) -> tuple[S
         _orders(lookup, page),
         _changes(lookup),
         _hull(lookup, planes, wholes),
-        _plan(lookup, page),
+        plan_summary(lookup, page),
         _lots(lookup, page),
     )
     return tuple(section for section in found if section is not None)
@@ -46,39 +52,49 @@ def _orders(lookup: Lookup, page: str) -> Section | None:
     if not findings:
         return None
     settings = lookup.campaign.settings
-    clients = any(order.client for order in lookup.campaign.orders)
-    rooms = any(finding.room is not None for finding in findings)
-    columns = [Column(title="Order"), Column(title="Verdict")]
-    if clients:
-        columns.append(Column(title="Client"))
-    columns += [
-        Column(title="Amount", unit=settings.quantity_unit, kind="number"),
-        Column(title="Least cost", unit=f"{settings.currency} per {settings.quantity_unit}", kind="number"),
-    ]
-    if rooms:
-        columns.append(Column(title="Room", kind="number"))
-    columns.append(Column(title="In a sentence"))
-    rows = [_order_row(lookup, finding, page, clients, rooms) for finding in findings]
-    table = Table(anchor="orders-table", caption="Orders, each taken alone", columns=tuple(columns), rows=tuple(rows))
+    per = f"{settings.currency} per {settings.quantity_unit}"
+    columns = {
+        "order": Column(title="Order"),
+        "verdict": Column(title="Verdict"),
+        "client": Column(title="Client"),
+        "amount": Column(title="Amount", unit=settings.quantity_unit, kind="number"),
+        "cost": Column(title="Least cost", unit=per, kind="number"),
+        "room": Column(title="Room", unit="sd", kind="number"),
+        "sentence": Column(title="In a sentence"),
+    }
+    cells = [_order_cells(lookup, finding, page) for finding in findings]
+    # Without sds a step of room is another one for each limit: no number to compare orders by.
+    is_shown = {
+        "client": any(row["client"].text for row in cells),
+        "amount": not lookup.hides("amount"),
+        "cost": not lookup.hides("cost"),
+        "room": any(finding.room is not None and finding.room_unit == "sd" for finding in findings),
+    }
+    shown = [name for name in columns if is_shown.get(name, True)]
+    table = Table(
+        anchor="orders-table",
+        caption="Orders, each taken alone",
+        columns=tuple(columns[name] for name in shown),
+        rows=tuple(Row(cells=tuple(row[name] for name in shown)) for row in cells),
+    )
     return Section(anchor="orders", title="Orders", tables=(table,))
 
 
-def _order_row(lookup: Lookup, finding: OrderFinding, page: str, clients: bool, rooms: bool) -> Row:
+def _order_cells(lookup: Lookup, finding: OrderFinding, page: str) -> dict[str, Cell]:
     order, cheapest = order_of(lookup, finding), finding.recipes.get("cheapest")
     verdict = finding.verdict or "none"
     amount = amount_text(finding, "") if (finding.amount_low, finding.amount_high) != (None, None) else ""
     cost = numbers.money(cheapest.cost) if cheapest and cheapest.cost is not None else numbers.UNKNOWN
-    cells = [
-        Cell(text=finding.order, href=lookup.link(page, lookup.order_addresses.get(finding.order, ""))),
-        Cell(text=words.VERDICT_WORDS[verdict], mark=verdict),
-    ]
-    if clients:
-        cells.append(text_cell(order.client if order else ""))
-    cells += [text_cell(amount or numbers.UNKNOWN), text_cell(cost)]
-    if rooms:
-        cells.append(text_cell(room_text(finding) if finding.room is not None else numbers.UNKNOWN))
-    cells.append(text_cell(finding.sentence, tone="sentence"))
-    return Row(cells=tuple(cells))
+    is_in_sd = finding.room is not None and finding.room_unit == "sd"
+    return {
+        "order": Cell(text=finding.order, href=lookup.link(page, lookup.order_addresses.get(finding.order, ""))),
+        "verdict": Cell(text=words.VERDICT_WORDS[verdict], mark=verdict),
+        "client": text_cell(order.client if order else ""),
+        "amount": text_cell(amount or numbers.UNKNOWN),
+        "cost": text_cell(cost),
+        "room": text_cell(numbers.significant(finding.room or 0, 3) if is_in_sd else numbers.UNKNOWN),
+        "sentence": text_cell(finding.sentence, tone="sentence"),
+    }
 
 
 def _changes(lookup: Lookup) -> Section | None:
@@ -90,8 +106,16 @@ def _changes(lookup: Lookup) -> Section | None:
         if len(lookup.book.revisions) == 1:
             sentences = ("This is the first revision: there is none before it to compare with.",)
         else:
-            sentences = (f"No answer changed from revision {last.number - 1} to revision {last.number}.",)
-    return Section(anchor="changes", title="What changed last", sentences=sentences)
+            what = "Nothing that these pages show" if lookup.book.hidden else "No answer"
+            sentences = (f"{what} changed from revision {last.number - 1} to revision {last.number}.",)
+    rest = sentences[_MOST_CHANGES:]
+    more = Section(anchor="more-changes", title=words.plural(len(rest), "more change"), sentences=rest)
+    return Section(
+        anchor="changes",
+        title="What changed last",
+        sentences=sentences[:_MOST_CHANGES],
+        folded=(more,) if rest else (),
+    )
 
 
 # --- hull and lots
@@ -130,15 +154,27 @@ def _hull_sentence(lookup: Lookup, hull: HullFinding) -> str:
 def _facets_table(lookup: Lookup, hull: HullFinding, number: int) -> Table | None:
     if not hull.facets:
         return None
+    planes = [_plainest(half_plane) for half_plane in hull.facets]
     rows = [
-        Row(cells=(text_cell(_form_text(lookup, half_plane)), text_cell(numbers.significant(half_plane.at_most, 5))))
-        for half_plane in hull.facets
+        Row(cells=(text_cell(_form_text(lookup, plane)), text_cell(numbers.significant(plane.at_most, 5))))
+        for plane in planes
     ]
     return Table(
         anchor=f"half-planes-{number}",
         caption="The hull as inequalities",
         columns=(Column(title="Every blend has"), Column(title="At most", kind="number")),
         rows=tuple(rows),
+    )
+
+
+def _plainest(half_plane: HalfPlane) -> HalfPlane:
+    """A bound on one component alone, with a coefficient of 1 or −1."""
+    sizes = [abs(coefficient) for coefficient in half_plane.coefficients.values() if coefficient]
+    if len(sizes) != 1:
+        return half_plane
+    return HalfPlane(
+        coefficients={name: coefficient / sizes[0] for name, coefficient in half_plane.coefficients.items()},
+        at_most=half_plane.at_most / sizes[0],
     )
 
 
@@ -201,38 +237,6 @@ def _role(finding: LotFinding | None) -> str:
     return finding.role if finding and finding.role else numbers.UNKNOWN
 
 
-# --- plan
-
-
-def _plan(lookup: Lookup, page: str) -> Section | None:
-    plan = lookup.book.findings.plan
-    if plan is None:
-        return None
-    unit = lookup.campaign.settings.quantity_unit
-    served = sum(1 for order in plan.orders.values() if order.accepted > 0)
-    alone = sum(1 for finding in lookup.book.findings.orders if finding.verdict in ("makeable", "edge"))
-    sentence = f"{alone} makeable alone, {served} served together."
-    if plan.runs_out:
-        sentence += f" {words.listed(plan.runs_out)} {'runs' if len(plan.runs_out) == 1 else 'run'} out."
-    rows = []
-    for name, planned in plan.orders.items():
-        places = amount_places(planned.accepted)
-        parts = ", ".join(f"{lot} {numbers.text(amount, places)}" for lot, amount in planned.amounts.items())
-        cells = (
-            Cell(text=name, href=lookup.link(page, lookup.order_addresses.get(name, ""))),
-            text_cell(numbers.text(planned.accepted, places)),
-            text_cell(parts or numbers.UNKNOWN),
-        )
-        rows.append(Row(cells=cells))
-    columns = (
-        Column(title="Order"),
-        Column(title="Accepted", unit=unit, kind="number"),
-        Column(title=f"Amounts, {unit}"),
-    )
-    table = Table(anchor="plan-table", caption="All orders together", columns=columns, rows=tuple(rows))
-    return Section(anchor="plan", title="Plan", sentences=(sentence,), tables=(table,))
-
-
 # --- records
 
 
@@ -242,15 +246,18 @@ def _revisions(lookup: Lookup) -> Section | None:
     rows = [
         Row(
             cells=(
-                text_cell(str(line.number)),
+                _revision_cell(lookup, line.number),
                 text_cell(words.moment(line.recorded)),
                 text_cell(line.headline),
                 text_cell(line.program),
                 text_cell(line.digest[:12], tone="code"),
             )
         )
-        for line in reversed(lookup.book.revisions)
+        for line in reversed(lookup.book.revisions[-_MOST_REVISIONS:])
     ]
+    if lookup.book.past:
+        home = lookup.link(lookup.home, history_index(lookup.campaign.slug))
+        rows.append(Row(cells=(Cell(text="All revisions", href=home), *([text_cell("")] * 4))))
     columns = (
         Column(title="Revision"),
         Column(title="Recorded"),
@@ -260,6 +267,13 @@ def _revisions(lookup: Lookup) -> Section | None:
     )
     table = Table(anchor="revisions-table", caption="Revisions, newest first", columns=columns, rows=tuple(rows))
     return Section(anchor="revisions", title="Revisions", tables=(table,))
+
+
+def _revision_cell(lookup: Lookup, number: int) -> Cell:
+    """A revision's number, which leads to its page where the newest ones' stories are told."""
+    if not any(line.number == number for line in lookup.book.past):
+        return text_cell(str(number))
+    return Cell(text=str(number), href=lookup.link(lookup.home, revision_address(lookup.campaign.slug, number)))
 
 
 def _read(lookup: Lookup) -> Section | None:

@@ -43,6 +43,10 @@ class Lookup:
         """The campaign page's address."""
         return f"{self.campaign.slug}/index.html"
 
+    def hides(self, name: str) -> bool:
+        """Whether the edition leaves this input out, so that pages don't speak of it."""
+        return name in self.book.hidden
+
     def link(self, page: str, target: str) -> str:
         """The link from ``page`` to the address ``target``; empty for no target."""
         return addresses.relative(page, target) if target else ""

@@ -15,9 +15,10 @@ def lot_facts(lookup: Lookup, lot: Lot) -> tuple[Fact, ...]:
     settings = lookup.campaign.settings
     unit = settings.quantity_unit
     stock = "unlimited" if lot.is_unlimited else words.with_unit(lot.stock.text, unit) if lot.stock else "not checked"
+    cost = f"{lot.cost.text} {settings.currency} per {unit}" if lot.cost else "unknown"
     found = [
-        ("Stock", stock),
-        ("Cost", f"{lot.cost.text} {settings.currency} per {unit}" if lot.cost else "unknown"),
+        ("Stock", "" if lookup.hides("stock") else stock),
+        ("Cost", "" if lookup.hides("cost") else cost),
         ("Material", ", ".join(lot.materials)),
         ("Supplier", lot.supplier),
         ("Place", lot.location),

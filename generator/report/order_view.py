@@ -14,7 +14,8 @@ from generator.report.lookup import Lookup, as_typed, order_of
 from generator.report.parts import Cell, Column, Fact, FigureView, Legend, Row, Section, Table, aligned, text_cell
 from generator.report.planes import Planes
 from generator.report.proofs import cost_bound_section, proof_section
-from generator.report.shares import amount_places, lot_cell, recipe_table, values_table
+from generator.report.shares import amount_places, limit_cell, limit_key, lot_cell, recipe_table, values_table
+from generator.report.trial import trial_section
 from generator.report.ways_out import room, ways_out, without_lot, worth
 from generator.report.wholes import Wholes
 
@@ -28,7 +29,7 @@ def order_facts(lookup: Lookup, finding: OrderFinding) -> tuple[Fact, ...]:
     order = order_of(lookup, finding)
     settings = lookup.campaign.settings
     unit, currency = settings.quantity_unit, settings.currency
-    facts = [Fact(name="Amount", value=amount_text(finding, unit))]
+    facts = [] if lookup.hides("amount") else [Fact(name="Amount", value=amount_text(finding, unit))]
     if order is not None:
         if order.client:
             facts.append(Fact(name="Client", value=order.client))
@@ -42,12 +43,12 @@ def order_facts(lookup: Lookup, finding: OrderFinding) -> tuple[Fact, ...]:
     cheapest = finding.recipes.get("cheapest")
     if cheapest is not None and cheapest.cost is not None:
         facts.append(Fact(name="Least cost", value=f"{numbers.money(cheapest.cost)} {currency} per {unit}"))
-    if finding.room is not None:
-        facts.append(Fact(name="Room", value=room_text(finding)))
+    if finding.room is not None and finding.room_unit == "sd":
+        facts.append(Fact(name="Room", value=words.with_unit(numbers.significant(finding.room, 3), "sd")))
     if finding.verdict == "short" and finding.greatest_amount is not None:
         greatest = numbers.text(finding.greatest_amount, amount_places(finding.greatest_amount))
         facts.append(Fact(name="Greatest amount", value=words.with_unit(greatest, unit)))
-    if not lookup.campaign.has_stock:
+    if not lookup.campaign.has_stock and not lookup.hides("stock"):
         facts.append(Fact(name="Stock", value="not checked"))
     return tuple(facts)
 
@@ -64,14 +65,6 @@ def amount_text(finding: OrderFinding, unit: str) -> str:
     return words.with_unit(words.window(low, high), unit)
 
 
-def room_text(finding: OrderFinding) -> str:
-    """The room with its unit: laboratory standard deviations, or steps of the scale."""
-    assert finding.room is not None, "asked only of orders that have room"
-    text = numbers.significant(finding.room, 3)
-    unit = "sd" if finding.room_unit == "sd" else "scale step" if text == "1" else "scale steps"
-    return words.with_unit(text, unit)
-
-
 def order_sections(
     lookup: Lookup, planes: Planes, wholes: Wholes, finding: OrderFinding, page: str
 ) -> tuple[Section, ...]:
@@ -81,6 +74,7 @@ def order_sections(
         ways_out(lookup, finding, page),
         _limits(lookup, finding),
         _hull(planes, wholes, finding),
+        trial_section(lookup, finding),
         room(lookup, finding),
         _other_recipes(lookup, finding, page),
         without_lot(lookup, finding, page),
@@ -213,7 +207,8 @@ def _strips(lookup: Lookup, finding: OrderFinding) -> FigureView:
         + "."
         for limit, strip in zip(finding.limits, drawn, strict=True)
     )
-    svg = finished(strips.draw(drawn), "fig-strips", "Limit strips", f"{caption} {told}")
+    keys = [limit_key(lookup, limit.on) for limit in finding.limits]
+    svg = finished(strips.draw(drawn), "fig-strips", "Limit strips", f"{caption} {told}", strips.touch(keys))
     return FigureView(anchor="limit-strips", title="Limit strips", svg=svg, caption=caption, legend=tuple(legend))
 
 
@@ -249,7 +244,7 @@ def _limits_table(lookup: Lookup, finding: OrderFinding) -> Table:
     for limit in finding.limits:
         places = lookup.places.get(limit.on, 2)
         cells = (
-            text_cell(lookup.name_with_unit(limit.on)),
+            limit_cell(lookup, limit.on),
             text_cell(words.window(limit.low, limit.high)),
             _attainable_cell(limit, places),
             text_cell(words.span(limit.lots_range, places)),
@@ -302,6 +297,8 @@ def _left_out(lookup: Lookup, finding: OrderFinding, page: str) -> Section | Non
 def _proof(lookup: Lookup, finding: OrderFinding) -> Section | None:
     section = proof_section(lookup, finding)
     cheapest = finding.recipes.get("cheapest")
+    if section is None and finding.verdict is not None:
+        return Section(anchor="proof", title="Proof", sentences=(words.PROOF_WITHHELD,))
     if section is None or cheapest is None or cheapest.bound is None:
         return section
     lots = [lot.name for lot in lookup.campaign.lots if lot.name not in finding.left_out]

@@ -6,7 +6,7 @@ Pure functions from records to bytes; addresses are paths below the output folde
 from __future__ import annotations
 
 from collections.abc import Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from markupsafe import Markup
 
@@ -14,12 +14,15 @@ from generator import __version__
 from generator.findings.records import OrderFinding
 from generator.intake.records import Lot
 from generator.report import addresses, words
+from generator.report.batch_view import Card, batch_card, card_addresses, card_facts, card_lead
 from generator.report.campaign_view import campaign_sections, problems_section, record_sections, verdict_counts
+from generator.report.history_own import lot_history, order_history
 from generator.report.lookup import Lookup, lookup_of
 from generator.report.lot_view import lot_facts, lot_sections, lot_sentence
 from generator.report.notes import rendered
 from generator.report.order_view import order_facts, order_sections
 from generator.report.parts import Fact, Section
+from generator.report.plan_view import order_in_plan, plan_address, plan_facts, plan_lead, plan_sections
 from generator.report.planes import Planes
 from generator.report.themes import Theme
 from generator.report.views import CampaignPages, IndexEntry
@@ -27,6 +30,8 @@ from generator.report.wholes import Wholes
 
 INDEX = "index.html"
 METHOD = "method.html"
+#: The script that only pages with a trial blend load.
+_TRIAL = "trial"
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -61,6 +66,20 @@ class Page:
     cautions: tuple[str, ...] = ()
     revision: str = ""
     data: str = ""
+    scripts: tuple[str, ...] = ()
+    logo: str = ""
+    logo_words: str = ""
+    edition: str = ""
+    card: Card | None = None
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Sheet:
+    """A page with its address and the template that lays it out."""
+
+    address: str
+    template: str
+    page: Page
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -71,6 +90,7 @@ class IndexRow:
     href: str
     counts: tuple[tuple[str, str, int], ...]
     in_words: str
+    together: str
     recorded: str
     headline: str
     trouble: str
@@ -82,19 +102,45 @@ def draw_campaign(book: CampaignPages, theme: Theme) -> dict[str, bytes]:
 
     The campaign page links to ``SLUG/results.json``, which the caller adds.
     """
+    return {sheet.address: rendered_sheet(sheet, theme).encode() for sheet in campaign_sheets(book, theme)}
+
+
+def campaign_sheets(book: CampaignPages, theme: Theme) -> list[Sheet]:
+    """Every page of a campaign before it is laid out, in the order in which they are read."""
     if book.campaign.is_stopped:
-        return {f"{book.campaign.slug}/{INDEX}": _encoded(theme, "problem.html", _problem_page(book, theme))}
+        address = f"{book.campaign.slug}/{INDEX}"
+        return [Sheet(address=address, template="problem.html", page=_problem_page(book, theme))]
     lookup = lookup_of(book)
     planes, wholes = Planes(lookup), Wholes(lookup)
-    files = {lookup.home: _encoded(theme, "campaign.html", _campaign_page(lookup, planes, wholes, theme))}
+    home = _campaign_page(lookup, planes, wholes, theme)
+    sheets = [Sheet(address=lookup.home, template="campaign.html", page=home)]
     findings = [finding for finding in book.findings.orders if finding.order in lookup.order_addresses]
     for position, finding in enumerate(findings):
         page = _order_page(lookup, planes, wholes, theme, findings, position)
-        files[lookup.order_addresses[finding.order]] = _encoded(theme, "order.html", page)
+        sheets.append(Sheet(address=lookup.order_addresses[finding.order], template="order.html", page=page))
+    sheets += _plan_sheets(lookup, theme)
     for position, lot in enumerate(book.campaign.lots):
         page = _lot_page(lookup, theme, book.campaign.lots, position)
-        files[lookup.lot_addresses[lot.name]] = _encoded(theme, "lot.html", page)
-    return files
+        sheets.append(Sheet(address=lookup.lot_addresses[lot.name], template="lot.html", page=page))
+    edition = words.edition_in_words(book.edition)
+    return [replace(sheet, page=replace(sheet.page, edition=edition)) for sheet in sheets]
+
+
+def rendered_sheet(sheet: Sheet, theme: Theme) -> str:
+    """A page laid out, with what the theme adds to every page."""
+    return theme.render(sheet.template, page=dressed(sheet.page, theme))
+
+
+def dressed(page: Page, theme: Theme) -> Page:
+    """A page with the theme's scripts and logo, which stand where its style sheet does."""
+    root = page.style.removesuffix(theme.style_address)
+    names = [name for name in theme.scripts if name != _TRIAL or any(section.trial for section in page.sections)]
+    return replace(
+        page,
+        scripts=tuple(root + theme.script_address(name) for name in names),
+        logo=root + theme.logo_address if theme.logo else "",
+        logo_words=theme.logo.words if theme.logo else "",
+    )
 
 
 def draw_index(entries: Iterable[IndexEntry], theme: Theme, version: str = __version__) -> bytes:
@@ -109,7 +155,7 @@ def draw_index(entries: Iterable[IndexEntry], theme: Theme, version: str = __ver
         version=version,
         kind="index",
     )
-    return theme.render("index.html", page=page, rows=rows).encode()
+    return theme.render("index.html", page=dressed(page, theme), rows=rows).encode()
 
 
 def draw_method(theme: Theme, version: str = __version__) -> bytes:
@@ -125,16 +171,14 @@ def draw_method(theme: Theme, version: str = __version__) -> bytes:
         cautions=(*words.CAUTIONS, words.CAUTION_APART, words.CAUTION_APART_EMPTY),
     )
     verdicts = [(verdict, words.VERDICT_WORDS[verdict], words.VERDICT_MEANINGS[verdict]) for verdict in words.VERDICTS]
-    return theme.render("method.html", page=page, verdicts=verdicts).encode()
+    return theme.render("method.html", page=dressed(page, theme), verdicts=verdicts).encode()
 
 
 def assets(theme: Theme) -> dict[str, bytes]:
     """What pages load, named by content."""
-    return {theme.style_address: theme.style.encode()}
-
-
-def _encoded(theme: Theme, template: str, page: Page) -> bytes:
-    return theme.render(template, page=page).encode()
+    files = {theme.style_address: theme.style.encode()}
+    files |= {theme.script_address(name): script.encode() for name, script in theme.scripts.items()}
+    return {**files, theme.logo_address: theme.logo.data} if theme.logo else files
 
 
 def _index_lead(rows: Sequence[IndexRow]) -> str:
@@ -152,6 +196,7 @@ def _index_row(entry: IndexEntry) -> IndexRow:
         href=addresses.relative(INDEX, f"{entry.slug}/{INDEX}"),
         counts=tuple((v, words.VERDICT_WORDS[v], entry.counts[v]) for v in words.VERDICTS if entry.counts.get(v)),
         in_words=words.counts_in_words(entry.counts) or "no answers",
+        together=entry.together,
         recorded=words.moment(entry.recorded),
         headline=entry.headline,
         trouble=words.plural(failing, "problem") if failing else "",
@@ -180,7 +225,7 @@ def _campaign_page(lookup: Lookup, planes: Planes, wholes: Wholes, theme: Theme)
     counts = verdict_counts(findings.orders)
     return Page(
         title=book.campaign.settings.title,
-        lead=words.summary(findings, counts, book.campaign.has_stock),
+        lead=words.summary(findings, counts, book.campaign.has_stock or lookup.hides("stock")),
         style=addresses.relative(lookup.home, theme.style_address),
         method=addresses.relative(lookup.home, METHOD),
         crumbs=(Link(text="Campaigns", href=addresses.relative(lookup.home, INDEX)),),
@@ -224,10 +269,61 @@ def _order_page(
         following=neighbour(1),
         facts=order_facts(lookup, finding),
         banner=_banner(lookup.book),
-        sections=order_sections(lookup, planes, wholes, finding, address),
+        sections=(
+            *order_sections(lookup, planes, wholes, finding, address),
+            *order_in_plan(lookup, finding, address, card_addresses(lookup)),
+            *order_history(lookup, finding.order, address),
+        ),
         cautions=_cautions(lookup),
         revision=_revision(lookup.book),
     )
+
+
+def _plan_sheets(lookup: Lookup, theme: Theme) -> list[Sheet]:
+    """The plan's page and a batch card for each order that it serves."""
+    plan, cards = lookup.book.findings.plan, card_addresses(lookup)
+    if plan is None:
+        return []
+    address = plan_address(lookup)
+    page = Page(
+        title="Plan",
+        lead=plan_lead(lookup, plan),
+        style=addresses.relative(address, theme.style_address),
+        method=addresses.relative(address, METHOD),
+        crumbs=_crumbs(lookup, address),
+        version=lookup.book.version,
+        kind="plan",
+        facts=plan_facts(lookup, plan),
+        banner=_banner(lookup.book),
+        sections=plan_sections(lookup, plan, address, cards),
+        cautions=_cautions(lookup),
+        revision=_revision(lookup.book),
+        data="results.json",
+    )
+    findings = [finding for finding in lookup.book.findings.orders if finding.order in cards]
+    return [
+        Sheet(address=address, template="plan.html", page=page),
+        *(_card_sheet(lookup, theme, finding, cards[finding.order]) for finding in findings),
+    ]
+
+
+def _card_sheet(lookup: Lookup, theme: Theme, finding: OrderFinding, address: str) -> Sheet:
+    back = Link(text=f"Order {finding.order}", href=addresses.relative(address, lookup.order_addresses[finding.order]))
+    page = Page(
+        title=f"Batch card, order {finding.order}",
+        lead=card_lead(lookup, finding),
+        style=addresses.relative(address, theme.style_address),
+        method=addresses.relative(address, METHOD),
+        crumbs=(*_crumbs(lookup, address), back),
+        version=lookup.book.version,
+        kind="batch",
+        facts=card_facts(lookup, finding),
+        banner=_banner(lookup.book),
+        cautions=_cautions(lookup),
+        revision=_revision(lookup.book),
+        card=batch_card(lookup, finding),
+    )
+    return Sheet(address=address, template="batch.html", page=page)
 
 
 def _lot_page(lookup: Lookup, theme: Theme, lots: Sequence[Lot], position: int) -> Page:
@@ -252,7 +348,7 @@ def _lot_page(lookup: Lookup, theme: Theme, lots: Sequence[Lot], position: int) 
         following=neighbour(1),
         facts=lot_facts(lookup, lot),
         banner=_banner(lookup.book),
-        sections=lot_sections(lookup, lot, address),
+        sections=(*lot_sections(lookup, lot, address), *lot_history(lookup, lot.name, address)),
         revision=_revision(lookup.book),
     )
 

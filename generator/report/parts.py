@@ -16,6 +16,8 @@ Kind = Literal["text", "number"]
 class Cell:
     """One cell: its text, where it leads, and what it is.
 
+    ``key`` names what a row with this first cell is about, as marks in figures do ("lot A", "limit N").
+
     ``mark`` is the name of a small drawn sign that stands before the text (a verdict, a lot's role);
     ``tone`` is ``good``, ``bad`` or ``quiet``; ``detail`` is a second, smaller line.
     """
@@ -25,6 +27,7 @@ class Cell:
     mark: str = ""
     tone: str = ""
     detail: str = ""
+    key: str = ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -85,7 +88,10 @@ class Fact:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Section:
-    """A part of a page: heading, sentences, tables, figures; ``is_folded`` shows the heading only."""
+    """A part of a page: heading, sentences, tables, figures, and folded parts that show their heading only.
+
+    ``trial`` is the data of a trial blend as JSON that can stand in markup; its section is shown by a script.
+    """
 
     anchor: str
     title: str
@@ -95,6 +101,7 @@ class Section:
     folded: tuple[Section, ...] = ()
     layout: Literal["plain", "beside", "grid"] = "plain"
     facts: tuple[Fact, ...] = field(default=())
+    trial: str = ""
 
 
 def text_cell(text: str, **more: str) -> Cell:

@@ -11,9 +11,19 @@ from generator.findings.records import BlockingProof, HullFinding, LimitFinding,
 from generator.report import words
 from generator.report.figures.canvas import finished
 from generator.report.figures.frame import Axis, padded
-from generator.report.figures.hull import Base, LotPoint, Overlay, Separation, clipped, draw_base, overlay_markup
+from generator.report.figures.hull import (
+    Base,
+    LotPoint,
+    Overlay,
+    Separation,
+    clipped,
+    draw_base,
+    overlay_markup,
+    touch,
+)
 from generator.report.lookup import Lookup
 from generator.report.parts import FigureView, Legend
+from generator.report.shares import lot_key
 
 Bounds = tuple[float | None, float | None]
 
@@ -183,7 +193,13 @@ class Planes:
                 places.setdefault(pair, []).append(lot)
         roles = {name: finding.role for name, finding in self.lookup.lot_findings.items()}
         return [
-            LotPoint(name=_joined(names), x=x, y=y, is_corner=any(roles.get(name) == "corner" for name in names))
+            LotPoint(
+                name=_joined(names),
+                x=x,
+                y=y,
+                is_corner=any(roles.get(name) == "corner" for name in names),
+                lots=tuple(names),
+            )
             for (x, y), names in places.items()
         ]
 
@@ -206,7 +222,9 @@ class Planes:
             unnamed = words.plural(base.unlabelled, "point")
             caption += f" For want of room {unnamed} stand without a name; the table of lots has all."
         description = f"{caption} {_description(points, across, up, overlay)}"
-        svg = finished(base.text, f"fig-{key}", title, description, overlay_markup(base.frame, overlay) + base.labels)
+        above = overlay_markup(base.frame, overlay) + base.labels
+        above += "".join(touch(base.frame, item.x, item.y, [lot_key(name) for name in item.lots]) for item in points)
+        svg = finished(base.text, f"fig-{key}", title, description, above)
         return FigureView(anchor=key, title=title, svg=svg, caption=caption, legend=_legend(overlay, points))
 
 

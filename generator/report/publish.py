@@ -11,21 +11,31 @@ what to do again.
 from __future__ import annotations
 
 import contextlib
-import json
+import functools
 import os
 import shutil
 import time
 from collections.abc import Callable, Iterable, Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import dataclass, replace
 from datetime import UTC, datetime, timedelta
 from pathlib import Path, PurePosixPath
 
 from generator.disk import HeldError, WriteError, create, is_held, reason, sha256, sweep, unfinished, write_whole
 from generator.problems import Problem
+from generator.report.manifest import (
+    ASSETS,
+    JOURNAL_NAME,
+    MANIFEST_NAME,
+    FileList,
+    Manifest,
+    Published,
+    dump,
+    journal_line,
+    read_journal,
+    read_manifest,
+)
+from generator.report.presence import Presence
 
-FORMAT = "hullbook-manifest-1"
-MANIFEST_NAME = ".hullbook-manifest.json"
-JOURNAL_NAME = ".hullbook-journal"
 #: The name under which the files that belong to no campaign are recorded.
 SHARED = ""
 
@@ -33,34 +43,6 @@ SHARED = ""
 ASSET_GRACE = timedelta(days=1)
 #: All waiting for files that others hold, in one publication.
 LONGEST_WAIT = 20.0
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Published:
-    """What was written for one campaign.
-
-    ``files`` maps addresses to SHA-256 digests; ``about`` is JSON that ``book`` keeps with it;
-    ``fingerprint`` is of everything that the files were made of, "" where they must be made again.
-    """
-
-    fingerprint: str
-    files: Mapping[str, str]
-    about: Mapping[str, object] = field(default_factory=dict)
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Manifest:
-    """What an output folder holds by right: files by campaign, and files that are no longer used.
-
-    ``retired`` maps addresses to (digest, moment in ISO text since when, "" = remove at once).
-    """
-
-    campaigns: Mapping[str, Published] = field(default_factory=dict)
-    retired: Mapping[str, tuple[str, str]] = field(default_factory=dict)
-
-    def files(self) -> dict[str, str]:
-        """Every address in use, with its digest."""
-        return {path: digest for published in self.campaigns.values() for path, digest in published.files.items()}
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -72,19 +54,12 @@ class Written:
     problems: tuple[Problem, ...] = ()
 
 
-@dataclass(frozen=True, slots=True)
-class _Journal:
-    """What a killed publication was about to write (digests by address), and for which campaigns."""
-
-    files: Mapping[str, frozenset[str]]
-    campaigns: frozenset[str]
-
-
 class Publication:
     """One publication, from the first campaign to the manifest; its user holds the writer's lock.
 
     ``put`` or ``keep`` each campaign, then ``finish``.  A campaign that gets neither is gone, and its
     files are removed.  ``before_replace`` is called before every rename (tests put faults there).
+    ``thorough`` looks at every published file, not only at every folder.
     """
 
     def __init__(
@@ -94,35 +69,52 @@ class Publication:
         moment: datetime,
         before_replace: Callable[[Path], None] | None = None,
         sleep: Callable[[float], None] = time.sleep,
+        thorough: bool = False,
     ) -> None:
         self._output = output
         self._moment = moment.astimezone(UTC)
         self._before_replace = before_replace
         self._sleep = sleep
         self._wait_left = LONGEST_WAIT
-        journal = _read_journal(output)
+        journal = read_journal(output)
         sweep({output, *((output / path).parent for path in journal.files)})
-        self.old = _void(read_manifest(output), journal.campaigns)
-        self._owned = _owned(self.old, journal)
+        self.old = read_manifest(output).voided(journal.campaigns)
+        self._announced: dict[str, frozenset[str]] = dict(journal.files)
+        self._is_journalled = (output / JOURNAL_NAME).exists()
+        self._presence = Presence(output, thorough=thorough)
         self._new: dict[str, Published] = {}
         self._pending: list[str] = []
 
     def keep(self, campaign: str) -> None:
         """Leave a campaign as it is published."""
         self._new[campaign] = self.old.campaigns[campaign]
+        self._presence.keep(campaign)
 
     def is_complete(self, campaign: str) -> bool:
-        """Whether every file of a published campaign is still there (its content is not read)."""
-        return not _missing(self._output, self.old.campaigns[campaign].files)
+        """Whether every file of a published campaign is still there as it was written."""
+        return self._presence.holds(campaign, self.old.campaigns[campaign].files)
 
-    def put(self, campaign: str, published: Published, files: Mapping[str, bytes]) -> Written:
+    def standing(self, campaign: str) -> frozenset[str]:
+        """The addresses of a campaign that are still there as an earlier build published them.
+
+        What a killed publication was about to write is not among them, whether it was written or not.
+        """
+        old = self.old.campaigns.get(campaign)
+        if old is None:
+            return frozenset()
+        return frozenset(old.files) - _absent(self._output, old.files) - self._announced.keys()
+
+    def put(self, campaign: str, published: Published, files: Mapping[str, bytes], kept: Iterable[str] = ()) -> Written:
         """Write a campaign's files; ``published.files`` is filled in here.
+
+        ``kept`` are addresses of the campaign that stay as an earlier build published them.
 
         Files that hold these bytes already are not touched; foreign files in the way are not either,
         and each is a problem.  WriteError where the disk is full, read-only or gone.
         """
         free, problems = self._free(files)
-        digests = {path: sha256(data) for path, data in free.items()}
+        digests = {path: self.old.campaigns[campaign].files[path] for path in kept}
+        digests |= {path: sha256(data) for path, data in free.items()}
         due = [path for path in free if not _holds(self._output / path, digests[path], len(free[path]))]
         self._announce(campaign, {path: digests[path] for path in due})
         in_order = {path: free[path] for path in _in_order(self._output, campaign, due)}
@@ -135,23 +127,25 @@ class Publication:
         self._pending += pending
         again = bool(pending or problems)
         self._new[campaign] = replace(
-            published, files=dict(sorted(digests.items())), fingerprint="" if again else published.fingerprint
+            published, files=FileList(digests), fingerprint="" if again else published.fingerprint
         )
+        if not again:
+            self._presence.note(campaign, digests)
         return Written(paths=tuple(written), pending=tuple(pending), problems=tuple(problems))
 
     def finish(self) -> Written:
         """Write the manifest and remove what is no longer used; returns what was removed."""
-        in_use = {path for published in self._new.values() for path in published.files}
-        leftover = {path: digests for path, digests in self._owned.items() if path not in in_use}
+        self._presence.save()
+        leftover = self._leftover()
         retired = self._retired(leftover)
         gone = sorted(path for path in leftover if path not in retired)
+        if self._is_as_before(gone, retired):
+            return Written()
         if gone:
             self._announce(SHARED, {path: min(leftover[path], default="") for path in gone})
         manifest = Manifest(campaigns=self._new, retired=retired)
         try:
-            write_whole(
-                self._output / MANIFEST_NAME, _dump(manifest), durable=True, before_replace=self._before_replace
-            )
+            write_whole(self._output / MANIFEST_NAME, dump(manifest), durable=True, before_replace=self._before_replace)
         except HeldError:
             return Written(pending=(MANIFEST_NAME,))
         removed = [path for path in gone if self._remove(path, leftover[path])]
@@ -159,12 +153,59 @@ class Publication:
             (self._output / JOURNAL_NAME).unlink()
         return Written(paths=tuple(removed))
 
+    def _is_as_before(self, gone: Iterable[str], retired: Mapping[str, tuple[str, str]]) -> bool:
+        """Whether the manifest says already what it would say now, and nothing is left to do."""
+        old = self.old.campaigns
+        return (
+            not self._is_journalled
+            and not gone
+            and retired == self.old.retired
+            and old.keys() == self._new.keys() != set()
+            and all(self._new[name] is published for name, published in old.items())
+        )
+
+    def _digests(self, path: str) -> frozenset[str]:
+        """What this program may have written at an address; nothing where it never wrote."""
+        found = set(self._announced.get(path, ()))
+        if path in self.old.retired:
+            found.add(self.old.retired[path][0])
+        if path.startswith(ASSETS):
+            found |= {self._assets[path]} if path in self._assets else set()
+        else:
+            owner = self.old.campaigns.get(path.partition("/")[0] if "/" in path else SHARED)
+            found |= {owner.files[path]} if owner is not None and path in owner.files else set()
+        return frozenset(found)
+
+    @functools.cached_property
+    def _assets(self) -> dict[str, str]:
+        """The assets of every campaign of the old manifest, with their digests."""
+        return {path: digest for item in self.old.campaigns.values() for path, digest in _assets_of(item)}
+
+    def _leftover(self) -> dict[str, frozenset[str]]:
+        """What earlier publications wrote and nothing uses now, with the digests that it may have."""
+        paths = {*self.old.retired, *self._announced}
+        for name, published in self.old.campaigns.items():
+            new = self._new.get(name)
+            if new is None:
+                paths |= published.files.keys()
+            elif new is not published:
+                paths |= published.files.keys() - new.files.keys()
+        assets = {path for path in paths if path.startswith(ASSETS)}
+        if assets:
+            assets -= {path for item in self._new.values() for path, _ in _assets_of(item)}
+        return {path: self._digests(path) for path in paths if path in assets or self._is_unused(path)}
+
+    def _is_unused(self, path: str) -> bool:
+        """Whether no campaign has a page at that address; assets are not asked here."""
+        owner = self._new.get(path.partition("/")[0] if "/" in path else SHARED)
+        return not path.startswith(ASSETS) and (owner is None or path not in owner.files)
+
     def _free(self, files: Mapping[str, bytes]) -> tuple[dict[str, bytes], list[Problem]]:
         """Split off files whose place is taken by something that this program did not write."""
         free: dict[str, bytes] = {}
         problems: list[Problem] = []
         for path, data in files.items():
-            blocker = _blocker(self._output, path, is_owned=path in self._owned, data=data)
+            blocker = _blocker(self._output, path, is_owned=bool(self._digests(path)), data=data)
             if blocker is None:
                 free[path] = data
             else:
@@ -175,17 +216,17 @@ class Publication:
         """Note in the journal what is about to happen, before it does."""
         if not files:
             return
-        line = json.dumps({"campaign": campaign, "files": dict(files)}, ensure_ascii=False)
         try:
             self._output.mkdir(parents=True, exist_ok=True)
             with (self._output / JOURNAL_NAME).open("a", encoding="utf-8", newline="\n") as stream:
-                stream.write(line + "\n")
+                stream.write(journal_line(campaign, files))
                 stream.flush()
                 os.fsync(stream.fileno())
         except OSError as error:
             raise WriteError(f"the output folder can't be written ({reason(error)})") from error
+        self._is_journalled = True
         for path, digest in files.items():
-            self._owned[path] = self._owned.get(path, frozenset()) | {digest}
+            self._announced[path] = self._announced.get(path, frozenset()) | {digest}
 
     def _write_new_folder(self, campaign: str, files: Mapping[str, bytes]) -> list[str]:
         """Rename a new campaign's folder into place with all its pages, since these link to each other.
@@ -239,7 +280,7 @@ class Publication:
         retired: dict[str, tuple[str, str]] = {}
         for path, digests in sorted(leftover.items()):
             digest, since = self.old.retired.get(path, (min(digests, default=""), ""))
-            if path.startswith("assets/"):
+            if path.startswith(ASSETS):
                 since = since or f"{now.isoformat()}Z"
                 is_due = now - datetime.fromisoformat(since.removesuffix("Z")) > ASSET_GRACE
             else:
@@ -265,81 +306,25 @@ class Publication:
         return True
 
 
-def read_manifest(output: Path) -> Manifest:
-    """Read the manifest of an output folder; an empty one where there is none that can be read."""
-    try:
-        content = json.loads((output / MANIFEST_NAME).read_bytes())
-        if content["format"] != FORMAT:
-            return Manifest()
-        return Manifest(
-            campaigns={
-                name: Published(fingerprint=item["fingerprint"], files=item["files"], about=item["about"])
-                for name, item in content["campaigns"].items()
-            },
-            retired={path: (digest, since) for path, (digest, since) in content["retired"].items()},
-        )
-    except (OSError, ValueError, TypeError, KeyError, AttributeError):
-        return Manifest()
+def _assets_of(published: Published) -> Iterable[tuple[str, str]]:
+    files = published.files
+    return files.assets() if isinstance(files, FileList) else FileList(files).assets()
 
 
-def _dump(manifest: Manifest) -> bytes:
-    content = {
-        "format": FORMAT,
-        "campaigns": {
-            name: {"fingerprint": item.fingerprint, "files": item.files, "about": item.about}
-            for name, item in sorted(manifest.campaigns.items())
-        },
-        "retired": manifest.retired,
-    }
-    return json.dumps(content, indent=0, ensure_ascii=False, sort_keys=True).encode() + b"\n"
-
-
-def _read_journal(output: Path) -> _Journal:
-    files: dict[str, frozenset[str]] = {}
-    campaigns: set[str] = set()
-    try:
-        text = (output / JOURNAL_NAME).read_bytes().decode("utf-8", "replace")
-    except OSError:
-        return _Journal({}, frozenset())
-    for line in text.splitlines():
-        with contextlib.suppress(ValueError, TypeError, KeyError, AttributeError):  # a line that a kill cut off
-            entry = json.loads(line)
-            for path, digest in entry["files"].items():
-                files[path] = files.get(path, frozenset()) | {digest}
-            campaigns.add(entry["campaign"])
-    return _Journal(files, frozenset(campaigns))
-
-
-def _void(manifest: Manifest, campaigns: Iterable[str]) -> Manifest:
-    """The manifest with the fingerprints of these campaigns emptied: they must be made again."""
-    emptied = {
-        name: replace(manifest.campaigns[name], fingerprint="") for name in campaigns if name in manifest.campaigns
-    }
-    return replace(manifest, campaigns={**manifest.campaigns, **emptied})
-
-
-def _owned(manifest: Manifest, journal: _Journal) -> dict[str, frozenset[str]]:
-    """Every address that this program has written, with the digests that its content may have."""
-    owned = {path: frozenset({digest}) for path, digest in manifest.files().items()}
-    owned |= {path: frozenset({digest}) for path, (digest, _) in manifest.retired.items()}
-    for path, digests in journal.files.items():
-        owned[path] = owned.get(path, frozenset()) | digests
-    return owned
-
-
-def _missing(output: Path, files: Iterable[str]) -> bool:
-    """Whether one of the files is gone, at the cost of one listing per folder."""
-    wanted: dict[str, set[str]] = {}
+def _absent(output: Path, files: Iterable[str]) -> set[str]:
+    """Those of the files that are gone, at the cost of one listing per folder."""
+    wanted: dict[str, dict[str, str]] = {}
     for path in files:
         folder, _, name = path.rpartition("/")
-        wanted.setdefault(folder, set()).add(name)
+        wanted.setdefault(folder, {})[name] = path
+    absent: set[str] = set()
     for folder, names in wanted.items():
         try:
-            if not names <= set(os.listdir(output / folder)):  # noqa: PTH208 - names are all that is wanted
-                return True
+            here = set(os.listdir(output / folder))  # noqa: PTH208 - names are all that is wanted
         except OSError:
-            return True
-    return False
+            here = set()
+        absent |= {path for name, path in names.items() if name not in here}
+    return absent
 
 
 def _holds(path: Path, digest: str, size: int) -> bool:
@@ -355,7 +340,7 @@ def _in_order(output: Path, campaign: str, paths: Iterable[str]) -> list[str]:
     def rank(path: str) -> tuple[int, str]:
         if path in (f"{campaign}/index.html", "index.html"):
             return 3, path
-        if path.startswith("assets/"):
+        if path.startswith(ASSETS):
             return 0, path
         return (2 if (output / path).exists() else 1), path
 

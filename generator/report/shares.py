@@ -15,6 +15,8 @@ from generator.report.parts import Cell, Column, Row, Table, text_cell
 
 #: More decimals of percent than this no scale follows.
 MOST_SHARE_PLACES = 3
+#: So many places behind the printed ones a slack is still worth a number.
+_TELLING_PLACES = 3
 #: With more lots than this only the nearest rounding is tried: the others are too many.
 _MOST_TRIED_LOTS = 8
 
@@ -34,8 +36,8 @@ def printed_shares(lookup: Lookup, finding: OrderFinding, shares: Mapping[str, F
     One decimal is rounded to the nearest only; from two on each share may be rounded up or down, such
     that they sum to 100, and the nearest rounding that holds is taken.
     """
-    least = numbers.share_places(shares.values())
-    for places in range(least, max(least, MOST_SHARE_PLACES) + 1):
+    least = min(numbers.share_places(shares.values()), MOST_SHARE_PLACES)
+    for places in range(least, MOST_SHARE_PLACES + 1):
         roundings = _roundings(shares, places) if places > 1 else [numbers.percent_shares(shares, places)]
         for percent in roundings:
             if all(_holds(lookup, limit, percent) for limit in finding.limits):
@@ -94,7 +96,7 @@ def recipe_table(lookup: Lookup, finding: OrderFinding, recipe: Recipe, anchor: 
         columns.append(Column(title="Share × cost", unit=per, kind="number"))
     rows = []
     for name, share in recipe.exact.items():
-        cells = [lot_cell(lookup, name, page), text_cell(numbers.text(printed.percent[name], printed.places))]
+        cells = [lot_cell(lookup, name, page), text_cell(_share_text(printed, name))]
         if amounts is not None:
             cells.append(text_cell(amounts[name]))
         if has_cost:
@@ -105,6 +107,16 @@ def recipe_table(lookup: Lookup, finding: OrderFinding, recipe: Recipe, anchor: 
     rows.append(Row(cells=_recipe_totals(recipe, printed, amounts, has_cost), is_total=True))
     note = "" if printed.holds else "Shares are rounded; the exact ones, which hold every limit, stand in the proof."
     return Table(anchor=anchor, caption=caption, columns=tuple(columns), rows=tuple(rows), note=note)
+
+
+def _share_text(printed: PrintedShares, name: str) -> str:
+    """A share as printed; one that rounds to nothing is told as less than the last place."""
+    percent = printed.percent[name]
+    return (
+        numbers.text(percent, printed.places)
+        if percent
+        else f"< {numbers.text(Fraction(1, 10**printed.places), printed.places)}"
+    )
 
 
 def _recipe_totals(
@@ -143,7 +155,23 @@ def lot_cell(lookup: Lookup, name: str, page: str) -> Cell:
     """A lot's name, leading to its page, with the sign of its role."""
     found = lookup.lot_findings.get(name)
     mark = found.role if found and found.role else ""
-    return Cell(text=name, href=lookup.link(page, lookup.lot_addresses.get(name, "")), mark=mark)
+    href = lookup.link(page, lookup.lot_addresses.get(name, ""))
+    return Cell(text=name, href=href, mark=mark, key=lot_key(name))
+
+
+def lot_key(name: str) -> str:
+    """What rows and marks of a lot are found by."""
+    return f"lot {name}"
+
+
+def limit_cell(lookup: Lookup, quantity: str) -> Cell:
+    """A limited quantity's label and unit, as the first cell of a row."""
+    return text_cell(lookup.name_with_unit(quantity), key=limit_key(lookup, quantity))
+
+
+def limit_key(lookup: Lookup, quantity: str) -> str:
+    """What rows and marks of a limit are found by."""
+    return f"limit {lookup.labels.get(quantity, quantity)}"
 
 
 def values_table(
@@ -158,7 +186,7 @@ def values_table(
         rows.append(
             Row(
                 cells=(
-                    text_cell(lookup.name_with_unit(limit.on)),
+                    limit_cell(lookup, limit.on),
                     text_cell(words.window(limit.low, limit.high)),
                     text_cell(
                         numbers.UNKNOWN if value is None else words.beside(value, limit.low, limit.high, places),
@@ -190,4 +218,6 @@ def _spare_text(spare: float | None, places: int) -> str:
         return numbers.UNKNOWN
     if abs(spare) < 1e-9:
         return "none"
-    return numbers.text(spare, places) if round(Fraction(spare), places) else numbers.significant(spare, 1)
+    if round(Fraction(spare), places):
+        return numbers.text(spare, places)
+    return numbers.significant(spare, 1) if round(Fraction(spare), places + _TELLING_PLACES) else "almost none"

@@ -6,8 +6,10 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from generator.findings.records import Findings
+from generator.history.chronicle import Line
 from generator.intake.records import Campaign
 from generator.problems import Problem
+from generator.report import words
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -28,7 +30,11 @@ class CampaignPages:
     ``revisions`` are oldest first; ``changes`` are sentences, the answers that changed since the
     revision before the last.  ``banner_problems`` are those of a campaign that stopped: it shows its
     last good campaign and findings, under a banner; empty otherwise.  A ``campaign`` that is itself
-    stopped has no good revision, and gets a problem page.
+    stopped has no good revision, and gets a problem page.  ``edition`` is whom the pages are for,
+    ``hidden`` what it leaves out (already taken out of the records), ``client`` whose orders alone are
+    shown ("": all); ``apart`` is every two lots that the house rules keep apart.  ``past`` are the newest
+    revisions' stories, oldest first, where history pages stand beside these; they tell of everything, so
+    that no other edition than the internal one has them.
     """
 
     campaign: Campaign
@@ -37,6 +43,11 @@ class CampaignPages:
     changes: tuple[str, ...] = ()
     banner_problems: tuple[Problem, ...] = ()
     version: str
+    edition: str = "internal"
+    hidden: frozenset[str] = frozenset()
+    client: str = ""
+    apart: tuple[tuple[str, str], ...] = ()
+    past: tuple[Line, ...] = ()
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -50,6 +61,7 @@ class IndexEntry:
     headline: str = ""
     problems: tuple[Problem, ...] = ()
     is_stopped: bool = False
+    together: str = ""
 
 
 def index_entry(book: CampaignPages) -> IndexEntry:
@@ -68,4 +80,5 @@ def index_entry(book: CampaignPages) -> IndexEntry:
         headline=last.headline if last else "",
         problems=book.banner_problems or book.campaign.problems,
         is_stopped=book.campaign.is_stopped or bool(book.banner_problems),
+        together="" if book.campaign.is_stopped else words.together(book.findings),
     )

@@ -12,10 +12,14 @@ from generator.report.figures import curve
 from generator.report.figures.canvas import finished
 from generator.report.lookup import Lookup
 from generator.report.parts import Cell, Column, FigureView, Row, Section, Table, text_cell
-from generator.report.shares import lot_cell, values_table
+from generator.report.shares import limit_cell, lot_cell, values_table
 
 #: A longer list of prices is folded.
 _MOST_OPEN = 12
+_STEP = (
+    "Not every limit here has a laboratory sd, so room is counted in steps. One step tightens every limit at once: by "
+    "its sd where it has one, else a window by half its width and a one-sided limit by 1 % of its bound."
+)
 
 
 def ways_out(lookup: Lookup, finding: OrderFinding, page: str) -> Section | None:
@@ -92,7 +96,7 @@ def room(lookup: Lookup, finding: OrderFinding) -> Section | None:
     if not finding.curve:
         return None
     settings = lookup.campaign.settings
-    unit = "sd" if finding.room_unit == "sd" else "scale steps"
+    unit = "sd" if finding.room_unit == "sd" else "steps"
     money = f"{settings.currency} per {settings.quantity_unit}"
     caption = "What more room costs: each corner of the line is a recipe."
     svg = finished(
@@ -118,7 +122,10 @@ def room(lookup: Lookup, finding: OrderFinding) -> Section | None:
         Column(title="Shares"),
     )
     table = Table(anchor="curve-corners", caption="Corners of the curve", columns=columns, rows=tuple(rows))
-    return Section(anchor="room", title="Room and cost", figures=(figure,), tables=(table,), layout="beside")
+    sentences = () if finding.room_unit == "sd" else (_STEP,)
+    return Section(
+        anchor="room", title="Room and cost", sentences=sentences, figures=(figure,), tables=(table,), layout="beside"
+    )
 
 
 def _shares_in_words(shares: Mapping[str, float]) -> str:
@@ -135,18 +142,15 @@ def without_lot(lookup: Lookup, finding: OrderFinding, page: str) -> Section | N
     rows = []
     for name, (verdict, cost) in finding.without_lot.items():
         mark = verdict or "none"
-        cells = (
-            lot_cell(lookup, name, page),
-            Cell(text=words.VERDICT_WORDS[mark], mark=mark),
-            text_cell(numbers.UNKNOWN if cost is None else numbers.money(cost)),
-        )
-        rows.append(Row(cells=cells))
-    columns = (
-        Column(title="Without lot"),
-        Column(title="Verdict"),
-        Column(title="Least cost", unit=f"{settings.currency} per {settings.quantity_unit}", kind="number"),
-    )
-    table = Table(anchor="without", caption="If a lot were missing", columns=columns, rows=tuple(rows))
+        cells = [lot_cell(lookup, name, page), Cell(text=words.VERDICT_WORDS[mark], mark=mark)]
+        if not lookup.hides("cost"):
+            cells.append(text_cell(numbers.UNKNOWN if cost is None else numbers.money(cost)))
+        rows.append(Row(cells=tuple(cells)))
+    columns = [Column(title="Without lot"), Column(title="Verdict")]
+    if not lookup.hides("cost"):
+        per = f"{settings.currency} per {settings.quantity_unit}"
+        columns.append(Column(title="Least cost", unit=per, kind="number"))
+    table = Table(anchor="without", caption="If a lot were missing", columns=tuple(columns), rows=tuple(rows))
     return Section(anchor="without-lot", title="Without this lot", tables=(table,))
 
 
@@ -187,7 +191,7 @@ def _worth_row(lookup: Lookup, limit: LimitFinding) -> Row:
     holds: Range = limit.worth_holds or (None, None)
     return Row(
         cells=(
-            text_cell(lookup.name_with_unit(limit.on)),
+            limit_cell(lookup, limit.on),
             text_cell(numbers.significant(limit.worth or 0, 3)),
             text_cell(words.span(holds, lookup.places.get(limit.on, 2))),
         )

@@ -55,7 +55,13 @@ CAUTION_APART_EMPTY = "No list of materials to keep apart is given: nothing of t
 CAUTION_APART = "The list of materials to keep apart is the site's own; nothing beyond it was checked."
 
 ASSAY_ERROR = "Assay error only: sampling and segregation are not in it unless the standard deviations include them."
+PROOF_WITHHELD = "The proof rests on data that this edition leaves out; those who sent it have it."
 SHADOW = "A point inside a two-dimensional shadow can still be outside the hull."
+
+
+def edition_in_words(edition: str) -> str:
+    """What the pages say of whom they are for; nothing on those for everybody inside."""
+    return "" if edition == "internal" else f"Edition {edition}: some data are left out of these pages"
 
 
 def plural(count: int, one: str, many: str = "") -> str:
@@ -74,7 +80,7 @@ def counts_in_words(counts: Mapping[str, int]) -> str:
     return listed(f"{counts[verdict]} {VERDICT_WORDS[verdict]}" for verdict in VERDICTS if counts.get(verdict))
 
 
-def summary(findings: Findings, counts: Mapping[str, int], has_stock: bool) -> str:
+def summary(findings: Findings, counts: Mapping[str, int], is_stock_known: bool) -> str:
     """What a campaign's answers come to, in a sentence or two."""
     corners = sum(1 for lot in findings.lots if lot.role == "corner")
     lots = plural(len(findings.lots), "lot")
@@ -83,8 +89,23 @@ def summary(findings: Findings, counts: Mapping[str, int], has_stock: bool) -> s
     if not findings.orders:
         return f"No order is open. {lots}."
     alone = ", each taken alone" if len(findings.orders) > 1 else ""
-    stock = "" if has_stock else " Stock not checked."
+    stock = "" if is_stock_known else " Stock not checked."
     return f"{plural(len(findings.orders), 'order')}{alone}: {counts_in_words(counts)}. {lots}.{stock}"
+
+
+def together(findings: Findings) -> str:
+    """Words such as "9 makeable alone, 6 served together, 1 of them in part"; empty without a plan."""
+    plan = findings.plan
+    if plan is None or not findings.orders:
+        return ""
+    alone = sum(1 for finding in findings.orders if finding.verdict in ("makeable", "edge"))
+    states = [planned.state for planned in plan.orders.values()]
+    served = len(states) - states.count("none")
+    text = f"{alone} makeable alone, {served} served together"
+    partial = states.count("part")
+    if partial:
+        text += ", in part" if partial == served else f", {partial} of them in part"
+    return text
 
 
 def moment(recorded: str) -> str:

@@ -132,35 +132,35 @@ def test_row_of_units() -> None:
             "lot,S [MJ/kg]\nA,1\n",
             "order,S [%]\none,<= 2\n",
             "",
-            "stops: targets.csv, column S [%]: found '%': is in %, and S is in MJ/kg; "
+            "stops: targets.csv, row 2, column S [%]: found '%': is in %, and S is in MJ/kg; "
             "write the limits in one unit with the values, or declare the unit of S in campaign.toml",
         ),
         (
             "lot,S [MJ/kg]\nA,1\n",
             "order,S\none,<= 2\n",
             '[components.S]\nunit = "%"',
-            "stops: assays.csv, column S [MJ/kg]: found 'MJ/kg': is in MJ/kg, and S is in %; "
+            "stops: assays.csv, row 2, column S [MJ/kg]: found 'MJ/kg': is in MJ/kg, and S is in %; "
             'write the values in one unit, or declare unit under [components."S"] in campaign.toml',
         ),
         (
             "lot,S,stock [kg]\nA,1,5\n",
             "order,S\none,<= 2\n",
             "",
-            "stops: assays.csv, column stock [kg]: found 'kg': is in kg, and t is wanted; "
+            "stops: assays.csv, row 2, column stock [kg]: found 'kg': is in kg, and t is wanted; "
             "write the values in t, or change quantity_unit or currency in campaign.toml",
         ),
         (
             "lot,S,cost [USD/t]\nA,1,5\n",
             "order,S\none,<= 2\n",
             "",
-            "stops: assays.csv, column cost [USD/t]: found 'USD/t': is in USD/t, and EUR/t is wanted; "
+            "stops: assays.csv, row 2, column cost [USD/t]: found 'USD/t': is in USD/t, and EUR/t is wanted; "
             "write the values in EUR/t, or change quantity_unit or currency in campaign.toml",
         ),
         (
             "lot,S\nA,1\n",
             "order,S,amount [kg]\none,<= 2,5\n",
             "",
-            "stops: targets.csv, column amount [kg]: found 'kg': is in kg, and quantity_unit is t; "
+            "stops: targets.csv, row 2, column amount [kg]: found 'kg': is in kg, and quantity_unit is t; "
             "write the amounts in t, or change quantity_unit in campaign.toml",
         ),
     ],

@@ -161,7 +161,7 @@ def test_campaign_over_site() -> None:
         ),
         (
             "[editions.internal]\nhide = []",
-            "row 1, column editions.internal: found 'internal': is no setting; write one of client",
+            "row 1, column editions.internal: found 'internal': shows everything and hides nothing; write",
         ),
         (
             "confidence = 0.4",

@@ -8,7 +8,7 @@ from html.parser import HTMLParser
 from urllib.parse import unquote, urlsplit
 
 VOID = frozenset(["area", "base", "br", "col", "embed", "hr", "img", "input", "link", "meta", "source", "track", "wbr"])
-LOADING = frozenset(["script", "iframe", "object", "embed", "audio", "video", "source", "form", "base"])
+LOADING = frozenset(["iframe", "object", "embed", "audio", "video", "source", "form", "base"])
 
 
 class PageReader(HTMLParser):
@@ -69,6 +69,8 @@ class PageReader(HTMLParser):
             self.links.append(values["href"])
         if tag == "link":
             self.loads.append(values["href"])
+        if tag == "script" and "src" not in values and values.get("type") != "application/json":
+            self.faults.append("a script stands in the page")
         if tag in LOADING:
             self.faults.append(f"<{tag}> is not wanted")
         if tag == "img" and not values.get("alt"):

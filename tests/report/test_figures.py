@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+import math
+import random
 import re
 from xml.etree import ElementTree
 
@@ -10,6 +12,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from generator.report.figures import canvas, curve, strips, ternary
+from generator.report.figures.canvas import SMALL_SIZE, width_of
 from generator.report.figures.frame import Axis, padded
 from generator.report.figures.hull import LotPoint, Overlay, Separation, clipped, draw_base, overlay_markup, shadow
 from generator.report.figures.labels import place
@@ -128,3 +131,22 @@ def test_the_triangle_has_its_corners_where_components_are_pure() -> None:
     assert middle == pytest.approx(
         (sum(p[0] for p in (left, right, top)) / 3, sum(p[1] for p in (left, right, top)) / 3)
     )
+
+
+def test_labels_of_sixty_points_are_told_apart() -> None:
+    """No label covers another one, a point or the frame's edge, and each is nearest to its own point."""
+    chance = random.Random(2)
+    points = [(chance.uniform(10, 470), chance.uniform(10, 320)) for _ in range(60)]
+    names = [f"LOT-{number:02}" for number in range(60)]
+    placed, left_over = place(points, names, (0.0, 0.0, 480.0, 330.0), most=60)
+    assert left_over == 60 - len(placed)
+    assert len(placed) > 20
+    boxes = {}
+    for label in placed:
+        wide, high = width_of(label.text), SMALL_SIZE * 1.1
+        boxes[label.text] = (label.x, label.y - high / 2, label.x + wide, label.y + high / 2)
+    for name, (left, bottom, right, top) in boxes.items():
+        for other, (a, b, c, d) in boxes.items():
+            assert name == other or right <= a or c <= left or top <= b or d <= bottom, (name, other)
+        away = [math.hypot(max(left - x, 0, x - right), max(bottom - y, 0, y - top)) for x, y in points]
+        assert min(range(60), key=away.__getitem__) == names.index(name)

@@ -9,16 +9,8 @@ from pathlib import Path
 import pytest
 
 from generator.disk import WriteError, stamp
-from generator.report.publish import (
-    ASSET_GRACE,
-    JOURNAL_NAME,
-    MANIFEST_NAME,
-    SHARED,
-    Publication,
-    Published,
-    Written,
-    read_manifest,
-)
+from generator.report.manifest import JOURNAL_NAME, MANIFEST_NAME, Published, read_manifest
+from generator.report.publish import ASSET_GRACE, SHARED, Publication, Written
 
 NOON = datetime(2026, 3, 2, 12, tzinfo=UTC)
 

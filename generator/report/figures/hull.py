@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from html import escape
 
 from matplotlib.patches import Polygon
 
@@ -16,12 +17,13 @@ Bounds = tuple[float | None, float | None]
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class LotPoint:
-    """A lot in the plane; ``name`` may join several lots of one place."""
+    """A lot in the plane; ``name`` may join several lots of one place, which ``lots`` lists."""
 
     name: str
     x: float
     y: float
     is_corner: bool
+    lots: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -81,12 +83,21 @@ def draw_base(points: Sequence[LotPoint], x_axis: Axis, y_axis: Axis) -> Base:
 
 
 def _labels(frame: Frame, points: Sequence[LotPoint]) -> tuple[str, int]:
-    """Names beside points as SVG, corners first; and how many found no room."""
+    """Names beside points as SVG, the outline's first, then corners; and how many found no room."""
     left, top, right, bottom = frame.box
-    first = sorted(points, key=lambda point: not point.is_corner)
+    outline = set(shadow([(point.x, point.y) for point in points]))
+    first = sorted(points, key=lambda point: ((point.x, point.y) not in outline, not point.is_corner))
     at = [(frame.x(point.x), bottom - frame.y(point.y)) for point in first]
     placed, left_over = labels.place(at, [point.name for point in first], (left, 0, right, bottom - top))
     return labels.markup(placed, bottom), left_over
+
+
+def touch(frame: Frame, x: float, y: float, keys: Sequence[str]) -> str:
+    """SVG of a see-through disc for each lot of one place, by which a script finds the mark."""
+    return "".join(
+        f'<circle class="touch" data-key="{escape(key)}" cx="{frame.x(x):.1f}" cy="{frame.y(y):.1f}" r="8"/>'
+        for key in keys
+    )
 
 
 def shadow(points: Sequence[Pair]) -> list[Pair]:

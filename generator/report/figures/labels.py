@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from html import escape
@@ -15,6 +16,8 @@ _SIDES = ((1, 1), (-1, 1), (1, -1), (-1, -1), (1, 0), (-1, 0), (0, 1), (0, -1))
 #: Distances from the point at which all sides are tried in turn, in SVG units.
 _GAPS = (5.0, 9.0, 14.0)
 _MARK = 5.0
+#: So much further from a label another point has to be than its own, in SVG units.
+_CLEARLY = 2.0
 #: From the middle of a line of small text down to its base line.
 _BELOW_MIDDLE = 4.0
 
@@ -38,7 +41,8 @@ def place(
     """Labels for ``points`` (SVG units, y upwards), and how many found no room.
 
     Greedy, in the order given, at most ``most``: a label that would overlap a point, an obstacle, an
-    earlier label or leave the frame tries the next place, and is left out when there is none.
+    earlier label or leave the frame, or would stand as near to another point as to its own, tries the next
+    place, and is left out when there is none.
     Boxes are (left, bottom, right, top).
     """
     taken: list[Box] = [(x - _MARK, y - _MARK, x + _MARK, y + _MARK) for x, y in points]
@@ -47,7 +51,10 @@ def place(
     for (x, y), text in zip(points, texts, strict=True):
         if len(placed) == most:
             break
-        box = next((box for box in _candidates(x, y, text) if _is_free(box, taken, frame)), None)
+        box = next(
+            (box for box in _candidates(x, y, text) if _is_free(box, taken, frame) and _is_own(box, (x, y), points)),
+            None,
+        )
         if box is not None:
             taken.append(box)
             placed.append(Placed(text, box[0], (box[1] + box[3]) / 2))
@@ -72,6 +79,18 @@ def _candidates(x: float, y: float, text: str) -> list[Box]:
             bottom = y + up * gap + (-high / 2 + up * high / 2 if across == 0 or up == 0 else up * high / 2 - high / 2)
             boxes.append((left, bottom, left + wide, bottom + high))
     return boxes
+
+
+def _is_own(box: Box, point: tuple[float, float], points: Sequence[tuple[float, float]]) -> bool:
+    """Whether a reader takes the label for its own point's: every other one is clearly further away."""
+    reach = _distance(box, point) + _CLEARLY
+    return all(other == point or _distance(box, other) >= reach for other in points)
+
+
+def _distance(box: Box, point: tuple[float, float]) -> float:
+    left, bottom, right, top = box
+    x, y = point
+    return math.hypot(max(left - x, 0.0, x - right), max(bottom - y, 0.0, y - top))
 
 
 def _is_free(box: Box, taken: Sequence[Box], frame: Box) -> bool:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
+from html import escape
 
 from matplotlib.artist import Artist
 from matplotlib.figure import Figure
@@ -57,6 +58,15 @@ def draw(strips: Sequence[Strip]) -> str:
     for position, strip in enumerate(strips):
         _draw_one(figure, strip, _ROW * (len(strips) - position))
     return canvas.markup(figure)
+
+
+def touch(keys: Sequence[str]) -> str:
+    """SVG of one see-through box over each strip, by which a script finds it."""
+    return "".join(
+        f'<rect class="touch" data-key="{escape(key)}" x="0" y="{_ROW * position:.0f}" width="{WIDTH:.0f}" '
+        f'height="{_ROW:.0f}"/>'
+        for position, key in enumerate(keys)
+    )
 
 
 def _draw_one(figure: Figure, strip: Strip, top: float) -> None:

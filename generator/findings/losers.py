@@ -1,0 +1,214 @@
+"""Who loses to whom: why the plan does not serve an order in full, and what would have to give way.
+
+All of it keeps the plan as it is but for one thing: the other orders get what they got, from the lots that
+they use.  The questions are answered in floating point, to about seven digits.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping
+from dataclasses import dataclass
+from fractions import Fraction
+from math import inf
+
+from generator.findings.plan_exact import Settled
+from generator.findings.plan_model import PlanModel
+from generator.findings.plan_parts import Part, part_of, rows_over
+from generator.findings.programs import ZERO
+from generator.findings.records import Loser, Verdict
+from generator.geometry.mixed import Mixed, SparseRow, linear, search
+
+#: An amount counts as reached within this part of itself.
+REACHED = 1e-6
+#: Orders named that could give way, those that give up least first.
+MOST_INSTEAD = 3
+#: Nodes and seconds for one question about one order.
+NODES, SECONDS = 500, 5.0
+#: Gains below this part of the plan's value are noise of the floating point.
+NOISE = 1e-9
+
+
+@dataclass(frozen=True, slots=True)
+class _Kept:
+    """The program of the plan kept as it is, and one order free: its columns come first."""
+
+    part: Part
+    columns: Mapping[int, Mapping[int, int]]
+    rows: tuple[SparseRow, ...]
+    stock: Mapping[int, SparseRow]
+    upper: tuple[float, ...]
+
+
+def losers_of(model: PlanModel, settled: Settled, alone: Mapping[str, Verdict | None]) -> list[Loser]:
+    """A Loser for each order of the plan that is not served in full."""
+    losers = []
+    for k, block in enumerate(model.blocks):
+        accepted = sum(settled.amounts[k].values(), ZERO)
+        # An order of any amount loses only if it gets nothing.
+        wanted = block.asked if block.asked is not None else block.most / 1000
+        if accepted >= wanted or (block.asked is None and accepted > 0):
+            continue
+        verdict = alone.get(block.order.name)
+        if verdict == "short" and block.low > 0:
+            losers.append(Loser(order=block.order.name, alone=verdict, reason="alone"))
+            continue
+        losers.append(_loser(model, settled, k, wanted, verdict))
+    return losers
+
+
+def _loser(model: PlanModel, settled: Settled, k: int, wanted: Fraction, verdict: Verdict | None) -> Loser:
+    name = model.blocks[k].order.name
+    kept = _kept(model, settled, k)
+    if _reaches(kept, wanted, frozenset()):
+        return Loser(order=name, alone=verdict, reason="price")
+    limited = [lot for lot in model.blocks[k].model.lots if lot in kept.stock]
+    single = [lot for lot in limited if _reaches(kept, wanted, frozenset([lot]))]
+    together: list[int] = []
+    if not single and _reaches(kept, wanted, frozenset(limited)):
+        together = _fewest(kept, wanted, limited)
+    instead = _instead(model, settled, k, wanted)
+    return Loser(
+        order=name,
+        alone=verdict,
+        reason="alone" if verdict == "short" and not single and not together else "stock",
+        short=tuple(model.campaign.lots[lot].name for lot in single or together),
+        is_together=bool(together),
+        instead={model.blocks[j].order.name: cut for j, cut in instead},
+    )
+
+
+def _kept(model: PlanModel, settled: Settled, free: int, loose: int | None = None) -> _Kept:
+    """The plan with block ``free`` open and block ``loose`` allowed to take less; all others as they are."""
+    part = part_of(model.blocks[free], caps_by_stock=False)
+    rows = list(part.rows)
+    upper = list(part.upper)
+    columns: dict[int, dict[int, int]] = {free: {i: i for i in range(part.n)}}
+    for j, own in enumerate(settled.amounts):
+        if j == free or not own:
+            continue
+        place = {i: len(upper) + position for position, i in enumerate(sorted(own))}
+        columns[j] = place
+        upper += [inf] * len(place)
+        rows += rows_over(model.blocks[j], place)
+        accepted = float(sum(own.values(), ZERO)) / float(model.blocks[j].most)
+        total = dict.fromkeys(place.values(), 1.0)
+        rows.append(SparseRow(total, 0.0 if j == loose else accepted * (1 - NOISE), accepted))
+    return _Kept(part, columns, tuple(rows), _stock(model, columns), tuple(upper))
+
+
+def _stock(model: PlanModel, columns: Mapping[int, Mapping[int, int]]) -> dict[int, SparseRow]:
+    """The stock row of every lot that some column draws on, as a share of its stock."""
+    terms: dict[int, dict[int, float]] = {}
+    for j, place in columns.items():
+        block = model.blocks[j]
+        for i, column in place.items():
+            stock = model.stock.get(block.model.lots[i])
+            if stock is not None and stock > 0:
+                terms.setdefault(block.model.lots[i], {})[column] = float(block.most / stock)
+    return {lot: SparseRow(own, -inf, 1.0 + NOISE) for lot, own in sorted(terms.items())}
+
+
+def _reaches(kept: _Kept, wanted: Fraction, freed: frozenset[int]) -> bool:
+    """Whether the open order can have ``wanted`` with the stock of ``freed`` lots unlimited."""
+    rows = [*kept.rows, *(row for lot, row in kept.stock.items() if lot not in freed)]
+    target = _least_total(kept, wanted)
+    program = Mixed(cost=[0.0] * len(kept.upper), upper=kept.upper, rows=[*rows, target], whole=kept.part.whole)
+    # Rules waived first: what is out of reach then needs no search.
+    if linear(program).x is None:
+        return False
+    return not kept.part.whole or search(program, nodes=NODES, seconds=SECONDS).x is not None
+
+
+def _least_total(kept: _Kept, wanted: Fraction) -> SparseRow:
+    return SparseRow(dict.fromkeys(range(kept.part.n), 1.0), float(wanted) / kept.part.scale * (1 - REACHED), inf)
+
+
+def _fewest(kept: _Kept, wanted: Fraction, lots: Iterable[int]) -> list[int]:
+    """Of lots that do together, a choice of which none can be spared: those last in the file go first."""
+    needed = list(lots)
+    for lot in reversed(list(needed)):
+        rest = [other for other in needed if other != lot]
+        if rest and _reaches(kept, wanted, frozenset(rest)):
+            needed = rest
+    return needed
+
+
+def _instead(model: PlanModel, settled: Settled, k: int, wanted: Fraction) -> list[tuple[int, float]]:
+    """Accepted orders that could give way to order k, with what each would give up, the least first."""
+    found = []
+    for j, own in enumerate(settled.amounts):
+        if j == k or not own:
+            continue
+        accepted = sum(own.values(), ZERO)
+        kept = _kept(model, settled, k, loose=j)
+        total = kept.columns[j].values()
+        cost = [0.0] * len(kept.upper)
+        for column in total:
+            cost[column] = -1.0
+        rows = [*kept.rows, *kept.stock.values(), _least_total(kept, wanted)]
+        upper = list(kept.upper)
+        if model.blocks[j].low > 0:
+            for column in total:
+                upper[column] = 0.0
+        program = Mixed(cost=cost, upper=upper, rows=rows, whole=kept.part.whole)
+        waived = linear(program)
+        if waived.x is None:
+            continue
+        best = search(program, nodes=NODES, seconds=SECONDS) if kept.part.whole else waived
+        if best.x is not None:
+            cut = float(accepted) + best.value * float(model.blocks[j].most)
+            found.append((max(0.0, cut) if model.blocks[j].low <= 0 else float(accepted), j))
+    return [(j, cut) for cut, j in sorted(found)[:MOST_INSTEAD]]
+
+
+def one_more_of(model: PlanModel, settled: Settled) -> dict[int, float]:
+    """What one unit more of each lot that runs out would add to the classes' value or amount.
+
+    One-sided: a gain from more, the accepted orders and the lots of each kept.
+    """
+    used: dict[int, Fraction] = {}
+    for block, own in zip(model.blocks, settled.amounts, strict=True):
+        for i, x in own.items():
+            used[block.model.lots[i]] = used.get(block.model.lots[i], ZERO) + x
+    runs_out = [lot for lot, amount in sorted(used.items()) if model.stock.get(lot) == amount]
+    before = _classes(model, settled, None) if runs_out else 0.0
+    gains = {}
+    for lot in runs_out:
+        gain = _classes(model, settled, lot) - before
+        gains[lot] = gain if gain > NOISE * max(1.0, abs(before)) else 0.0
+    return gains
+
+
+def _classes(model: PlanModel, settled: Settled, lot: int | None) -> float:
+    """The sum of the classes' values, first to last, with one unit more of ``lot``."""
+    columns: dict[int, dict[int, int]] = {}
+    rows: list[SparseRow] = []
+    width = 0
+    for k, lots in enumerate(settled.choice.lots):
+        block = model.blocks[k]
+        if not settled.choice.accepted[k] or not lots:
+            continue
+        columns[k] = {i: width + position for position, i in enumerate(sorted(lots))}
+        width += len(lots)
+        rows += rows_over(block, columns[k])
+        total = dict.fromkeys(columns[k].values(), 1.0)
+        rows.append(SparseRow(total, float(block.low / block.most), float((block.high or block.most) / block.most)))
+    stock = _stock(model, columns)
+    if lot is not None:
+        stock[lot] = SparseRow(stock[lot].terms, -inf, 1.0 + float(1 / model.stock[lot]))
+    rows += stock.values()
+    value = 0.0
+    for stage in model.stages:
+        if stage.priority is None:
+            break
+        cost = [0.0] * width
+        for k, place in columns.items():
+            for i, column in place.items():
+                cost[column] = float(stage.costs[k][i] * model.blocks[k].most)
+        found = linear(Mixed(cost=cost, upper=[inf] * width, rows=rows))
+        if found.x is None:
+            break
+        value -= found.value if stage.aim == "value" or not model.is_valued else 0.0
+        terms = {column: c for column, c in enumerate(cost) if c}
+        rows.append(SparseRow(terms, -inf, found.value + NOISE * max(1.0, abs(found.value))))
+    return value

@@ -1,0 +1,131 @@
+"""Whether published files still stand as they were written, at the cost of one look at each folder.
+
+A file that comes, goes or is replaced changes its folder's stamp; only then are its files looked at one by one, and
+only one that was touched is read.  A file rewritten in place leaves its folder's stamp alone: a thorough look, which
+asks for every file's stamp, finds that as well.  The stamps are kept beside the manifest and are no part of it: they
+may be lost at any time, at the cost of reading the files once.
+"""
+
+from __future__ import annotations
+
+import hashlib
+import json
+import os
+from collections.abc import Iterable, Mapping
+from pathlib import Path
+
+from generator.disk import WriteError, sha256, write_whole
+
+STAMPS_NAME = ".hullbook-stamps.json"
+FORMAT = "hullbook-stamps-1"
+
+#: When a folder's entries changed last, its number on the disk, and a digest of its files' sizes and moments.
+Look = tuple[int, int, str]
+
+
+class Presence:
+    """What is known of the published files' stamps; ``thorough`` asks for every file's, not only for every folder's."""
+
+    def __init__(self, output: Path, *, thorough: bool = False) -> None:
+        self._output = os.fspath(output)
+        self._thorough = thorough
+        self._before = _read(output)
+        self._now: dict[str, dict[str, Look]] = {}
+        self._folders: dict[str, tuple[int, int] | None] = {}
+
+    def holds(self, campaign: str, files: Mapping[str, str]) -> bool:
+        """Whether every file of a campaign, digests by address, is there with its content."""
+        before = self._before.get(campaign)
+        # The program writes its own records into the top folder all the time: its stamp tells nothing.
+        if before and not self._thorough and self._stand(before):
+            self._now[campaign] = before
+            return True
+        looks = {}
+        for name, own in _by_folder(files).items():
+            look = self._look(name, own)
+            if look is None:
+                return False
+            is_known = before is not None and name in before and before[name][2] == look[2]
+            if not is_known and not all(_has(f"{self._output}/{path}", files[path]) for path in own):
+                return False
+            looks[name] = look
+        self._now[campaign] = looks
+        return True
+
+    def note(self, campaign: str, files: Iterable[str]) -> None:
+        """Remember how the files of a campaign, just written, look."""
+        self._folders.clear()
+        looks = {name: self._look(name, own) for name, own in _by_folder(files).items()}
+        self._now[campaign] = {name: look for name, look in looks.items() if look is not None}
+
+    def keep(self, campaign: str) -> None:
+        """Remember of a campaign what was known before."""
+        if campaign not in self._now and campaign in self._before:
+            self._now[campaign] = self._before[campaign]
+
+    def save(self) -> None:
+        """Write down what is remembered, if that differs; a folder that refuses it costs only time."""
+        if self._now == self._before:
+            return
+        text = json.dumps({"format": FORMAT, "campaigns": self._now}, sort_keys=True)
+        try:
+            write_whole(Path(self._output) / STAMPS_NAME, text.encode("utf-8", "surrogatepass"))
+        except WriteError:
+            return
+
+    def _stand(self, looks: Mapping[str, Look]) -> bool:
+        """Whether the folders are as they were."""
+        for name, look in looks.items():
+            if not name or self._folder(name) != look[:2]:
+                return False
+        return True
+
+    def _folder(self, name: str) -> tuple[int, int] | None:
+        if name not in self._folders:
+            try:
+                status = os.stat(f"{self._output}/{name}")  # noqa: PTH116 - ten thousand folders in a blink
+                self._folders[name] = (status.st_mtime_ns, status.st_ino) if name else (0, 0)
+            except OSError:
+                self._folders[name] = None
+        return self._folders[name]
+
+    def _look(self, name: str, own: Iterable[str]) -> Look | None:
+        """Look at a folder and the files in it that are the campaign's; None where one is gone."""
+        folder = self._folder(name)
+        if folder is None:
+            return None
+        digest = hashlib.sha256()
+        for path in own:
+            try:
+                status = os.stat(f"{self._output}/{path}")  # noqa: PTH116 - as above
+            except OSError:
+                return None
+            digest.update(f"{path}\0{status.st_size}\0{status.st_mtime_ns}\0{status.st_ino}\n".encode())
+        return (*folder, digest.hexdigest()[:16])
+
+
+def _by_folder(files: Iterable[str]) -> dict[str, list[str]]:
+    found: dict[str, list[str]] = {}
+    for path in sorted(files):
+        found.setdefault(path.rpartition("/")[0], []).append(path)
+    return found
+
+
+def _has(path: str, digest: str) -> bool:
+    try:
+        return sha256(Path(path).read_bytes()) == digest
+    except OSError:
+        return False
+
+
+def _read(output: Path) -> dict[str, dict[str, Look]]:
+    try:
+        content = json.loads((output / STAMPS_NAME).read_bytes())
+        if content["format"] != FORMAT:
+            return {}
+        return {
+            campaign: {name: (moment, number, digest) for name, (moment, number, digest) in looks.items()}
+            for campaign, looks in content["campaigns"].items()
+        }
+    except (OSError, ValueError, TypeError, KeyError, AttributeError, RecursionError):
+        return {}
