@@ -123,7 +123,7 @@ class Crew:
 
     def __init__(self, size: int, longest: float) -> None:
         self._size = size
-        self._longest = longest
+        self.longest = longest
         self._hands: list[_Hand] = []
 
     def __enter__(self) -> Crew:
@@ -160,7 +160,7 @@ class Crew:
         """The chapter that stands in for one that failed says when to try again."""
         if failure is None:
             return chapter
-        return replace(chapter, overran=self._longest) if failure.is_overrun else replace(chapter, must_repeat=True)
+        return replace(chapter, overran=self.longest) if failure.is_overrun else replace(chapter, must_repeat=True)
 
     def call(self, function: str, *arguments: object, tick: Tick) -> Any:
         """Return what the function "module:name" gives; None where it took too long or died, or is not wanted."""
@@ -217,9 +217,9 @@ class Crew:
                 else:
                     hand.doing = None
                     yield call, answer
-            elif time.monotonic() - hand.since > self._longest:
+            elif time.monotonic() - hand.since > self.longest:
                 self._dismiss(hand)
-                yield call, _overran(self._longest)
+                yield call, _overran(self.longest)
 
     def _dismiss(self, hand: _Hand) -> None:
         self._hands.remove(hand)

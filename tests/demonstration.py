@@ -53,8 +53,7 @@ STORIES: Mapping[str, Story] = {
                 Edit("stock.csv", "MOP-31,95,", "MOP-31,240,"),
                 Edit(
                     "targets.csv",
-                    "S-409 25-5-5 +SO3,Sedgewater Estate,75,398,2026-04-09,2,whole,"
-                    ">= 25,5 - 6,5 - 6,,>= 8,CAN*; TSP*,\n",
+                    "S-409 25-5-5 +SO3,Sedgewater Estate,75,398,2026-04-09,2,whole,>= 25,5 - 6,5 - 6,,>= 8,,\n",
                 ),
             ),
             (

@@ -15,7 +15,7 @@ from generator.history.check import check_history
 from generator.intake.campaign import read_campaign
 from tests.demonstration import CAMPAIGNS, STORIES, present_files, record, states
 
-VERDICTS = {"makeable", "edge", "short", "unreachable"}
+VERDICTS = {"makeable", "barred", "edge", "short", "unreachable"}
 ANEW = "; run python -m tests.demonstration"
 
 

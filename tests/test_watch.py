@@ -1,5 +1,6 @@
 import errno
 import json
+import logging
 import os
 import re
 import shutil
@@ -15,7 +16,8 @@ import pytest
 
 from generator import watch as watching
 from generator.lock import LockedError
-from generator.watch import mount_type, wants_events, watch
+from generator.status import read_status
+from generator.watch import is_telling, mount_type, wants_events, watch
 from tests.sample import ASSAYS, NOON, TARGETS, Told, light_pages, make_job, put_campaign, run
 
 #: Far more than anything here takes, so that a busy machine fails no test.
@@ -87,6 +89,7 @@ def watched(request: pytest.FixtureRequest, tmp_path: Path, monkeypatch: pytest.
         watcher = Watched(tmp_path, request.param)
         try:
             watcher.shows("1: makeable")
+            eventually(lambda: watcher.builds() == 1)
             yield watcher
         finally:
             watcher.end()
@@ -232,6 +235,87 @@ def test_a_full_disk_is_tried_again(watched: Watched, monkeypatch: pytest.Monkey
     watched.shows("later")
 
 
+def test_a_folder_removed_and_made_again_is_built(watched: Watched) -> None:
+    """A campaign deleted and recreated under its name shows what it holds now."""
+    shutil.rmtree(watched.campaigns / "spring")
+    put_campaign(watched.campaigns, targets_csv=TARGETS.replace(">= 16", ">= 21"))
+    watched.shows("1: unreachable")
+
+
+def test_a_folder_moved_out_and_in_again(watched: Watched) -> None:
+    """A campaign moved elsewhere goes, edits there are nobody's business, and it comes back with them."""
+    put_campaign(watched.campaigns, "other")
+    watched.shows("1: makeable", "other")
+    away = watched.root / "away"
+    (watched.campaigns / "other").rename(away)
+    watched.lacks("other")
+    (away / "targets.csv").write_text(TARGETS.replace(">= 16", ">= 21"))
+    away.rename(watched.campaigns / "other")
+    watched.shows("1: unreachable", "other")
+
+
+def test_a_clock_set_back_hides_no_edit(watched: Watched) -> None:
+    """An edit whose moment lies before the last build's, or far ahead, is one all the same."""
+    path = watched.campaigns / "spring" / "targets.csv"
+    for moment, limit, verdict in ((1, "21", "unreachable"), (4_000_000_000, "15", "makeable")):
+        path.write_text(TARGETS.replace(">= 16", f">= {limit}"))
+        os.utime(path, (moment, moment))
+        watched.shows(f"1: {verdict}")
+
+
+def test_a_theme_is_followed(watched: Watched) -> None:
+    """An edit of the theme that a campaign is shown in draws its pages anew, and no sooner than it is saved."""
+    theme = watched.root / "mine"
+    theme.mkdir()
+    (theme / "style.css").write_text("p { color: red }")
+    put_campaign(watched.campaigns, campaign_toml=f'theme = "{theme}"\n')
+    watched.shows("theme mine")
+    eventually(lambda: watched.builds() == 2)
+    watched.rests()
+    assert watched.builds() == 2
+    (theme / "style.css").write_text("p { color: blue }")
+    eventually(lambda: watched.builds() > 2, "the theme was not followed")
+
+
+def test_the_status_tells_of_the_missing_folder(watched: Watched) -> None:
+    """Monitoring hears that the campaigns folder is away, and that it is back."""
+    away = watched.root / "away"
+    watched.campaigns.rename(away)
+    eventually(lambda: read_status(watched.output).get("state") == "trouble")
+    away.rename(watched.campaigns)
+    eventually(lambda: read_status(watched.output).get("state") == "well")
+
+
+def test_a_page_written_into_is_restored_by_the_full_look(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """What somebody writes into a published page is gone after the next full look."""
+    monkeypatch.setattr(watching, "FULL_LOOK_EVERY", 0.3)
+    put_campaign(tmp_path / "campaigns")
+    with light_pages():
+        watcher = Watched(tmp_path, "always")
+        try:
+            watcher.shows("1: makeable")
+            (tmp_path / "output/spring/index.html").write_text("my own words")
+            watcher.shows("1: makeable")
+        finally:
+            watcher.end()
+
+
+def test_an_overflow_of_events_wakes_the_loop(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """The observer tells of lost events in its log only; a scan follows at once."""
+    monkeypatch.setattr(watching, "RESCAN_EVERY", 3600.0)
+    monkeypatch.setattr(watching.Hints, "ensure", lambda self: True)
+    put_campaign(tmp_path / "campaigns")
+    with light_pages():
+        watcher = Watched(tmp_path, "never")
+        try:
+            watcher.shows("1: makeable")
+            put_campaign(watcher.campaigns, targets_csv=TARGETS.replace(">= 16", ">= 21"))
+            logging.getLogger("watchdog.observers.inotify").warning("Inotify queue overflowed")
+            watcher.shows("1: unreachable")
+        finally:
+            watcher.end()
+
+
 def test_lost_events_are_made_up_for(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     """When no event ever arrives the regular scan finds the change."""
     monkeypatch.setattr(watching, "RESCAN_EVERY", 0.2)
@@ -320,6 +404,28 @@ def test_the_command_from_start_to_signal(tmp_path: Path, poll: str, number: sig
     assert process.returncode == 0
     assert told.endswith("stopped watching\n")
     assert not (tmp_path / "output/.hullbook-lock").exists()
+
+
+@pytest.mark.parametrize(
+    "path, kind, is_folder, tells",
+    [
+        ("spring/assays.csv", "modified", False, True),
+        ("spring/ASSAYS.CSV", "created", False, True),
+        ("site.toml", "closed", False, True),
+        ("spring/.~lock.assays.csv#", "created", False, False),
+        ("spring/3F2A1B00", "moved", False, False),
+        ("spring", "created", True, True),
+        ("spring", "deleted", True, True),
+        ("spring", "modified", True, False),
+        (".", "deleted", True, True),
+        ("spring/history", "created", True, False),
+        ("spring/history/0001-x/inputs/assays.csv", "created", False, False),
+        ("spring/history/head.json", "moved", False, False),
+    ],
+)
+def test_which_events_may_tell_of_a_change(path: str, kind: str, is_folder: bool, tells: bool) -> None:
+    """Input files and folders of campaigns count; temporary files, locks and the program's own history don't."""
+    assert is_telling("/campaigns", f"/campaigns/{path}", kind, is_folder=is_folder) is tells
 
 
 MOUNTS = """\

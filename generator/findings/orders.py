@@ -64,9 +64,9 @@ def ask_order(desk: Desk, order: Order) -> Asking[Reported]:
     model = model_of(desk.campaign, order, desk.table, desk.measures)
     if not isinstance(model, OrderModel):
         return Reported(_without_verdict(order, model[0]), model)
-    vanishing = yield from _ask_vanishing(model)
-    if vanishing is not None:
-        return Reported(_without_verdict(order, vanishing), (vanishing,))
+    problem = yield from _ask_vanishing(model)
+    if problem is not None:
+        return Reported(_without_verdict(order, problem), (problem,))
     try:
         return Reported((yield from _ask_answers(desk, model)))
     except UndecidedError as undecided:
@@ -313,4 +313,4 @@ def _ask_vanishing(model: OrderModel) -> Asking[Problem | None]:
     return None
 
 
-_vanishing = answered(_ask_vanishing)
+vanishing = answered(_ask_vanishing)

@@ -77,12 +77,12 @@ def ask_cheapest(model: OrderModel, table: Table, measures: Mapping[str, Measure
     return recipe_of(model, table, measures, named_shares(model, best.staged.x), bound), best
 
 
-def ask_cheapest_shares(model: OrderModel, rows: Rows | None = None) -> Asking[Best]:
+def ask_cheapest_shares(model: OrderModel, rows: Rows | None = None, *, to_publish: bool = True) -> Asking[Best]:
     """Least share of lots of unknown cost, then least cost; ValueError if there are none.
 
-    ``rows`` instead of the model's own: the same limits moved.
+    ``rows`` instead of the model's own: the same limits moved.  ``to_publish``: as in ``ask``.
     """
-    return (yield from ask_best_shares(model, _costs_in_turn(model), rows=rows))
+    return (yield from ask_best_shares(model, _costs_in_turn(model), rows=rows, to_publish=to_publish))
 
 
 cheapest_shares = answered(ask_cheapest_shares)
@@ -160,11 +160,11 @@ def ask_roomiest(
 def ask_shares_at(model: OrderModel, scales: Scales, t: Fraction) -> Asking[Best]:
     """The cheapest shares at room t; ValueError if there are none."""
     if is_linear(model):
-        return (yield from ask_cheapest_shares(model, tight_rows(model, scales, t)))
+        return (yield from ask_cheapest_shares(model, tight_rows(model, scales, t), to_publish=False))
     moved = tightened(model, scales, t)
     if moved is None:
         raise ValueError(f"room {t} is outside the domain of a blend rule")
-    return (yield from ask_cheapest_shares(moved))
+    return (yield from ask_cheapest_shares(moved, to_publish=False))
 
 
 def ask_fewest(model: OrderModel, table: Table, measures: Mapping[str, Measure], cheapest: Recipe) -> Asking[Recipe]:
@@ -212,6 +212,7 @@ def ask_best_shares(
     objectives: Sequence[Vector],
     *,
     rows: Rows | None = None,
+    to_publish: bool = True,
     extra: Sequence[tuple[Vector, Bound, Bound]] = (),
     width: int | None = None,
 ) -> Asking[Best]:
@@ -230,7 +231,7 @@ def ask_best_shares(
     def ask(branch: OrderModel) -> Asking[Offer[Staged] | None]:
         upper = (*capped_upper(branch, branch.amount), *((None,) * more))
         program = share_program(branch, rows, (ZERO,) * (n + more), upper=upper, extra=extra)
-        staged = yield from ask_lexicographic(program, every)
+        staged = yield from ask_lexicographic(program, every, to_publish=to_publish)
         if staged is None:
             return None
         key = (*(_dot(objective, staged.x) for objective in (*objectives, positions)), *reversed(staged.x[:n]))
@@ -252,7 +253,9 @@ def _dot(one: Vector, other: Vector) -> Fraction:
     return sum((a * b for a, b in zip(one, other, strict=False) if a and b), ZERO)
 
 
-def ask_lexicographic(program: Program, objectives: Sequence[Vector]) -> Asking[Staged | None]:
+def ask_lexicographic(
+    program: Program, objectives: Sequence[Vector], *, to_publish: bool = True
+) -> Asking[Staged | None]:
     """The best point by each objective in turn (least first); None if there is no point at all.
 
     After each stage the program is cut down to its optimal face: columns with a reduced cost are held
@@ -261,7 +264,7 @@ def ask_lexicographic(program: Program, objectives: Sequence[Vector]) -> Asking[
     stages: list[Optimum] = []
     for objective in objectives:
         program = replace(program, cost=(*objective, *((ZERO,) * (len(program.cost) - len(objective)))))
-        proven = yield from ask_proven(program)
+        proven = yield from ask_proven(program, to_publish=to_publish)
         if not isinstance(proven.answer, Optimum):
             return None
         stages.append(proven.answer)

@@ -97,11 +97,11 @@ def _reply(question: Question, certified: Certified, k: int, is_unsure: bool, me
         found = point_on_basis(question.program, basis_of(certified.solved, k), integral(question.program, memory))
         if found is not None:
             return Point(found[0], found[1], is_only=True)
-    if question.wants == "prices" and is_only:
+    if question.wants == "prices" and certified.solved.status[k] == OPTIMAL:
         form = integral(question.program, memory)
-        optimum = vertex_on_basis(question.program, basis_of(certified.solved, k), form)
+        optimum = vertex_on_basis(question.program, basis_of(certified.solved, k), form, is_best=not is_only)
         if optimum is not None:
-            return Proven(optimum, is_only=True)
+            return Proven(optimum, is_only)
     return _reply_of(question, _published(question.program, certified, k, memory), is_only)
 
 

@@ -41,10 +41,13 @@ def solve_on_basis(program: Program, basis: Basis, form: Integral | None = None)
     return optimum if optimum is not None and proves_optimum(program, optimum) else None
 
 
-def vertex_on_basis(program: Program, basis: Basis, form: Integral | None = None) -> Optimum | None:
+def vertex_on_basis(
+    program: Program, basis: Basis, form: Integral | None = None, *, is_best: bool = False
+) -> Optimum | None:
     """The feasible point and the multipliers that the basis stands for; None where it is singular or not feasible.
 
-    Whether it is optimal is not asked: that is for whoever has proven it already.
+    With ``is_best`` None as well where a multiplier or reduced cost has the wrong sign, so that the point is
+    an optimum; else that is for whoever has proven it already.
     """
     form = form or integral(program)
     layout = _layout(form, basis)
@@ -58,9 +61,30 @@ def vertex_on_basis(program: Program, basis: Basis, form: Integral | None = None
     weights = [0] * len(form.rows)
     for k, weight in zip(tight, solved[0], strict=True):
         weights[k] = weight
+    if is_best and not _has_right_signs(form, basis, weights, solved[1]):
+        return None
     x = form.shares(*point)
     value = sum((c * v for c, v in zip(program.cost, x, strict=True) if c and v), Fraction(0))
     return Optimum(x, value, form.multipliers(weights, solved[1]), basis)
+
+
+def _has_right_signs(form: Integral, basis: Basis, weights: list[int], denominator: int) -> bool:
+    """Whether no column or slack off the basis would gain by leaving the bound that it rests at."""
+    n = len(form.cost)
+    basic = set(basis.basic)
+    held = [(weight, row) for weight, row in zip(weights, form.rows, strict=True) if weight]
+    for column in range(n + len(form.rows)):
+        floor, ceiling = form.floor[column], form.ceiling[column]
+        if column in basic or (floor is not None and floor == ceiling):
+            continue
+        if column < n:
+            price = form.cost[column] * denominator - sum(weight * row[column] for weight, row in held)
+        else:
+            price = weights[column - n]
+        at_ceiling = ceiling is not None and (column in basis.at_upper or floor is None)
+        if price > 0 if at_ceiling else price < 0 or (price > 0 and floor is None):
+            return False
+    return True
 
 
 def point_on_basis(program: Program, basis: Basis, form: Integral | None = None) -> tuple[Vector, Fraction] | None:

@@ -152,9 +152,9 @@ class Entry:
             return datetime(1970, 1, 1, tzinfo=UTC)
 
 
-def head_key(folder: Path) -> str:
-    """Digest which revisions there are, by their names alone: cheap, for fingerprints."""
-    return digest_of(_names(folder))
+def head_key(folder: Path | str) -> str:
+    """Which revisions there are, by their names alone: cheap, for fingerprints."""
+    return " ".join(_names(folder))
 
 
 def read_history(folder: Path, *, newest: int | None = None) -> History:
@@ -241,7 +241,7 @@ def entries(folder: Path) -> list[Entry]:
     )
 
 
-def _names(folder: Path) -> list[str]:
+def _names(folder: Path | str) -> list[str]:
     """The names of revision folders, sorted."""
     try:
         return sorted(name for name in os.listdir(folder) if _FOLDER.fullmatch(name))  # noqa: PTH208 - names alone

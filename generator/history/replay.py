@@ -14,7 +14,7 @@ from typing import Literal
 from generator.findings.house import UndecidedError
 from generator.findings.measures import measures_of
 from generator.findings.model import OrderModel, model_of
-from generator.findings.orders import _vanishing
+from generator.findings.orders import vanishing
 from generator.findings.programs import ZERO
 from generator.findings.room import room_of, scales_of
 from generator.findings.values import table_of
@@ -86,13 +86,13 @@ class Replay:
     def _judged(self, subset: frozenset[int]) -> str:
         model = self._model(subset)
         try:
-            return NO_ANSWER if model is None or _vanishing(model) is not None else self._quick.verdict(model)
+            return NO_ANSWER if model is None or vanishing(model) is not None else self._quick.verdict(model)
         except UndecidedError:
             return NO_ANSWER
 
     def _cost(self, subset: frozenset[int]) -> Fraction | None:
         model = self._model(subset)
-        if model is None or all(cost is None for cost in model.cost) or _vanishing(model) is not None:
+        if model is None or all(cost is None for cost in model.cost) or vanishing(model) is not None:
             return None
         try:
             shares = self._quick.cost(model)
@@ -109,7 +109,7 @@ class Replay:
 
     def _room(self, subset: frozenset[int]) -> Fraction | None:
         model = self._model(subset)
-        if model is None or _vanishing(model) is not None:
+        if model is None or vanishing(model) is not None:
             return None
         scales = scales_of(model, {component.name: component for component in self._campaign(subset).components})
         try:

@@ -20,7 +20,10 @@ ASSETS = "assets/"
 
 
 class FileList(Mapping[str, str]):
-    """Digests by address; as text ``DIGEST ADDRESS`` line by line, assets first, then by address."""
+    """Digests by address; as text ``DIGEST ADDRESS`` one after the other, assets first, then by address.
+
+    No address holds a space, and JSON reads a text without line ends much faster than one with.
+    """
 
     __slots__ = ("_files", "text")
 
@@ -30,24 +33,21 @@ class FileList(Mapping[str, str]):
             self.text = files
         else:
             in_order = sorted(files, key=lambda path: (not path.startswith(ASSETS), path))
-            self.text = "\n".join(f"{files[path]} {path}" for path in in_order)
+            self.text = " ".join(f"{files[path]} {path}" for path in in_order)
 
     def assets(self) -> Iterator[tuple[str, str]]:
         """Every asset with its digest, without reading the rest of the list."""
-        start = 0
-        while start < len(self.text):
-            end = self.text.find("\n", start)
-            end = len(self.text) if end < 0 else end
-            digest, _, path = self.text[start:end].partition(" ")
+        rest = self.text
+        while rest:
+            digest, path, rest = [*rest.split(" ", 2), ""][:3]
             if not path.startswith(ASSETS):
                 return
             yield path, digest
-            start = end + 1
 
     def _all(self) -> dict[str, str]:
         if self._files is None:
-            pairs = (line.partition(" ") for line in self.text.split("\n") if line)
-            self._files = {path: digest for digest, _, path in pairs}
+            words = self.text.split()
+            self._files = dict(zip(words[1::2], words[::2], strict=True))
         return self._files
 
     def __getitem__(self, path: str) -> str:

@@ -31,7 +31,7 @@ class Presence:
         self._thorough = thorough
         self._before = _read(output)
         self._now: dict[str, dict[str, Look]] = {}
-        self._folders: dict[str, tuple[int, int] | None] = {}
+        self._folders: dict[str, tuple[int, int]] = {}
 
     def holds(self, campaign: str, files: Mapping[str, str]) -> bool:
         """Whether every file of a campaign, digests by address, is there with its content."""
@@ -75,19 +75,20 @@ class Presence:
 
     def _stand(self, looks: Mapping[str, Look]) -> bool:
         """Whether the folders are as they were."""
-        for name, look in looks.items():
-            if not name or self._folder(name) != look[:2]:
+        for name, (changed, number, _) in looks.items():
+            if not name or self._folder(name) != (changed, number):
                 return False
         return True
 
     def _folder(self, name: str) -> tuple[int, int] | None:
-        if name not in self._folders:
+        found = self._folders.get(name)
+        if found is None:
             try:
                 status = os.stat(f"{self._output}/{name}")  # noqa: PTH116 - ten thousand folders in a blink
-                self._folders[name] = (status.st_mtime_ns, status.st_ino) if name else (0, 0)
             except OSError:
-                self._folders[name] = None
-        return self._folders[name]
+                return None
+            found = self._folders[name] = (status.st_mtime_ns, status.st_ino) if name else (0, 0)
+        return found
 
     def _look(self, name: str, own: Iterable[str]) -> Look | None:
         """Look at a folder and the files in it that are the campaign's; None where one is gone."""

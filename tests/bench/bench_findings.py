@@ -111,7 +111,7 @@ def main() -> None:
     parser.add_argument("--components", type=int, default=8)
     given = parser.parse_args()
     ratios = []
-    with mock.patch.object(answers, "plan_of", lambda *_: (None, [])):
+    with mock.patch.object(answers, "plan_of", return_value=(None, [])):
         ours(drawn(0, 5, 2, 2))  # imports, caches
         for seed in range(given.campaigns):
             campaign = drawn(seed, given.lots, given.components, given.orders)

@@ -79,15 +79,15 @@ class _Script:
         if recipe is not None:
             capped = np.vstack([rows, np.eye(lots)])
             told.append(["greatest", str(self.solve(cost, capped, np.append(limits, stock / order.amount), lots))])
-            for lot in range(lots):
-                told.append(["stuck", str(self.solve(-np.eye(lots)[lot], rows, limits, lots))])
+            told += [["stuck", str(self.solve(-np.eye(lots)[lot], rows, limits, lots))] for lot in range(lots)]
             for lot in np.flatnonzero(recipe > 1e-9):
                 without = np.delete(rows, lot, axis=1)
                 told.append(["without", str(self.solve(np.delete(cost, lot), without, limits, lots - 1))])
                 dearer = cost + 1000 * np.eye(lots)[lot]
                 told.append(["price", str(self.solve(dearer, rows, limits, lots))])
-            for room in np.linspace(0, 1, 8):
-                told.append(["curve", str(self.solve(cost, rows, limits - room * scale, lots))])
+            told += [
+                ["curve", str(self.solve(cost, rows, limits - room * scale, lots))] for room in np.linspace(0, 1, 8)
+            ]
             self._fewest(rows, limits, lots)
         for extra in (np.full(len(limits), -1.0) * scale, -np.eye(len(limits))):
             wide = np.hstack([rows, -extra.reshape(-1, 1) if extra.ndim == 1 else extra])
