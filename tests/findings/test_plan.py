@@ -190,8 +190,7 @@ def test_the_plan_is_the_same_each_time() -> None:
 def test_effort_that_ends_is_told(monkeypatch: pytest.MonkeyPatch) -> None:
     """A search that is stopped gives the best plan it has, with its gap."""
     monkeypatch.setattr(plan_search, "DIRECT_USES", 0)
-    monkeypatch.setattr(plan_search.plan_blocks, "QUICK_ROUNDS", 1)
-    monkeypatch.setattr(plan_search.plan_blocks, "FULL_ROUNDS", 0)
+    monkeypatch.setattr(plan_dives, "TURNS", 0)
     found = planned(*random_campaign(random.Random(11), orders=4, lots=6))
     assert found.plan.status == "within gap"
     assert found.plan.gap is None or found.plan.gap > 0
