@@ -11,7 +11,7 @@ import numpy as np
 import pytest
 from scipy.optimize import Bounds, LinearConstraint, linprog, milp
 
-from generator.findings import plan_search, results
+from generator.findings import plan_dives, plan_search, results
 from generator.findings.answers import find
 from generator.findings.plan_exact import settle
 from generator.findings.plan_model import plan_model
