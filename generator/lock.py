@@ -122,7 +122,8 @@ class OwnerLock:
             except FileExistsError:
                 return False
         finally:
-            beside.unlink()
+            # Who holds the lock may have swept it away as unfinished.
+            beside.unlink(missing_ok=True)
         self._beaten = time.monotonic()
         return True
 

@@ -68,10 +68,11 @@ class Hints:
         self._themes: frozenset[Path] = frozenset()
 
     def follow(self, themes: frozenset[Path]) -> None:
-        """Observe these folders of themes as well, from the next start on."""
+        """Observe these folders of themes as well, from now on."""
         if themes != self._themes:
             self._themes = themes
             self.stop()
+            self._wake.set()  # the loop starts it anew
 
     def ensure(self) -> bool:
         """Start observing if that is not going on; False where the system refuses."""

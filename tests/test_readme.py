@@ -7,8 +7,11 @@ import tomllib
 from pathlib import Path
 
 from generator.cli import main
+from generator.intake import campaign, cells, faults, tables
 from generator.intake.columns import LOT_COLUMNS, ORDER_COLUMNS
 from generator.intake.schema import SCHEMA
+from generator.job import TIME_LIMIT
+from generator.watch import FULL_LOOK_EVERY, RESCAN_EVERY
 from tests.findings.making import make_campaign
 
 ROOT = Path(__file__).parent.parent
@@ -42,6 +45,20 @@ def test_settings_in_the_readme_are_read_without_a_word() -> None:
     campaign = make_campaign(assays, "order,K2O\n1,>= 1\n", text.replace('decimal = ","', ""))
     assert [problem.sentence() for problem in campaign.problems] == []
     assert set(tomllib.loads(text)) == set(SCHEMA)
+
+
+def test_limits_in_the_readme_are_those_of_the_code() -> None:
+    """Every limit that is kept stands in the README with its number."""
+    told = section("Limits")
+    assert f"files of {tables.MOST_BYTES // 1024**2} MB, {tables.MOST_ROWS:,} rows" in told
+    assert f"{tables.MOST_COLUMNS:,} columns, {tables.MOST_CHARACTERS:,} characters" in told
+    assert f"{campaign.MOST_LOTS:,} lots, {campaign.MOST_ORDERS:,} orders" in told
+    assert f"{campaign.MOST_COMPONENTS} components; numbers of {cells.MOST_DIGITS} digits" in told
+    assert f"at most {faults.MOST_PROBLEMS:,} problems" in told
+    running = section("Leaving it running")
+    assert f"`--time-limit` ({TIME_LIMIT:.0f} s)" in running
+    assert f"Every {RESCAN_EVERY:.0f} s" in running
+    assert f"every {FULL_LOOK_EVERY / 60:.0f} minutes" in running
 
 
 def test_the_two_commands_stand_first_in_their_blocks() -> None:

@@ -154,12 +154,31 @@ def built_in_themes() -> Path:
     return folder
 
 
+class _Sandbox(ImmutableSandboxedEnvironment):
+    """The sandbox, but an attribute of a type is judged once: pages ask for hundreds of thousands.
+
+    What is judged safe depends on nothing but the type and the attribute's name.
+    """
+
+    def __init__(self, **options: Any) -> None:
+        super().__init__(**options)
+        self._judged: dict[tuple[type, str], bool] = {}
+
+    def is_safe_attribute(self, obj: Any, attr: str, value: Any) -> bool:
+        """Whether a template may see this attribute."""
+        key = (type(obj), attr)
+        judged = self._judged.get(key)
+        if judged is None:
+            judged = self._judged[key] = super().is_safe_attribute(obj, attr, value)
+        return judged
+
+
 def _environment(folder: Path, plain: Path) -> ImmutableSandboxedEnvironment:
     own = FunctionLoader(_loader(plain))
     loaders: list[BaseLoader] = [own, PrefixLoader({"!": own})]
     if folder != plain:
         loaders.insert(0, FunctionLoader(_loader(folder)))
-    return ImmutableSandboxedEnvironment(
+    return _Sandbox(
         loader=ChoiceLoader(loaders),
         autoescape=True,
         undefined=StrictUndefined,

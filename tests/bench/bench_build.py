@@ -209,7 +209,7 @@ def cold(root: Path, count: int) -> Line:
         write_campaign(root / "campaigns" / f"c{number:04d}", make_campaign(number))
     ours = seconds(lambda: build_once(job_on(root)))
     pages = sorted((root / "output").rglob("*.html"))
-    pictures = {path.relative_to(root / "output").as_posix(): path.read_text().count("<svg") for path in pages}
+    pictures = {path.relative_to(root / "output").as_posix(): path.read_text().count("<figure") for path in pages}
     plain = plain_build(root / "campaigns", root / "plain", pictures)
     return Line(
         work=f"cold build of {count} campaigns",

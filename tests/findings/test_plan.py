@@ -351,6 +351,26 @@ def test_parts_by_parts_against_brute_force(seed: int, monkeypatch: pytest.Monke
         assert best <= found.plan.value + found.plan.gap * max(abs(found.plan.value), 1e-9) + 1e-6
 
 
+@pytest.mark.parametrize("seed", range(30, 34))
+def test_classes_part_by_part(seed: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Orders priced one by one keep the classes: the first class gets no less than it can alone, within its gap."""
+    assays, targets, house = random_campaign(random.Random(seed), orders=4, lots=5)
+    head, *lines = targets.splitlines()
+    rows = [f"{line},{1 + k % 2}" for k, line in enumerate(lines)]
+    classed = "\n".join([f"{head},priority", *rows, ""])
+    first = "\n".join([head, *lines[::2], ""])
+    best = planned(assays, first, house).plan.value
+    monkeypatch.setattr(plan_search, "DIRECT_USES", 0)
+    found = planned(assays, classed, house)
+    check_exactly(found)
+    stage = found.plan.stages[0]
+    assert (stage.aim, stage.priority) == ("value", 1)
+    assert best is not None
+    assert stage.gap is not None
+    assert stage.best <= best + 1e-6
+    assert stage.best >= best - stage.gap * max(stage.best, 1e-9) - 1e-6
+
+
 def independent_value(found: Planned) -> float:
     """The plan's value from a mixed-integer program written anew, on amounts as they are."""
     campaign = found.campaign
