@@ -214,14 +214,12 @@ def _sought_by_blocks(model: PlanModel, effort: Effort) -> Sought:
         if stage.priority is None:
             outcomes.append(Outcome(stage, None))
             continue
-        pool.know(best.amounts)
-        later = _later_blocks(model, stage)
-        found = plan_stage(pool, stage, held, later, best.choice, effort.nodes, effort.seconds)
-        effort.spend(found.nodes)
-        settled = settle(model, found.choice)
+        priced = plan_stage(pool, stage, held, _later_blocks(model, stage), effort.nodes, effort.seconds)
+        effort.spend(priced.nodes)
+        settled = settle(model, priced.choice)
         if settled is not None and _is_no_worse(settled, best, number):
             best = settled
         value = float(best.values[number])
-        outcomes.append(Outcome(stage, relative_gap(value, found.bound), found.nodes))
+        outcomes.append(Outcome(stage, relative_gap(value, priced.bound), priced.nodes))
         held.append((stage, value))
     return Sought(best, tuple(outcomes), effort.is_over)
