@@ -141,11 +141,20 @@ def split(branch: Branch, rules: Rules, shares: Sequence[Fraction]) -> list[Bran
             percent = f"{float(least * 100):g} %"
             return [
                 branch.with_out(frozenset([i]), f"without {names[i]}"),
-                branch.with_in(i, least, f"{names[i]} at least {percent}"),
+                _closed_to_others(branch.with_in(i, least, f"{names[i]} at least {percent}"), rules),
             ]
     if rules.max_lots is not None and len(used) > rules.max_lots:
         return _halves_by_count(branch, rules, used, shares)
     return []
+
+
+def _closed_to_others(branch: Branch, rules: Rules) -> Branch:
+    """The branch with all other lots out as soon as it has as many in as a recipe may have."""
+    if rules.max_lots is None or len(branch.inside) < rules.max_lots:
+        return branch
+    names = branch.model.names
+    others = frozenset(range(len(names))) - branch.inside
+    return branch.with_out(others, f"with {', '.join(names[i] for i in sorted(branch.inside))} alone")
 
 
 def _halves_by_count(branch: Branch, rules: Rules, used: frozenset[int], shares: Sequence[Fraction]) -> list[Branch]:
@@ -155,8 +164,4 @@ def _halves_by_count(branch: Branch, rules: Rules, used: frozenset[int], shares:
     chosen = undecided[0]
     out = branch.with_out(frozenset([chosen]), f"without {names[chosen]}")
     inside = branch.with_in(chosen, rules.least[chosen], f"with {names[chosen]}")
-    if rules.max_lots is not None and len(inside.inside) >= rules.max_lots:
-        others = frozenset(range(len(names))) - inside.inside
-        listed = ", ".join(names[i] for i in sorted(inside.inside))
-        inside = replace(inside.with_out(others, f"with {listed} alone"), path=(*branch.path, f"with {listed} alone"))
-    return [out, inside]
+    return [out, _closed_to_others(inside, rules)]

@@ -19,6 +19,35 @@ LEAST = Fraction(25, 100)
 RULES = '[house]\nmax_lots = 2\nleast_if_used = 25\nkeep_apart = [["salt*", "acid*"]]\n'
 
 
+def test_many_lots_under_both_counts_are_answered_as_by_brute_force() -> None:
+    """Most lots and least share together, with far more lots than may be used: no crash, the least cost."""
+    least, most = Fraction(20, 100), 3
+    for number in range(12):
+        pick = random.Random(number).randint
+        drawn = draw_campaign(pick, orders=2, most_lots=3)
+        width = len(drawn.values[0])
+        drawn.values = [[Fraction(pick(0, 8), 2) for _ in range(width)] for _ in range(7)]
+        drawn.cost = [pick(1, 9) for _ in range(7)]
+        drawn.moisture, drawn.stock, drawn.ratio = None, None, False
+        drawn.lower, drawn.upper = [ZERO] * 7, [None] * 7
+        for order in drawn.orders:
+            order.windows.pop("ratio", None)
+        rules = f"[house]\nmax_lots = {most}\nleast_if_used = 20\n"
+        for order, finding in zip(
+            drawn.orders, answers(drawn.assays(), drawn.targets(), drawn.settings() + rules).orders, strict=True
+        ):
+            windows = {name: window for name, window in order.windows.items() if window != (None, None)}
+            points = allowed_points(drawn, windows, ["plain"] * 7, most, least)
+            if not points:
+                assert finding.verdict in ("unreachable", "barred")
+                continue
+            cheapest = min(sum(c * x for c, x in zip(drawn.cost, p, strict=True)) for p in points)
+            assert finding.recipes["cheapest"].cost == float(cheapest)
+            for recipe in finding.recipes.values():
+                assert len(recipe.exact) <= most
+                assert min(recipe.exact.values()) >= least
+
+
 def ruled(number: int) -> tuple[Drawn, Findings, list[str]]:
     """A drawn campaign of plain lots under three house rules, and each lot's material."""
     pick = random.Random(number).randint
@@ -34,11 +63,13 @@ def ruled(number: int) -> tuple[Drawn, Findings, list[str]]:
     return drawn, answers(text + "\n", drawn.targets(), drawn.settings() + rules), materials
 
 
-def allowed_points(drawn: Drawn, windows: dict, materials: list[str]) -> list[oracle.Point]:
+def allowed_points(
+    drawn: Drawn, windows: dict, materials: list[str], most: int = 2, floor: Fraction = LEAST
+) -> list[oracle.Point]:
     """Vertices of the blends of every set of lots that the rules allow."""
     n = len(drawn.values)
     points: list[oracle.Point] = []
-    for size in (1, 2):
+    for size in range(1, most + 1):
         for used in combinations(range(n), size):
             kinds = {materials[i] for i in used}
             if {"salt", "acid"} <= kinds:
@@ -49,7 +80,7 @@ def allowed_points(drawn: Drawn, windows: dict, materials: list[str]) -> list[or
                 for side, bound in zip(("low", "high"), window, strict=True)
                 if bound is not None
             ]
-            least = [([-Fraction(int(j == k)) for j in range(size)], -LEAST) for k in range(size)]
+            least = [([-Fraction(int(j == k)) for j in range(size)], -floor) for k in range(size)]
             for vertex in oracle.shares(size, [*rows, *least]):
                 whole = [ZERO] * n
                 for i, share in zip(used, vertex, strict=True):
