@@ -19,7 +19,7 @@ from generator.geometry.program import Optimum
 from generator.intake.records import Campaign
 
 #: Nodes and seconds for one order's greatest amount under house rules.
-NODES, SECONDS = 500, 10.0
+NODES, SECONDS = 200, 20.0
 
 
 def left_of(model: PlanModel, amounts: Amounts) -> dict[int, Fraction]:

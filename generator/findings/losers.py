@@ -6,7 +6,7 @@ they use.  The questions are answered in floating point, to about seven digits.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from math import inf
@@ -22,19 +22,25 @@ from generator.geometry.mixed import Mixed, SparseRow, linear, search
 REACHED = 1e-6
 #: Orders named that could give way, those that give up least first.
 MOST_INSTEAD = 3
-#: Nodes and seconds for one question about one order.
-NODES, SECONDS = 500, 5.0
+#: Nodes for one question about one order, and seconds as the last guard.
+NODES, SECONDS = 50, 20.0
+#: Where only house rules are in the way: lots and orders that are looked at.
+MOST_SUSPECTS = 6
 #: Gains below this part of the plan's value are noise of the floating point.
 NOISE = 1e-9
 
 
 @dataclass(frozen=True, slots=True)
 class _Kept:
-    """The program of the plan kept as it is, and one order free: its columns come first."""
+    """The program of the plan kept as it is, and one order free: its columns come first.
+
+    ``totals`` are the rows that hold the other orders at what they got.
+    """
 
     part: Part
     columns: Mapping[int, Mapping[int, int]]
     rows: tuple[SparseRow, ...]
+    totals: Mapping[int, int]
     stock: Mapping[int, SparseRow]
     upper: tuple[float, ...]
 
@@ -61,20 +67,63 @@ def _loser(model: PlanModel, settled: Settled, k: int, wanted: Fraction, verdict
     kept = _kept(model, settled, k)
     if _reaches(kept, wanted, frozenset()):
         return Loser(order=name, alone=verdict, reason="price")
-    limited = [lot for lot in model.blocks[k].model.lots if lot in kept.stock]
-    single = [lot for lot in limited if _reaches(kept, wanted, frozenset([lot]))]
+    limited = list(kept.stock)
+    suspects, others = _in_the_way(model, settled, kept, wanted)
+    single = [lot for lot in suspects if _reaches(kept, wanted, frozenset([lot]))]
     together: list[int] = []
     if not single and _reaches(kept, wanted, frozenset(limited)):
         together = _fewest(kept, wanted, limited)
-    instead = _instead(model, settled, k, wanted)
+    instead = _instead(model, settled, k, wanted, others)
     return Loser(
         order=name,
         alone=verdict,
         reason="alone" if verdict == "short" and not single and not together else "stock",
         short=tuple(model.campaign.lots[lot].name for lot in single or together),
-        is_together=bool(together),
+        is_together=len(together) > 1,
         instead={model.blocks[j].order.name: cut for j, cut in instead},
     )
+
+
+def _in_the_way(model: PlanModel, settled: Settled, kept: _Kept, wanted: Fraction) -> tuple[list[int], list[int]]:
+    """The lots and the other orders of which one alone may keep the open order from ``wanted``.
+
+    With whole numbers waived, a row without a multiplier keeps nothing: its multipliers prove the greatest
+    amount without it too.  Where that amount would do, only the rules are in the way: then lots that run out
+    count, and the orders that take most of them, ``MOST_SUSPECTS`` of each.
+    """
+    lots = list(kept.stock)
+    rows = [*kept.rows, *kept.stock.values()]
+    cost = [-1.0 if column < kept.part.n else 0.0 for column in range(len(kept.upper))]
+    found = linear(Mixed(cost=cost, upper=kept.upper, rows=rows))
+    if found.multipliers is None or -found.value * kept.part.scale >= float(wanted) * (1 - REACHED):
+        return _scarce(model, settled, kept)
+    y = found.multipliers
+    behind = len(kept.rows)
+    return (
+        [lot for number, lot in enumerate(lots) if abs(y[behind + number]) > NOISE],
+        [j for j, row in kept.totals.items() if abs(y[row]) > NOISE],
+    )
+
+
+def _scarce(model: PlanModel, settled: Settled, kept: _Kept) -> tuple[list[int], list[int]]:
+    used = _used(model, settled)
+    lots = [lot for lot in kept.stock if used.get(lot) == model.stock[lot]]
+    takes = {
+        j: sum((x for i, x in settled.amounts[j].items() if model.blocks[j].model.lots[i] in lots), ZERO)
+        for j in kept.totals
+    }
+    lots.sort(key=lambda lot: (-used[lot], lot))
+    orders = sorted((j for j in takes if takes[j]), key=lambda j: (-takes[j], j))
+    return sorted(lots[:MOST_SUSPECTS]), orders[:MOST_SUSPECTS]
+
+
+def _used(model: PlanModel, settled: Settled) -> dict[int, Fraction]:
+    """What the plan takes of each lot, by position."""
+    used: dict[int, Fraction] = {}
+    for block, own in zip(model.blocks, settled.amounts, strict=True):
+        for i, x in own.items():
+            used[block.model.lots[i]] = used.get(block.model.lots[i], ZERO) + x
+    return used
 
 
 def _kept(model: PlanModel, settled: Settled, free: int, loose: int | None = None) -> _Kept:
@@ -83,6 +132,7 @@ def _kept(model: PlanModel, settled: Settled, free: int, loose: int | None = Non
     rows = list(part.rows)
     upper = list(part.upper)
     columns: dict[int, dict[int, int]] = {free: {i: i for i in range(part.n)}}
+    totals: dict[int, int] = {}
     for j, own in enumerate(settled.amounts):
         if j == free or not own:
             continue
@@ -92,8 +142,9 @@ def _kept(model: PlanModel, settled: Settled, free: int, loose: int | None = Non
         rows += rows_over(model.blocks[j], place)
         accepted = float(sum(own.values(), ZERO)) / float(model.blocks[j].most)
         total = dict.fromkeys(place.values(), 1.0)
+        totals[j] = len(rows)
         rows.append(SparseRow(total, 0.0 if j == loose else accepted * (1 - NOISE), accepted))
-    return _Kept(part, columns, tuple(rows), _stock(model, columns), tuple(upper))
+    return _Kept(part, columns, tuple(rows), totals, _stock(model, columns), tuple(upper))
 
 
 def _stock(model: PlanModel, columns: Mapping[int, Mapping[int, int]]) -> dict[int, SparseRow]:
@@ -133,13 +184,13 @@ def _fewest(kept: _Kept, wanted: Fraction, lots: Iterable[int]) -> list[int]:
     return needed
 
 
-def _instead(model: PlanModel, settled: Settled, k: int, wanted: Fraction) -> list[tuple[int, float]]:
+def _instead(
+    model: PlanModel, settled: Settled, k: int, wanted: Fraction, others: Sequence[int]
+) -> list[tuple[int, float]]:
     """Accepted orders that could give way to order k, with what each would give up, the least first."""
     found = []
-    for j, own in enumerate(settled.amounts):
-        if j == k or not own:
-            continue
-        accepted = sum(own.values(), ZERO)
+    for j in sorted(others):
+        accepted = sum(settled.amounts[j].values(), ZERO)
         kept = _kept(model, settled, k, loose=j)
         total = kept.columns[j].values()
         cost = [0.0] * len(kept.upper)
@@ -166,10 +217,7 @@ def one_more_of(model: PlanModel, settled: Settled) -> dict[int, float]:
 
     One-sided: a gain from more, the accepted orders and the lots of each kept.
     """
-    used: dict[int, Fraction] = {}
-    for block, own in zip(model.blocks, settled.amounts, strict=True):
-        for i, x in own.items():
-            used[block.model.lots[i]] = used.get(block.model.lots[i], ZERO) + x
+    used = _used(model, settled)
     runs_out = [lot for lot, amount in sorted(used.items()) if model.stock.get(lot) == amount]
     before = _classes(model, settled, None) if runs_out else 0.0
     gains = {}

@@ -15,6 +15,7 @@ from math import inf
 
 import numpy as np
 
+from generator.findings.plan_exact import Amounts
 from generator.findings.plan_model import Block, PlanModel, Stage
 from generator.findings.plan_parts import Part, joined, part_of, program_of, side_by_side, stage_costs, stock_rows
 from generator.geometry.choices import Choosing, choose_many
@@ -62,6 +63,15 @@ class Pool:
         self.parts = tuple(part_of(block) for block in self.model.blocks)
         self.problems = tuple(map(_problem, self.model.blocks, self.parts))
         self.answers = [[answer_of(np.zeros(part.n))] for part in self.parts]
+
+    def know(self, amounts: Amounts) -> None:
+        """Put what a plan gives each order among its answers."""
+        for k, own in enumerate(amounts):
+            if own:
+                vector = np.zeros(self.parts[k].n)
+                for i, x in own.items():
+                    vector[i] = float(x) / self.parts[k].scale
+                self.answers[k].append(Answer(vector, frozenset(own)))
 
 
 @dataclass(frozen=True, slots=True)

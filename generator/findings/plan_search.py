@@ -17,7 +17,7 @@ from generator.findings.plan_dives import plan_stage
 from generator.findings.plan_exact import Choice, Settled, settle
 from generator.findings.plan_model import PlanModel, Stage
 from generator.findings.plan_parts import Whole, joined, part_of, program_of, side_by_side, stage_costs
-from generator.geometry.mixed import Floats, SparseRow, search
+from generator.geometry.mixed import Floats, SparseRow, linear, search
 
 #: How far, relative to its best, an earlier stage may give way while later ones are searched.
 WITHIN = 1e-6
@@ -100,13 +100,17 @@ def _sought_directly(model: PlanModel, effort: Effort) -> Sought:
     held: list[tuple[Stage, float]] = []
     cuts: list[Choice] = []
     whole = side_by_side([part_of(block) for block in model.blocks])
+    # A linear program needs no exact amounts between its stages, only after the last one.
+    is_linear = not any(part.whole for part in whole.parts)
+    last = len([stage for stage in model.stages if stage.aim != "lots"]) - 1
     for number, stage in enumerate(model.stages):
         if stage.aim == "lots":
             if pairs > FEWEST_PAIRS:
                 outcomes.append(Outcome(stage, None))
                 break
             whole = side_by_side([part_of(block, counts_lots=True) for block in model.blocks])
-        found, outcome, level = _stage(model, whole, stage, held, cuts, effort, is_first=number == 0)
+        settles = number >= last or not is_linear
+        found, outcome, level = _stage(model, whole, stage, held, cuts, effort, is_first=number == 0, settles=settles)
         outcomes.append(outcome)
         if found is not None and _is_no_worse(found, best, number):
             best = found
@@ -130,8 +134,9 @@ def _stage(
     effort: Effort,
     *,
     is_first: bool,
+    settles: bool,
 ) -> tuple[Settled | None, Outcome, float | None]:
-    """Search one stage; the plan settled, how it ended, and the level at which to hold it after."""
+    """Search one stage; the plan, if it ``settles``, how it ended, and the level at which to hold it after."""
     costs, size = stage_costs(stage, whole.parts)
     rows = [_held_row(whole, earlier, level) for earlier, level in held]
     later = _later_blocks(model, stage)
@@ -139,11 +144,13 @@ def _stage(
     for _ in range(MOST_CUTS if is_first else 2):
         more = [*rows, *(_cut_row(whole, cut) for cut in cuts)]
         program = program_of(model, whole, joined(whole, costs), more, closed=later)
-        found = search(program, nodes=effort.nodes, seconds=effort.seconds)
+        found = search(program, nodes=effort.nodes, seconds=effort.seconds) if program.whole else linear(program)
         effort.spend(found.nodes)
         spent += found.nodes
         if found.x is None:
             return None, Outcome(stage, None, spent), None
+        if not settles:
+            return None, Outcome(stage, 0.0, spent), found.value * size
         choice = choice_of(whole, found.x)
         settled = settle(model, choice)
         if settled is not None:
@@ -214,12 +221,14 @@ def _sought_by_blocks(model: PlanModel, effort: Effort) -> Sought:
         if stage.priority is None:
             outcomes.append(Outcome(stage, None))
             continue
-        priced = plan_stage(pool, stage, held, _later_blocks(model, stage), effort.nodes, effort.seconds)
-        effort.spend(priced.nodes)
-        settled = settle(model, priced.choice)
+        pool.know(best.amounts)
+        later = _later_blocks(model, stage)
+        found = plan_stage(pool, stage, held, later, best.choice, effort.nodes, effort.seconds)
+        effort.spend(found.nodes)
+        settled = settle(model, found.choice)
         if settled is not None and _is_no_worse(settled, best, number):
             best = settled
         value = float(best.values[number])
-        outcomes.append(Outcome(stage, relative_gap(value, priced.bound), priced.nodes))
+        outcomes.append(Outcome(stage, relative_gap(value, found.bound), found.nodes))
         held.append((stage, value))
     return Sought(best, tuple(outcomes), effort.is_over)

@@ -61,7 +61,7 @@ def search(program: Mixed, *, nodes: int, seconds: float, gap: float = 0.0) -> F
 
     n = len(program.cost)
     if n == 0:
-        return Found(status="proven", x=np.zeros(0), value=0.0, bound=0.0)
+        return _without_columns(program)
     matrix, low, high = _scaled(program)
     cost = np.array(program.cost, dtype=np.float64)
     scale = float(_power_of_two(np.abs(cost).max(initial=0.0, keepdims=True))[0])
@@ -93,6 +93,8 @@ def linear(program: Mixed) -> Found:
     from scipy.optimize import linprog
     from scipy.sparse import vstack
 
+    if not program.cost:
+        return _without_columns(program)
     matrix, low, high, scales = *_scaled(program), _row_scales(program)
     equal = low == high
     has_low, has_high = ~equal & np.isfinite(low), ~equal & np.isfinite(high)
@@ -118,6 +120,12 @@ def linear(program: Mixed) -> Found:
         y[equal] = result.eqlin.marginals
     value = float(result.fun)
     return Found(status="proven", x=np.asarray(result.x), value=value, bound=value, multipliers=y * scales)
+
+
+def _without_columns(program: Mixed) -> Found:
+    if any(row.low > 0 or row.high < 0 for row in program.rows):
+        return Found(status="infeasible")
+    return Found(status="proven", x=np.zeros(0), value=0.0, bound=0.0, multipliers=np.zeros(len(program.rows)))
 
 
 def _row_scales(program: Mixed) -> Floats:

@@ -248,6 +248,8 @@ def _order_page(
     address = lookup.order_addresses[finding.order]
     verdict = finding.verdict or "none"
 
+    own = order_sections(lookup, planes, wholes, finding, address)
+
     def neighbour(step: int) -> Link | None:
         if not 0 <= position + step < len(findings):
             return None
@@ -270,8 +272,9 @@ def _order_page(
         facts=order_facts(lookup, finding),
         banner=_banner(lookup.book),
         sections=(
-            *order_sections(lookup, planes, wholes, finding, address),
+            *own[:1],
             *order_in_plan(lookup, finding, address, card_addresses(lookup)),
+            *own[1:],
             *order_history(lookup, finding.order, address),
         ),
         cautions=_cautions(lookup),

@@ -44,6 +44,8 @@ def loser_sentences(loser: Loser, plan: Plan, unit: str, currency: str) -> tuple
     if loser.reason == "left out":
         return (f"It has no part in the plan: {loser.remark}.",)
     if loser.reason == "price":
+        if plan.status != "proven":
+            return ("The stock would do: it costs more than it brings, or the search ended too early to see.",)
         return ("The stock would do, but serving it would cost more than it brings.",)
     return (*_short(loser), *_more(loser, plan, unit, currency), *_instead(loser, unit, plan))
 

@@ -13,6 +13,7 @@ from __future__ import annotations
 from tests.bench.one_thread import THREADS  # isort: skip  (numpy reads the number of threads when it is imported)
 
 import argparse
+import contextlib
 import hashlib
 import json
 import os
@@ -157,8 +158,10 @@ def _command(root: Path, command: str, *more: str) -> None:
 
 def one_edit(many: Path, alone: Path, repeats: int) -> Line:
     """From the file closed to the last page in place while watching, less the settle time."""
-    ours = _edit_seconds(many, repeats)
-    theirs = _edit_seconds(alone, repeats)
+    with _watching(many), _watching(alone):
+        # In turns, so that a busy machine is busy for both; the first of each warms the watcher up.
+        pairs = [(_one_edit(many, turn), _one_edit(alone, turn)) for turn in range(repeats + 1)][1:]
+    ours, theirs = (median(times) - SETTLE for times in zip(*pairs, strict=True))
     count = sum(1 for _ in (many / "campaigns").iterdir())
     return Line(
         work=f"one cell edited among {count} campaigns, to the last page in place",
@@ -170,18 +173,17 @@ def one_edit(many: Path, alone: Path, repeats: int) -> Line:
     )
 
 
-def _edit_seconds(root: Path, repeats: int) -> float:
+@contextlib.contextmanager
+def _watching(root: Path) -> Iterator[None]:
     arguments = ["watch", "campaigns", "output", "--quiet", "--settle", str(SETTLE)]
     with subprocess.Popen(
         [sys.executable, "-m", "generator", *arguments], cwd=root, env={**os.environ, "PYTHONPATH": str(CHECKOUT)}
     ) as watcher:
         try:
             time.sleep(5.0)
-            times = [_one_edit(root, turn) for turn in range(repeats + 1)][1:]
+            yield
         finally:
             watcher.terminate()
-            watcher.wait()
-    return median(times) - SETTLE
 
 
 def _one_edit(root: Path, turn: int) -> float:
@@ -227,7 +229,8 @@ def cold(root: Path, count: int) -> Line:
 
 def peak_memory(many: Path, few: Path) -> Line:
     """The peak of a build in which one campaign changed and all are looked at, main process and others together."""
-    ours, theirs = (_peak_mb(root) for root in (many, few))
+    seed = time.time_ns() % 100_000  # others than are built already, and the same for both
+    ours, theirs = (_peak_mb(root, seed) for root in (many, few))
     counts = [sum(1 for _ in (root / "campaigns").iterdir()) for root in (many, few)]
     return Line(
         work=f"peak memory, {counts[0]} campaigns",
@@ -240,9 +243,9 @@ def peak_memory(many: Path, few: Path) -> Line:
     )
 
 
-def _peak_mb(root: Path) -> float:
+def _peak_mb(root: Path, seed: int) -> float:
     for number in range(10):
-        write_campaign(root / "campaigns" / f"c{number:04d}", make_campaign(number + time.time_ns() % 1000))
+        write_campaign(root / "campaigns" / f"c{number:04d}", make_campaign(seed + number))
     code = (
         "import resource, sys; from generator import cli; cli.main(sys.argv[1:]);"
         "print(sum(resource.getrusage(who).ru_maxrss for who in (resource.RUSAGE_SELF, resource.RUSAGE_CHILDREN)))"
