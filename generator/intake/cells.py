@@ -185,6 +185,7 @@ def decide_decimal(evidence: Evidence, delimiter: str) -> Decimal | None:
 
 _ISO = re.compile(r"([0-9]{4})-([0-9]{1,2})-([0-9]{1,2})(?:[T ][0-9:.]+Z?)?")
 _PARTS = re.compile(r"([0-9]{1,4})[./-]\s?([0-9]{1,2})[./-]\s?([0-9]{2,4})")
+_FULL_YEAR = re.compile(r"[0-9]{4}")
 _MONTHS = "jan|feb|mar|mär|apr|may|mai|jun|jul|aug|sep|oct|okt|nov|dec|dez"
 _SPREADSHEET_DATE = re.compile(
     rf"[0-9]{{1,4}}[-. /]*(?:{_MONTHS})[a-zä]*\.?(?:[-. /]*[0-9]{{1,4}})?|(?:{_MONTHS})[a-zä]*\.?[-. /]*[0-9]{{1,4}}"
@@ -204,9 +205,11 @@ def parse_date(text: str, order: DateOrder | None = None) -> datetime.date | Non
     parts = _PARTS.fullmatch(text)
     if parts is None or order is None:
         return None
-    given = dict(zip(order, (int(part) for part in parts.groups()), strict=True))
-    year = given["y"] if given["y"] >= 100 else 2000 + given["y"]
-    return _date(year, given["m"], given["d"])
+    given = dict(zip(order, parts.groups(), strict=True))
+    if any(len(given[part]) > 2 for part in "dm") or len(given["y"]) == 3:
+        return None
+    year = int(given["y"]) if len(given["y"]) == 4 else 2000 + int(given["y"])
+    return _date(year, int(given["m"]), int(given["d"]))
 
 
 def _date(year: int, month: int, day: int) -> datetime.date | None:
@@ -216,9 +219,28 @@ def _date(year: int, month: int, day: int) -> datetime.date | None:
         return None
 
 
+def decide_dates(texts: Iterable[str]) -> DateOrder | None:
+    """The one order of day, month and year in which all of a file's dates in figures are dates; else None.
+
+    Years of two digits decide nothing.  With points the month never stands first (common practice).
+    """
+    shared: set[DateOrder] | None = None
+    for text in texts:
+        orders = _orders_of(text) if is_numeric_date(text) and _FULL_YEAR.search(text) else set()
+        if orders:  # what is a date in no order is a mistake, and says nothing of the others
+            shared = orders if shared is None else shared & orders
+    return shared.pop() if shared is not None and len(shared) == 1 else None
+
+
+def _orders_of(text: str) -> set[DateOrder]:
+    choices: tuple[DateOrder, ...] = ("dmy", "ymd") if "." in text else ("dmy", "mdy", "ymd")
+    return {order for order in choices if parse_date(text, order) is not None}
+
+
 def is_numeric_date(text: str) -> bool:
     """Whether the text is a date in figures whose order of day and month must be told."""
-    return _PARTS.fullmatch(text.strip()[:LONGEST_NUMBER]) is not None
+    text = text.strip()[:LONGEST_NUMBER]
+    return _PARTS.fullmatch(text) is not None and _ISO.fullmatch(text) is None
 
 
 def looks_like_date(text: str) -> bool:

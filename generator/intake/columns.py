@@ -68,6 +68,8 @@ TEXT_COLUMNS = frozenset(
         "without lots",
     }
 )
+#: Known columns that hold dates.
+DATE_COLUMNS = frozenset({"sampled", "available", "due"})
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

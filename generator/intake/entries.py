@@ -148,9 +148,9 @@ class Reader:
         cell = self.single(name)
         if cell is None:
             return None
-        date = parse_date(cell.text, self.options.dates)
+        date = parse_date(cell.text, cell.dates)
         if date is None:
-            if self.options.dates is None and is_numeric_date(cell.text):
+            if cell.dates is None and is_numeric_date(cell.text):
                 remedy = 'write it as 2024-12-31, or set [csv] dates = "DMY" (or "MDY", "YMD") in campaign.toml'
                 self.faults.drops(cell.place, "could be day or month first", remedy, found=cell.text)
             else:

@@ -7,8 +7,8 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, replace
 from fractions import Fraction
 
-from generator.intake.cells import Decimal, decide_decimal, parse_number, weigh_marks
-from generator.intake.columns import TEXT_COLUMNS, Column, Kind, interpret, read_columns
+from generator.intake.cells import DateOrder, Decimal, decide_dates, decide_decimal, parse_number, weigh_marks
+from generator.intake.columns import DATE_COLUMNS, TEXT_COLUMNS, Column, Kind, interpret, read_columns
 from generator.intake.faults import Faults, fold
 from generator.intake.records import Place
 from generator.intake.settings import Options
@@ -21,12 +21,13 @@ MOST_TOTALS = 20
 
 @dataclass(frozen=True, slots=True)
 class Cell:
-    """One cell that is not blank: its text, where it stands, and how its file writes numbers."""
+    """One cell that is not blank: its text, where it stands, and how its file writes numbers and dates."""
 
     text: str
     place: Place
     decimal: Decimal
     unit: str | None = None
+    dates: DateOrder | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -39,6 +40,7 @@ class Sheet:
     columns: tuple[Column, ...]
     rows: tuple[Row, ...]
     decimal: Decimal
+    dates: DateOrder | None = None
     broken: frozenset[str] = frozenset()
     by_key: Mapping[tuple[str, str], Column]
 
@@ -58,7 +60,7 @@ class Sheet:
         """The cell, or None where it is blank or there is no such column."""
         if column is None or not row.cell(column.index):
             return None
-        return Cell(row.cell(column.index), self.place(row, column), self.decimal, column.unit)
+        return Cell(row.cell(column.index), self.place(row, column), self.decimal, column.unit, self.dates)
 
     def cells(self, column: Column) -> Iterator[Cell]:
         """The column's cells that are not blank."""
@@ -94,6 +96,7 @@ def read_sheet(file: str, data: bytes, kind: Kind, options: Options, faults: Fau
         return None
     if decimal != ".":
         faults.tell(file, None, "numbers are read with a decimal comma")
+    dates = options.dates or _date_order(file, columns, rows, faults)
     kept, broken = _entries(table, columns, rows, decimal, kind, faults)
     return Sheet(
         file=file,
@@ -102,6 +105,7 @@ def read_sheet(file: str, data: bytes, kind: Kind, options: Options, faults: Fau
         columns=columns,
         rows=kept,
         decimal=decimal,
+        dates=dates,
         broken=broken,
         by_key={column.key: column for column in columns},
     )
@@ -164,6 +168,16 @@ def _decide(table: Table, columns: tuple[Column, ...], rows: tuple[Row, ...], fa
             found=found,
         )
     return decimal
+
+
+def _date_order(file: str, columns: tuple[Column, ...], rows: tuple[Row, ...], faults: Faults) -> DateOrder | None:
+    """The order of day, month and year that the file's dates agree on; None where they leave it open."""
+    dated = [column.index for column in columns if column.is_known and column.name in DATE_COLUMNS]
+    order = decide_dates(row.cell(index) for row in rows for index in dated)
+    if order is not None:
+        parts = {"d": "day", "m": "month", "y": "year"}
+        faults.tell(file, None, f"dates in figures are read as {', '.join(parts[part] for part in order)}")
+    return order
 
 
 def _where(table: Table, columns: tuple[Column, ...], rows: tuple[Row, ...], text: str) -> Place:

@@ -331,8 +331,8 @@ def test_a_slip_in_a_limited_column_is_a_problem() -> None:
         ),
         ("lot,N,K2O,weigh step\nA,1,1,0\n", "found '0': is out of range; write a number above 0"),
         (
-            "lot,N,K2O,sampled\nA,1,1,01.02.2024\n",
-            "found '01.02.2024': could be day or month first; write it as 2024-12-31, or ",
+            "lot,N,K2O,sampled\nA,1,1,01/02/2024\n",
+            "found '01/02/2024': could be day or month first; write it as 2024-12-31, or ",
         ),
         ("lot,N,K2O,sampled\nA,1,1,soon\n", "found 'soon': is not a date; write it as year-month-day: 2024-12-31"),
         ("lot,N,K2O\nA,,\n", "found 'A': the row holds nothing but a name; fill in its cells, or delete the row"),
@@ -534,6 +534,14 @@ def test_dates_can_be_told() -> None:
         lot = read("lot,N,K2O,available\nA,1,5,01.02.2024\n", campaign=f'[csv]\ndates = "{order}"').lots[0]
         assert lot.available is not None
         assert lot.available.month == month
+
+
+def test_dates_tell_their_order() -> None:
+    """One date that can be read in one order only decides for the whole file, and is told."""
+    campaign = read("lot,N,K2O,available,sampled\nA,1,5,1/2/2024,\nB,1,5,,28/1/2024\n")
+    assert campaign.lots[0].available == datetime.date(2024, 2, 1)
+    assert sentences(campaign) == []
+    assert "dates in figures are read as day, month, year" in [entry.what for entry in campaign.read]
 
 
 def test_names_are_compared_in_compatibility_form() -> None:

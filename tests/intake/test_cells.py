@@ -7,7 +7,7 @@ from fractions import Fraction
 
 import pytest
 
-from generator.intake.cells import parse_date, parse_number, parse_reading, suggest_number
+from generator.intake.cells import decide_dates, parse_date, parse_number, parse_reading, suggest_number
 from generator.intake.units import conversion, split_header
 
 F = Fraction
@@ -101,12 +101,39 @@ def test_suggestions() -> None:
         ("1.2.24", "dmy", (2024, 2, 1)),
         ("01.02.2024", None, None),
         ("2024-02-30", None, None),
+        ("2024.02.01", "dmy", None),
+        ("01.02.2024", "ymd", None),
         ("soon", "dmy", None),
     ],
 )
 def test_dates(text: str, order: str | None, date: tuple[int, int, int] | None) -> None:
     """ISO dates are exact; others need to be told their order."""
     assert parse_date(text, order) == (None if date is None else datetime.date(*date))  # type: ignore[arg-type]
+
+
+@pytest.mark.parametrize(
+    "texts, order",
+    [
+        (["15.12.2026"], "dmy"),
+        (["01.02.2026"], "dmy"),  # common practice: with points the day stands first
+        (["2026.02.01"], "ymd"),
+        (["1/2/2026"], None),
+        (["1/2/2026", "13/2/2026"], "dmy"),
+        (["1/2/2026", "2/13/2026"], "mdy"),
+        (["13/2/2026", "2/13/2026"], None),
+        (["2026/2/13"], "ymd"),
+        (["1.2.26"], None),
+        (["1.2.26", "31.2.27"], None),
+        (["1.2.26", "30.3.26", "n/a", "2026-03-09"], None),
+        (["1/2/26", "2/13/2026"], "mdy"),
+        (["1.2.26", "32.1.26", "1.2.2026"], "dmy"),
+        (["2026-03-09"], None),
+        ([], None),
+    ],
+)
+def test_order_of_dates(texts: list[str], order: str | None) -> None:
+    """A file's dates in figures are read in the one order in which all of them are dates."""
+    assert decide_dates(texts) == order
 
 
 @pytest.mark.parametrize(
