@@ -10,7 +10,7 @@ from generator.findings.house_rules import breach
 from generator.findings.measures import Measure
 from generator.findings.model import OrderModel, model_of
 from generator.findings.plan_exact import Amounts
-from generator.findings.plan_model import CAN_JOIN, Block, PlanModel, Stage, best_of
+from generator.findings.plan_model import CAN_JOIN, Block, PlanModel, Stage, best_of_each
 from generator.findings.plan_search import seek
 from generator.findings.programs import ONE, ZERO
 from generator.findings.records import Verdict
@@ -53,21 +53,26 @@ def makeable_from(
         for i, lot in enumerate(campaign.lots)
     )
     rest = replace(campaign, lots=lots)
+    models: dict[str, OrderModel] = {}
     for order in campaign.orders:
         if alone.get(order.name) not in CAN_JOIN:
             continue
-        model = model_of(rest, order, table, measures)
         # Without a model not even one lot is left that the order may use.
-        most = _most(rest, model) if isinstance(model, OrderModel) else ZERO
-        if most is not None:
-            found[order.name] = float(most)
+        found[order.name] = 0.0
+        model = model_of(rest, order, table, measures)
+        if isinstance(model, OrderModel):
+            models[order.name] = model
+    answers = best_of_each([(model, (-ONE,) * len(model.lots)) for model in models.values()])
+    for (name, model), answer in zip(models.items(), answers, strict=True):
+        if isinstance(answer, Optimum):
+            found[name] = float(_most(rest, model, answer))
+        else:
+            del found[name]
     return found
 
 
-def _most(campaign: Campaign, model: OrderModel) -> Fraction | None:
-    answer = best_of(model, (-ONE,) * len(model.lots))
-    if not isinstance(answer, Optimum):
-        return None
+def _most(campaign: Campaign, model: OrderModel, answer: Optimum) -> Fraction:
+    """The most within the house rules, ``answer`` being the most without them."""
     most = -answer.value
     if not most:
         return ZERO

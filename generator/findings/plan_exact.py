@@ -1,16 +1,29 @@
-"""The plan's amounts in exact numbers, once it is chosen which orders are accepted and which lots they use."""
+"""The plan's amounts in exact numbers: of a choice of orders and lots, or where no choice has to be made."""
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
+import numpy as np
+
+from generator.findings.house_rules import breach
 from generator.findings.plan_model import Block, PlanModel, Stage
 from generator.findings.programs import ONE, ZERO
 from generator.findings.recipes import lexicographic
-from generator.geometry.program import Bound, Program, Vector
+from generator.geometry.elimination import common_denominator
+from generator.geometry.mixed import Floats
+from generator.geometry.program import Bound, Program, Sparse
+from generator.geometry.sparse import best_in_turn
 
 Amounts = tuple[dict[int, Fraction], ...]
+#: A block and one of its lots, by its own position.
+Pair = tuple[int, int]
+_Row = tuple[Mapping[Pair, Fraction], Bound, Bound]
+
+#: A part this small of an order's most is taken for none, or for rounding.
+NOTHING = 1e-9
 
 
 @dataclass(frozen=True, slots=True)
@@ -31,40 +44,124 @@ class Settled:
     values: tuple[Fraction, ...]
 
 
+@dataclass(frozen=True, slots=True)
+class Relaxed:
+    """The best amounts with every choice waived, if they keep all rules all the same: then no plan is better.
+
+    ``is_only``: there is no other plan as good in all stages but the last, the fewest lots.  Such plans use no
+    pairs of a block and a lot (by its own position) but ``free``, and keep every row of ``held`` at its bound.
+    """
+
+    settled: Settled
+    is_only: bool
+    free: frozenset[Pair]
+    held: tuple[tuple[Mapping[Pair, int], int], ...]
+
+
 def settle(model: PlanModel, choice: Choice) -> Settled | None:
     """The best amounts for a choice, stage by stage; None if there are none.
 
     Everything holds exactly: limits, shares, rules, amounts and stock.
     """
     columns = [(k, i) for k, lots in enumerate(choice.lots) if choice.accepted[k] for i in sorted(lots)]
-    place = {pair: j for j, pair in enumerate(columns)}
-    rows: list[tuple[Vector, Bound, Bound]] = []
+    rows: list[_Row] = []
     for k, block in enumerate(model.blocks):
         if choice.accepted[k]:
-            rows += _block_rows(block, k, choice.lots[k], place)
-    rows += _stock_rows(model, place)
-    program = Program(
-        rows=tuple(terms for terms, _, _ in rows),
-        row_low=tuple(low for _, low, _ in rows),
-        row_high=tuple(high for _, _, high in rows),
-        lower=(ZERO,) * len(columns),
-        upper=(None,) * len(columns),
-        cost=(ZERO,) * len(columns),
-    )
-    stages = [stage for stage in model.stages if stage.aim != "lots"]
-    objectives = [tuple(stage.costs[k][i] for k, i in columns) for stage in stages]
+            rows += _block_rows(block, k, choice.lots[k]) + _least_rows(block, k, choice.lots[k])
+            rows += _total_row(block, k, choice.lots[k], block.low)
+    rows += _stock_rows(model, columns)
     if not columns:
-        if any(low is not None and low > 0 for low in program.row_low):
+        if any(low is not None and low > 0 for _, low, _ in rows):
             return None
         return Settled(choice, tuple({} for _ in model.blocks), (ZERO,) * len(model.stages))
-    staged = lexicographic(program, objectives)
-    if staged is None:
+    objectives = _objectives(model, columns)
+    best = best_in_turn(_sparse(columns, rows), objectives)
+    if best is not None:
+        return _settled(model, choice, columns, best.x)
+    # A point that floating point finds no regular basis for, or none at all.
+    width = range(len(columns))
+    staged = lexicographic(_dense(columns, rows), [tuple(own[j] for j in width) for own in objectives])
+    return None if staged is None else _settled(model, choice, columns, dict(enumerate(staged.x)))
+
+
+def relax(model: PlanModel, accepted: Sequence[bool] | None = None) -> Relaxed | None:
+    """The plan with every choice waived; None where it breaks a rule, or takes part of an order that is whole.
+
+    With ``accepted`` (by block) only the choice of lots is waived.
+    """
+    columns = [
+        (k, i)
+        for k, block in enumerate(model.blocks)
+        if accepted is None or accepted[k]
+        for i in range(len(block.model.lots))
+    ]
+    if not columns:
         return None
+    rows: list[_Row] = []
+    for k, block in enumerate(model.blocks):
+        if accepted is None or accepted[k]:
+            lots = frozenset(range(len(block.model.lots)))
+            rows += _block_rows(block, k, lots) + _total_row(block, k, lots, block.low if accepted else ZERO)
+    rows += _stock_rows(model, columns)
+
+    def accepts(x: Floats) -> bool:
+        return _keeps_rules(model, columns, x)
+
+    program = _sparse(columns, rows)
+    best = best_in_turn(program, _objectives(model, columns), accepts)
+    if best is None:
+        return None
+    used: list[set[int]] = [set() for _ in model.blocks]
+    for j in best.x:
+        used[columns[j][0]].add(columns[j][1])
+    served = tuple(bool(own) or block.low <= 0 for own, block in zip(used, model.blocks, strict=True))
+    settled = _settled(model, Choice(served, tuple(map(frozenset, used))), columns, best.x)
+    if not all(map(_is_allowed, model.blocks, settled.amounts)):
+        return None
+    free = frozenset(columns[j] for j in best.free)
+    held = [({columns[j]: a for j, a in program.rows[k].items()}, bound) for k, bound in best.held.items()]
+    return Relaxed(settled, best.is_only, free, tuple(held))
+
+
+def _keeps_rules(model: PlanModel, columns: Sequence[Pair], x: Floats) -> bool:
+    """Whether amounts in floats look like a plan: each order within its amount, and within the house rules."""
+    taken: list[dict[int, float]] = [{} for _ in model.blocks]
+    for j in np.flatnonzero(x).tolist():
+        k, i = columns[j]
+        taken[k][i] = float(x[j])
+    for block, own in zip(model.blocks, taken, strict=True):
+        total, rules = sum(own.values()), block.model.rules
+        used = [i for i, amount in own.items() if amount > NOTHING * float(block.most)]
+        if not used:
+            continue
+        if total < float(block.low) * (1 - NOTHING) or (rules.max_lots is not None and len(used) > rules.max_lots):
+            return False
+        if any(own[i] < float(rules.least[i] or 0) * total * (1 - NOTHING) for i in used):
+            return False
+        if any(pair.first_lots.intersection(used) and pair.second_lots.intersection(used) for pair in rules.apart):
+            return False
+    return True
+
+
+def _is_allowed(block: Block, own: Mapping[int, Fraction]) -> bool:
+    """Whether the order gets nothing, or as much as it must and within the house rules."""
+    total = sum(own.values(), ZERO)
+    if not total:
+        return True
+    shares = {block.model.names[i]: x / total for i, x in own.items()}
+    return total >= block.low and breach(block.model.rules, block.model.names, shares) is None
+
+
+def _settled(model: PlanModel, choice: Choice, columns: Sequence[Pair], x: Mapping[int, Fraction]) -> Settled:
     amounts: Amounts = tuple({} for _ in model.blocks)
-    for (k, i), x in zip(columns, staged.x, strict=True):
-        if x:
-            amounts[k][i] = x
+    for j, (k, i) in enumerate(columns):
+        if x.get(j):
+            amounts[k][i] = x[j]
     return Settled(choice, amounts, tuple(stage_value(stage, amounts) for stage in model.stages))
+
+
+def _objectives(model: PlanModel, columns: Sequence[Pair]) -> list[dict[int, Fraction]]:
+    return [{j: stage.costs[k][i] for j, (k, i) in enumerate(columns)} for stage in model.stages if stage.aim != "lots"]
 
 
 def stage_value(stage: Stage, amounts: Amounts) -> Fraction:
@@ -74,40 +171,49 @@ def stage_value(stage: Stage, amounts: Amounts) -> Fraction:
     return sum((stage.costs[k][i] * x for k, own in enumerate(amounts) for i, x in own.items()), ZERO)
 
 
-def _block_rows(
-    block: Block, k: int, lots: frozenset[int], place: dict[tuple[int, int], int]
-) -> list[tuple[Vector, Bound, Bound]]:
-    """Limits, least shares of used lots, and the amount, over the chosen columns."""
+def _block_rows(block: Block, k: int, lots: frozenset[int]) -> list[_Row]:
+    """Limits and share bounds over the chosen lots."""
     chosen = sorted(lots)
-    sparse: list[tuple[dict[int, Fraction], Bound, Bound]] = [
-        ({i: terms[i] for i in chosen}, low, high) for terms, low, high in block.rows
-    ]
-    for i in chosen:
-        least = block.model.rules.least[i]
-        if least:
-            sparse.append(({j: least - (ONE if j == i else ZERO) for j in chosen}, None, ZERO))
-    low = block.low if block.low > 0 else None
-    if low is not None or block.high is not None:
-        sparse.append((dict.fromkeys(chosen, ONE), low, block.high))
-    rows = []
-    for terms, least_row, most in sparse:
-        if any(terms.values()) or (least_row is not None and least_row > 0):
-            vector = [ZERO] * len(place)
-            for i, value in terms.items():
-                vector[place[k, i]] = value
-            rows.append((tuple(vector), least_row, most))
-    return rows
+    return [({(k, i): terms[i] for i in chosen if terms[i]}, low, high) for terms, low, high in block.rows]
 
 
-def _stock_rows(model: PlanModel, place: dict[tuple[int, int], int]) -> list[tuple[Vector, Bound, Bound]]:
-    users: dict[int, list[int]] = {}
-    for (k, i), column in place.items():
-        users.setdefault(model.blocks[k].model.lots[i], []).append(column)
-    rows: list[tuple[Vector, Bound, Bound]] = []
-    for lot, columns in users.items():
-        if lot in model.stock:
-            vector = [ZERO] * len(place)
-            for column in columns:
-                vector[column] = ONE
-            rows.append((tuple(vector), None, model.stock[lot]))
-    return rows
+def _least_rows(block: Block, k: int, lots: frozenset[int]) -> list[_Row]:
+    """The least shares of the chosen lots, all of them used."""
+    leasts = [(i, least) for i in sorted(lots) if (least := block.model.rules.least[i])]
+    return [({(k, j): least - (ONE if j == i else ZERO) for j in lots}, None, ZERO) for i, least in leasts]
+
+
+def _total_row(block: Block, k: int, lots: frozenset[int], low: Fraction) -> list[_Row]:
+    if low <= 0 and block.high is None:
+        return []
+    return [({(k, i): ONE for i in sorted(lots)}, low if low > 0 else None, block.high)]
+
+
+def _stock_rows(model: PlanModel, columns: Sequence[Pair]) -> list[_Row]:
+    users: dict[int, dict[Pair, Fraction]] = {}
+    for k, i in columns:
+        users.setdefault(model.blocks[k].model.lots[i], {})[k, i] = ONE
+    return [(own, None, model.stock[lot]) for lot, own in users.items() if lot in model.stock]
+
+
+def _sparse(columns: Sequence[Pair], rows: Sequence[_Row]) -> Sparse:
+    """The rows in whole numbers; a row without entries stays, for it may be one that can't hold."""
+    place = {pair: j for j, pair in enumerate(columns)}
+    whole, lows, highs = [], [], []
+    for terms, low, high in rows:
+        scale = common_denominator((*terms.values(), low, high))
+        whole.append({place[pair]: a.numerator * (scale // a.denominator) for pair, a in terms.items() if a})
+        lows.append(None if low is None else low.numerator * (scale // low.denominator))
+        highs.append(None if high is None else high.numerator * (scale // high.denominator))
+    return Sparse(width=len(columns), rows=tuple(whole), low=tuple(lows), high=tuple(highs))
+
+
+def _dense(columns: Sequence[Pair], rows: Sequence[_Row]) -> Program:
+    return Program(
+        rows=tuple(tuple(terms.get(pair, ZERO) for pair in columns) for terms, _, _ in rows),
+        row_low=tuple(low for _, low, _ in rows),
+        row_high=tuple(high for _, _, high in rows),
+        lower=(ZERO,) * len(columns),
+        upper=(None,) * len(columns),
+        cost=(ZERO,) * len(columns),
+    )

@@ -6,7 +6,7 @@ blocks (one an order), which share nothing but the stock of the lots.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 from typing import Literal
@@ -16,8 +16,8 @@ from generator.findings.model import OrderModel, model_of
 from generator.findings.programs import ONE, ZERO, amount_rows, share_bound_rows
 from generator.findings.records import Verdict
 from generator.findings.values import Table
-from generator.geometry.decide import decide
 from generator.geometry.program import Bound, Optimum, Program, Unbounded, Vector
+from generator.geometry.settle import answer_many
 from generator.intake.records import Campaign, Order
 from generator.problems import Problem
 
@@ -155,20 +155,30 @@ def _most(order: Order, model: OrderModel, *, is_valued: bool) -> Fraction | Non
 
 def best_of(model: OrderModel, cost: Vector) -> Optimum | Unbounded:
     """The least cost that the order's limits and the stock allow, its amount and the house rules aside."""
-    rows = [(entry.terms, entry.low, entry.high) for entry in amount_rows(model).entries]
-    rows += [(terms, None, ZERO) for _, terms in share_bound_rows(model)]
-    answer = decide(
-        Program(
-            rows=tuple(terms for terms, _, _ in rows),
-            row_low=tuple(low for _, low, _ in rows),
-            row_high=tuple(high for _, _, high in rows),
-            lower=(ZERO,) * len(model.lots),
-            upper=model.stock,
-            cost=cost,
+    return best_of_each([(model, cost)])[0]
+
+
+def best_of_each(asked: Sequence[tuple[OrderModel, Vector]]) -> list[Optimum | Unbounded]:
+    """As :func:`best_of` for many orders, each with its own cost, solved side by side."""
+    programs = []
+    for model, cost in asked:
+        rows = [(entry.terms, entry.low, entry.high) for entry in amount_rows(model).entries]
+        rows += [(terms, None, ZERO) for _, terms in share_bound_rows(model)]
+        programs.append(
+            Program(
+                rows=tuple(terms for terms, _, _ in rows),
+                row_low=tuple(low for _, low, _ in rows),
+                row_high=tuple(high for _, _, high in rows),
+                lower=(ZERO,) * len(model.lots),
+                upper=model.stock,
+                cost=cost,
+            )
         )
-    )
-    assert isinstance(answer, (Optimum, Unbounded)), "nothing at all is always within homogeneous limits"
-    return answer
+    answers = []
+    for answer in answer_many(programs)[0]:
+        assert isinstance(answer, (Optimum, Unbounded)), "nothing at all is always within homogeneous limits"
+        answers.append(answer)
+    return answers
 
 
 def _stages(campaign: Campaign, blocks: list[Block], *, is_valued: bool) -> tuple[Stage, ...]:

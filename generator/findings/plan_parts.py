@@ -195,13 +195,22 @@ def program_of(
     cost: Mapping[int, float],
     more: Sequence[SparseRow] = (),
     closed: frozenset[int] = frozenset(),
+    free: frozenset[tuple[int, int]] | None = None,
 ) -> Mixed:
-    """One program of all parts, the stock rows and ``more``; the parts in ``closed`` get nothing."""
+    """One program of all parts, the stock rows and ``more``; the parts in ``closed`` get nothing.
+
+    ``free``: pairs of a part and a lot of its own, the only ones that are used (None: any).
+    """
     rows = []
     for start, part in zip(whole.starts, whole.parts, strict=True):
         rows += [SparseRow({start + j: a for j, a in row.terms.items()}, row.low, row.high) for row in part.rows]
     rows += [SparseRow(joined(whole, uses), -inf, 1.0) for uses in stock_rows(model, whole.parts).values()]
     upper = [0.0 if k in closed else top for k, part in enumerate(whole.parts) for top in part.upper]
+    if free is not None:
+        for k, (start, part) in enumerate(zip(whole.starts, whole.parts, strict=True)):
+            for i in range(part.n):
+                if (k, i) not in free:
+                    upper[start + i] = 0.0
     integral = {start + j for start, part in zip(whole.starts, whole.parts, strict=True) for j in part.whole}
     return Mixed(
         cost=[cost.get(j, 0.0) for j in range(whole.width)],

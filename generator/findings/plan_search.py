@@ -14,7 +14,7 @@ from math import inf
 
 from generator.findings.plan_blocks import Pool
 from generator.findings.plan_dives import plan_stage
-from generator.findings.plan_exact import Choice, Settled, settle
+from generator.findings.plan_exact import Choice, Pair, Relaxed, Settled, relax, settle
 from generator.findings.plan_model import PlanModel, Stage
 from generator.findings.plan_parts import Whole, joined, part_of, program_of, side_by_side, stage_costs
 from generator.geometry.mixed import Floats, SparseRow, linear, search
@@ -79,6 +79,11 @@ class Effort:
 def seek(model: PlanModel, nodes: int, seconds: float) -> Sought:
     """The best plan that the effort allows; nothing accepted is always a plan."""
     effort = Effort(nodes, time.monotonic() + seconds)
+    relaxed = relax(model)
+    if relaxed is not None:
+        # Where no choice had to be made, no choice makes a better plan.
+        before = [Outcome(stage, 0.0) for stage in model.stages if stage.aim != "lots"]
+        return _with_fewest(model, relaxed, before, effort)
     uses = sum(len(part_of(block).used) for block in model.blocks)
     if uses > DIRECT_USES:
         return _sought_by_blocks(model, effort)
@@ -96,21 +101,26 @@ def nothing(model: PlanModel) -> Settled:
 
 def _sought_directly(model: PlanModel, effort: Effort) -> Sought:
     pairs = sum(len(block.model.lots) for block in model.blocks)
-    best, outcomes = nothing(model), []
+    best = nothing(model)
+    outcomes: list[Outcome] = []
     held: list[tuple[Stage, float]] = []
     cuts: list[Choice] = []
     whole = side_by_side([part_of(block) for block in model.blocks])
-    # A linear program needs no exact amounts between its stages, only after the last one.
-    is_linear = not any(part.whole for part in whole.parts)
-    last = len([stage for stage in model.stages if stage.aim != "lots"]) - 1
+    has_rules = any(len(part.whole) > (part.accepted is not None) for part in whole.parts)
     for number, stage in enumerate(model.stages):
+        if stage.priority is None and not has_rules and all(outcome.gap == 0 for outcome in outcomes):
+            # The orders are chosen; if no others do as well, what is left is no choice any more.
+            relaxed = _only(model, whole, best, held, effort)
+            if relaxed is not None:
+                costs = [Outcome(later, 0.0) for later in model.stages[number:] if later.aim != "lots"]
+                return _with_fewest(model, relaxed, [*outcomes, *costs], effort)
         if stage.aim == "lots":
             if pairs > FEWEST_PAIRS:
                 outcomes.append(Outcome(stage, None))
                 break
             whole = side_by_side([part_of(block, counts_lots=True) for block in model.blocks])
-        settles = number >= last or not is_linear
-        found, outcome, level = _stage(model, whole, stage, held, cuts, effort, is_first=number == 0, settles=settles)
+        rows = [_held_row(whole, earlier, level) for earlier, level in held]
+        found, outcome, level = _stage(model, whole, stage, rows, cuts, effort, is_first=number == 0)
         outcomes.append(outcome)
         if found is not None and _is_no_worse(found, best, number):
             best = found
@@ -118,6 +128,49 @@ def _sought_directly(model: PlanModel, effort: Effort) -> Sought:
             level = float(best.values[number])
         held.append((stage, level))
     return Sought(best, tuple(outcomes), effort.is_over)
+
+
+def _only(
+    model: PlanModel, whole: Whole, best: Settled, held: Sequence[tuple[Stage, float]], effort: Effort
+) -> Relaxed | None:
+    """The exact plan for the orders accepted so far, where no other ones come near in all ``held`` stages.
+
+    None where others may, or where it is no better than what is known.
+    """
+    cut = _cut_row(whole, best.choice)
+    for number, (stage, level) in enumerate(held):
+        costs, size = stage_costs(stage, whole.parts)
+        rows = [cut, *(_held_row(whole, earlier, own) for earlier, own in held[:number])]
+        program = program_of(model, whole, joined(whole, costs), rows)
+        found = search(program, nodes=effort.nodes, seconds=effort.seconds)
+        effort.spend(found.nodes)
+        near = WITHIN * max(1.0, abs(level / size))
+        if found.status == "infeasible" or (found.status == "proven" and found.bound > level / size + near):
+            relaxed = relax(model, best.choice.accepted)
+            is_better = relaxed is not None and relaxed.settled.values <= best.values
+            return relaxed if is_better else None
+        if found.status != "proven":
+            return None
+    return None
+
+
+def _with_fewest(model: PlanModel, relaxed: Relaxed, before: Sequence[Outcome], effort: Effort) -> Sought:
+    """The last stage, the fewest lots, among plans that are as good in all the others."""
+    best = relaxed.settled
+    stage = model.stages[-1]
+    if relaxed.is_only:
+        return Sought(best, (*before, Outcome(stage, 0.0)), effort.is_over)
+    if len(relaxed.free) > FEWEST_PAIRS:
+        return Sought(best, (*before, Outcome(stage, None)), effort.is_over)
+    whole = side_by_side([part_of(block, counts_lots=True) for block in model.blocks])
+    rows = []
+    for terms, bound in relaxed.held:
+        own = {whole.starts[k] + i: a * whole.parts[k].scale for (k, i), a in terms.items() if (k, i) in relaxed.free}
+        rows.append(SparseRow(own, float(bound), float(bound)))
+    found, outcome, _ = _stage(model, whole, stage, rows, [], effort, is_first=False, free=relaxed.free)
+    if found is not None and _is_no_worse(found, best, len(before)):
+        best = found
+    return Sought(best, (*before, outcome), effort.is_over)
 
 
 def _is_no_worse(new: Settled, old: Settled, stages: int) -> bool:
@@ -129,28 +182,28 @@ def _stage(
     model: PlanModel,
     whole: Whole,
     stage: Stage,
-    held: Sequence[tuple[Stage, float]],
+    rows: Sequence[SparseRow],
     cuts: list[Choice],
     effort: Effort,
     *,
     is_first: bool,
-    settles: bool,
+    free: frozenset[Pair] | None = None,
 ) -> tuple[Settled | None, Outcome, float | None]:
-    """Search one stage; the plan, if it ``settles``, how it ended, and the level at which to hold it after."""
+    """Search one stage: the plan found, how it ended, and the level at which to hold it after.
+
+    ``rows`` hold the earlier stages.  ``free``: the only lots that blocks may use.
+    """
     costs, size = stage_costs(stage, whole.parts)
-    rows = [_held_row(whole, earlier, level) for earlier, level in held]
     later = _later_blocks(model, stage)
     spent = 0
     for _ in range(MOST_CUTS if is_first else 2):
         more = [*rows, *(_cut_row(whole, cut) for cut in cuts)]
-        program = program_of(model, whole, joined(whole, costs), more, closed=later)
+        program = program_of(model, whole, joined(whole, costs), more, closed=later, free=free)
         found = search(program, nodes=effort.nodes, seconds=effort.seconds) if program.whole else linear(program)
         effort.spend(found.nodes)
         spent += found.nodes
         if found.x is None:
             return None, Outcome(stage, None, spent), None
-        if not settles:
-            return None, Outcome(stage, 0.0, spent), found.value * size
         choice = choice_of(whole, found.x)
         settled = settle(model, choice)
         if settled is not None:
@@ -214,7 +267,8 @@ def choice_of(whole: Whole, x: Floats) -> Choice:
 
 
 def _sought_by_blocks(model: PlanModel, effort: Effort) -> Sought:
-    best, outcomes = nothing(model), []
+    best = nothing(model)
+    outcomes: list[Outcome] = []
     held: list[tuple[Stage, float]] = []
     pool = Pool(model)
     for number, stage in enumerate(model.stages):

@@ -90,23 +90,34 @@ _STATUS: dict[int, Status] = {0: "proven", 1: "stopped", 2: "infeasible", 3: "un
 
 def linear(program: Mixed) -> Found:
     """The optimum with whole numbers waived, and its row multipliers."""
+    if not program.cost:
+        return _without_columns(program)
+    low = np.array([row.low for row in program.rows], dtype=np.float64)
+    high = np.array([row.high for row in program.rows], dtype=np.float64)
+    cost, upper = np.array(program.cost, dtype=np.float64), np.array(program.upper, dtype=np.float64)
+    return linear_on(_matrix(program), low, high, cost, upper)
+
+
+def linear_on(matrix: Any, low: Floats, high: Floats, cost: Floats, upper: Floats) -> Found:
+    """As :func:`linear`, for a program given as a sparse matrix (m × n, by rows) and arrays; n at least 1."""
     from scipy.optimize import linprog
     from scipy.sparse import vstack
 
-    if not program.cost:
-        return _without_columns(program)
-    matrix, low, high, scales = *_scaled(program), _row_scales(program)
+    scales = _row_scales(matrix)
+    matrix = matrix.copy()
+    matrix.data = matrix.data * np.repeat(scales, np.diff(matrix.indptr))
+    low, high = low * scales, high * scales
     equal = low == high
     has_low, has_high = ~equal & np.isfinite(low), ~equal & np.isfinite(high)
 
     solver: Any = linprog  # its stubs know no sparse matrices
     result = solver(
-        np.array(program.cost, dtype=np.float64),
+        cost,
         A_ub=vstack([-matrix[has_low], matrix[has_high]]).tocsr() if (has_low | has_high).any() else None,
         b_ub=np.concatenate([-low[has_low], high[has_high]]) if (has_low | has_high).any() else None,
         A_eq=matrix[equal] if equal.any() else None,
         b_eq=low[equal] if equal.any() else None,
-        bounds=np.column_stack([np.zeros(len(program.cost)), np.array(program.upper, dtype=np.float64)]),
+        bounds=np.column_stack([np.zeros(len(cost)), upper]),
         method="highs-ds",
     )
     status = _STATUS.get(int(result.status), "unknown")
@@ -128,25 +139,32 @@ def _without_columns(program: Mixed) -> Found:
     return Found(status="proven", x=np.zeros(0), value=0.0, bound=0.0, multipliers=np.zeros(len(program.rows)))
 
 
-def _row_scales(program: Mixed) -> Floats:
-    sizes = [max((abs(value) for value in row.terms.values()), default=0.0) for row in program.rows]
-    return _power_of_two(np.array(sizes, dtype=np.float64))
-
-
 def _scaled(program: Mixed) -> tuple[Any, Floats, Floats]:
     """The matrix in compressed rows with its bounds, each row scaled to about 1 by a power of two."""
+    matrix = _matrix(program)
+    scales = _row_scales(matrix)
+    matrix.data = matrix.data * np.repeat(scales, np.diff(matrix.indptr))
+    low = np.array([row.low for row in program.rows], dtype=np.float64) * scales
+    high = np.array([row.high for row in program.rows], dtype=np.float64) * scales
+    return matrix, low, high
+
+
+def _matrix(program: Mixed) -> Any:
     from scipy.sparse import csr_array
 
     starts = np.zeros(len(program.rows) + 1, dtype=np.int32)
     starts[1:] = np.cumsum([len(row.terms) for row in program.rows])
     columns = np.fromiter((j for row in program.rows for j in row.terms), dtype=np.int32, count=starts[-1])
     values = np.fromiter((v for row in program.rows for v in row.terms.values()), dtype=np.float64, count=starts[-1])
-    scales = _row_scales(program)
-    values *= np.repeat(scales, np.diff(starts))
-    matrix = csr_array((values, columns, starts), shape=(len(program.rows), len(program.cost)))
-    low = np.array([row.low for row in program.rows], dtype=np.float64) * scales
-    high = np.array([row.high for row in program.rows], dtype=np.float64) * scales
-    return matrix, low, high
+    return csr_array((values, columns, starts), shape=(len(program.rows), len(program.cost)))
+
+
+def _row_scales(matrix: Any) -> Floats:
+    """For each row of a matrix in compressed rows the power of two that brings its largest entry to about 1."""
+    sizes = np.zeros(matrix.shape[0])
+    lines = np.repeat(np.arange(matrix.shape[0]), np.diff(matrix.indptr))
+    np.maximum.at(sizes, lines, np.abs(matrix.data))
+    return _power_of_two(sizes)
 
 
 def _power_of_two(sizes: Floats) -> Floats:

@@ -13,7 +13,7 @@ bound that holds row k.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
 
@@ -45,6 +45,20 @@ class Program:
             raise ValueError(f"{n} columns, but {len(self.lower)} lower and {len(self.upper)} upper bounds")
         if any(len(row) != n for row in self.rows):
             raise ValueError(f"a row has not {n} entries")
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Sparse:
+    """The constraints of a large program with few entries a row, in whole numbers: low ≤ row·x ≤ high, x ≥ 0.
+
+    ``width`` columns; m rows with their entries by column (absent for 0), m entries in ``low`` and ``high``
+    (None for no bound).
+    """
+
+    width: int
+    rows: tuple[Mapping[int, int], ...]
+    low: tuple[int | None, ...]
+    high: tuple[int | None, ...]
 
 
 @dataclass(frozen=True, slots=True)

@@ -167,14 +167,14 @@ def _guess(scaled: _Scaled, x: Floats, y: Floats, reduced: Floats) -> Basis:
     near = np.minimum(to_floor, to_ceiling) <= AT_BOUND * np.maximum(1.0, np.abs(values))
     fixed = floor == ceiling
     order = np.lexsort((fixed, np.where(prices <= AT_BOUND, 0.0, prices), near))
-    basic = _independent(np.hstack([scaled.rows, -np.eye(m)]), order)
+    basic = independent(np.hstack([scaled.rows, -np.eye(m)]), order)
     upper = np.isfinite(ceiling) & (to_ceiling < to_floor)
     upper[basic] = False
     return Basis(tuple(sorted(int(column) for column in basic)), frozenset(int(j) for j in np.flatnonzero(upper)))
 
 
-def _independent(columns: Floats, order: NDArray[np.intp]) -> list[int]:
-    """The first columns, in that order, that are independent: at most m of them."""
+def independent(columns: Floats, order: NDArray[np.intp]) -> list[int]:
+    """The first columns (of an m × n matrix), in that order, that are independent: at most m of them."""
     work = columns.copy()
     free = np.ones(len(work), dtype=bool)
     chosen: list[int] = []
