@@ -64,7 +64,7 @@ def ask_order(desk: Desk, order: Order) -> Asking[Reported]:
     model = model_of(desk.campaign, order, desk.table, desk.measures)
     if not isinstance(model, OrderModel):
         return Reported(_without_verdict(order, model[0]), model)
-    problem = yield from _ask_vanishing(model)
+    problem = yield from ask_vanishing(model)
     if problem is not None:
         return Reported(_without_verdict(order, problem), (problem,))
     try:
@@ -281,7 +281,7 @@ def _without_verdict(order: Order, problem: Problem) -> OrderFinding:
     return replace(_blank(order), sentence=f"No answer: {problem.message}.")
 
 
-def _ask_vanishing(model: OrderModel) -> Asking[Problem | None]:
+def ask_vanishing(model: OrderModel) -> Asking[Problem | None]:
     """The problem of a ratio whose denominator can vanish in a blend within the limits."""
     rows = amount_rows(model)
     bounds = share_bound_rows(model)
@@ -313,4 +313,4 @@ def _ask_vanishing(model: OrderModel) -> Asking[Problem | None]:
     return None
 
 
-vanishing = answered(_ask_vanishing)
+vanishing = answered(ask_vanishing)

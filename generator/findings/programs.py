@@ -81,7 +81,7 @@ def amount_rows(model: OrderModel) -> Rows:
     return _rows(Same(model.rows), paired=False)
 
 
-@lru_cache(maxsize=256)
+@lru_cache(maxsize=1024)
 def _rows(same: Same[tuple[Row, ...]], *, paired: bool) -> Rows:
     entries: list[ProgramRow] = []
     lows: dict[str, tuple[int, Row]] = {}
@@ -116,8 +116,9 @@ def _constant_sum(high: Row, low: Row) -> Fraction | None:
 
     With low = l·e − a·c and high = a·c − h·e that is (l − h)·e: constant where carriers are equal.
     """
-    sums = {one + other for one, other in zip(high.terms, low.terms, strict=True)}
-    return sums.pop() if len(sums) == 1 else None
+    pairs = zip(high.terms, low.terms, strict=True)
+    total = sum(next(pairs), ZERO)
+    return total if all(one + other == total for one, other in pairs) else None
 
 
 def share_program(

@@ -68,13 +68,22 @@ def ask_cheapest(model: OrderModel, table: Table, measures: Mapping[str, Measure
 
     ValueError if no shares meet the limits and the house rules in that amount.
     """
+    best = yield from ask_first_shares(model)
     if all(cost is None for cost in model.cost):
-        best = yield from _ask_closest_shares(model)
         return recipe_of(model, table, measures, named_shares(model, best.staged.x)), best
-    best = yield from ask_cheapest_shares(model)
     has_bound = best.is_whole and all(cost is not None for cost in model.cost)
     bound = _cost_bound(model, share_rows(model), best.staged.stages[0]) if has_bound else None
     return recipe_of(model, table, measures, named_shares(model, best.staged.x), bound), best
+
+
+def ask_first_shares(model: OrderModel, *, to_publish: bool = True) -> Asking[Best]:
+    """The shares of the recipe that stands first: the cheapest, the closest where no cost at all is known.
+
+    ValueError if no shares meet the limits and the house rules in the amount; ``to_publish`` as in ``ask``.
+    """
+    if all(cost is None for cost in model.cost):
+        return (yield from _ask_closest_shares(model, to_publish=to_publish))
+    return (yield from ask_cheapest_shares(model, to_publish=to_publish))
 
 
 def ask_cheapest_shares(model: OrderModel, rows: Rows | None = None, *, to_publish: bool = True) -> Asking[Best]:
@@ -127,7 +136,7 @@ def ask_closest(model: OrderModel, table: Table, measures: Mapping[str, Measure]
     return recipe_of(model, table, measures, named_shares(model, best.staged.x))
 
 
-def _ask_closest_shares(model: OrderModel) -> Asking[Best]:
+def _ask_closest_shares(model: OrderModel, *, to_publish: bool = True) -> Asking[Best]:
     n = len(model.lots)
     extra: list[tuple[Vector, Bound, Bound]] = []
     aims = [(name, aim) for name, limit in model.limits.items() if (aim := _aim(model, name, limit)) is not None]
@@ -140,7 +149,7 @@ def _ask_closest_shares(model: OrderModel) -> Asking[Best]:
         row[n + 2 * k], row[n + 2 * k + 1] = -ONE, ONE
         extra.append((tuple(row), ZERO, ZERO))
     distance = (*((ZERO,) * n), *((ONE,) * (width - n)))
-    return (yield from ask_best_shares(model, [distance], extra=extra, width=width))
+    return (yield from ask_best_shares(model, [distance], to_publish=to_publish, extra=extra, width=width))
 
 
 def ask_roomiest(

@@ -47,11 +47,15 @@ class Table:
     problems: tuple[Problem, ...]
 
 
-def table_of(campaign: Campaign) -> Table:
-    """The carriers and values of a campaign; values outside a rule's domain are problems."""
+def table_of(campaign: Campaign, *, wet_known: bool | None = None) -> Table:
+    """The carriers and values of a campaign; values outside a rule's domain are problems.
+
+    ``wet_known``: whether any lot at all has a moisture; None: whether one of these has.
+    """
     problems: list[Problem] = []
     rules = {component.name: rule_named(component.rule) for component in campaign.components}
-    wet_known = any(lot.moisture is not None for lot in campaign.lots)
+    if wet_known is None:
+        wet_known = is_wet_known(campaign)
     carriers = {
         basis: tuple(_carrier(lot, basis, campaign.settings.quantity_basis, wet_known) for lot in campaign.lots)
         for basis in ("as received", "dry", "ignited", "volume", "mole")
@@ -71,6 +75,11 @@ def table_of(campaign: Campaign) -> Table:
         values[group.name] = tuple(Value(share, share, share) for share in shares)
         rules[group.name], bases[group.name] = rule_named("linear"), AMOUNT
     return Table(carriers, values, bases, rules, tuple(problems))
+
+
+def is_wet_known(campaign: Campaign) -> bool:
+    """Whether any lot has a moisture: then one without is not dry, but not known."""
+    return any(lot.moisture is not None for lot in campaign.lots)
 
 
 def _carrier(lot: Lot, basis: Basis | str, quantity_basis: Basis, wet_known: bool) -> Fraction | None:

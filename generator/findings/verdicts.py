@@ -67,7 +67,7 @@ def ask_judgement(model: OrderModel) -> Asking[Judgement]:
         answer = yield from ask_answer(program)
         assert isinstance(answer, Infeasible), "a verdict is the same whichever way it was proven"
         return Judgement(verdict="unreachable", blocking=blocking_proof(model, rows, program, answer))
-    if model.rules.names() and not (yield from _ask_allowed(model)):
+    if model.rules.names() and not (yield from ask_allowed(model)):
         return Judgement(verdict="barred", branches=(yield from _ask_branch_proof(model)))
     greatest, face = yield from both(ask_greatest_amount(model), ask_face(model))
     if greatest and greatest.amount is not None and model.amount is not None and greatest.amount < model.amount:
@@ -83,15 +83,15 @@ def ask_verdict(model: OrderModel) -> Asking[Verdict]:
     possible = yield from ask_possible(share_program(model, share_rows(model), (ZERO,) * len(model.lots)))
     if not possible:
         return "unreachable"
-    if model.rules.names() and not (yield from _ask_allowed(model)):
+    if model.rules.names() and not (yield from ask_allowed(model)):
         return "barred"
     capped = replace(model, upper=capped_upper(model, model.amount))
-    if capped.upper != model.upper and not (yield from _ask_allowed(capped)):
+    if capped.upper != model.upper and not (yield from ask_allowed(capped)):
         return "short"
     return "edge" if (yield from ask_face(model)) else "makeable"
 
 
-def _ask_allowed(model: OrderModel) -> Asking[bool]:
+def ask_allowed(model: OrderModel) -> Asking[bool]:
     """Whether some shares within the limits keep the house rules."""
     if not model.rules.names():
         return (yield from ask_possible(share_program(model, share_rows(model), (ZERO,) * len(model.lots))))

@@ -39,6 +39,22 @@ def divided(players: int, value: Value) -> Division | None:
     return _exact(players, value) if players <= MOST_EXACT else _sampled(players, value)
 
 
+def most_asked_by(players: int) -> int:
+    """At most so many values are taken by a division among so many players."""
+    return 2**players if players <= MOST_EXACT else SAMPLED_ORDERS * (players - 1) + 2
+
+
+def asked_by(players: int) -> list[frozenset[int]]:
+    """The subsets whose values a division among players 0 … n−1 takes, each once, smaller ones first.
+
+    2^n of them up to ``MOST_EXACT`` players, then those that the sampled orders pass through.
+    """
+    if players <= MOST_EXACT:
+        return [frozenset(chosen) for size in range(players + 1) for chosen in combinations(range(players), size)]
+    passed = {frozenset(run[:count]): None for run in _orders(players) for count in range(players + 1)}
+    return sorted(passed, key=len)
+
+
 def _exact(players: int, value: Value) -> Division | None:
     """Count, for every step from a subset to the next, the orders that take it."""
     every = frozenset(range(players))
@@ -74,15 +90,7 @@ def _ways(
 
 def _sampled(players: int, value: Value) -> Division | None:
     """The mean over sampled orders, each beside its reverse, which takes out much of the chance."""
-    chance = random.Random(_START)  # noqa: S311  (the same orders every time are what is wanted)
-    order = list(range(players))
-    samples: list[list[Fraction]] = []
-    for _ in range(SAMPLED_ORDERS // 2):
-        chance.shuffle(order)
-        for run in (order, order[::-1]):
-            added = _added(run, value)
-            if added is not None:
-                samples.append(added)
+    samples = [added for run in _orders(players) if (added := _added(run, value)) is not None]
     if len(samples) < 2:
         return None
     count = len(samples)
@@ -92,6 +100,17 @@ def _sampled(players: int, value: Value) -> Division | None:
         spread = sum(float(sample[player] - amounts[player]) ** 2 for sample in samples)
         errors.append(sqrt(spread / (count - 1) / count))
     return Division(amounts, tuple(errors))
+
+
+def _orders(players: int) -> list[list[int]]:
+    """The orders sampled, each beside its reverse: the same ones every time."""
+    chance = random.Random(_START)  # noqa: S311  (the same orders every time are what is wanted)
+    order = list(range(players))
+    orders = []
+    for _ in range(SAMPLED_ORDERS // 2):
+        chance.shuffle(order)
+        orders += [list(order), order[::-1]]
+    return orders
 
 
 def _added(run: Sequence[int], value: Value) -> list[Fraction] | None:

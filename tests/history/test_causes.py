@@ -10,7 +10,7 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from generator.findings.answers import find
-from generator.history.causes import TOGETHER, TOO_MANY, Side, explained, verdict_cause
+from generator.history.causes import TOGETHER, Side, explained, verdict_cause
 from generator.history.compare import changes
 from generator.history.division import MOST_EXACT, divided
 from generator.history.edits import edits
@@ -135,13 +135,14 @@ def test_a_search_that_is_cut_short_says_so() -> None:
 
 
 def test_without_replays_left_nothing_is_claimed() -> None:
-    """A revision of too many changes says that causes were not looked for."""
+    """A revision of too many changes says that causes were not looked for, and what that would take."""
     new = plain()
-    new.lots["A"] |= {"K": "12", "cost": "11"}
+    new.lots["A"] |= {"K": "12", "N": "11", "cost": "11"}
     before, after = plain().campaign(), new.campaign()
     sides = (Side(campaign=before, findings=find(before)), Side(campaign=after, findings=find(after)))
     found = changes(sides[0].findings, sides[1].findings)
-    assert only("verdict", explained(*sides, edits(before, after), found, most=0)).cause == Cause(remark=TOO_MANY)
+    cause = only("verdict", explained(*sides, edits(before, after), found, most=0)).cause
+    assert cause == Cause(at_least=1, remark="Not looked for: at least 2 more answers would have to be asked again.")
 
 
 def test_a_cost_is_divided_and_sums_up() -> None:
