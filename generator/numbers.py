@@ -87,6 +87,14 @@ def significant(value: Fraction | float | int, digits: int) -> str:
     return _digits(scaled, places)
 
 
+def amount_places(total: Fraction | float) -> int:
+    """Decimals of an amount such that its last place is at most a thousandth of ``total``."""
+    size, places = abs(Fraction(total)), 0
+    while 0 < size * 10**places < 1000 and places < MOST_PLACES:
+        places += 1
+    return places
+
+
 def exact(value: Fraction) -> str:
     """``value`` without any rounding: a decimal where it ends within ``MOST_PLACES``, else p/q."""
     places = exact_places(value)

@@ -47,7 +47,7 @@ def plan_of(
     is_proven = all(o.gap == 0 for o in sought.outcomes if o.stage.priority is not None)
     status = "proven" if is_proven else "out of time" if sought.is_out_of_time else "within gap"
     plan = Plan(
-        value=float(_value(model, settled)),
+        value=float(value_of(model, settled)),
         measure="value" if model.is_valued else "amount",
         orders={order.name: _planned(model, settled, order.name, table, measures) for order in campaign.orders},
         left={campaign.lots[i].name: float(amount) for i, amount in left.items()},
@@ -103,7 +103,7 @@ def _stages(sought: Sought) -> tuple[PlanStage, ...]:
     return tuple(stages)
 
 
-def _value(model: PlanModel, settled: Settled) -> Fraction:
+def value_of(model: PlanModel, settled: Settled) -> Fraction:
     """Σ price·accepted − Σ cost·used, or the amount accepted where nothing is priced."""
     total = ZERO
     for block, own in zip(model.blocks, settled.amounts, strict=True):

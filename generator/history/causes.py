@@ -8,15 +8,17 @@ apart: it is the difference between the recorded old answer and the present one 
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from fractions import Fraction
 from typing import cast
 
+from generator import numbers
 from generator.findings.records import Findings
 from generator.history.compare import SHARE_MOVED
 from generator.history.edits import renamed
 from generator.history.parted import PROGRAM, TOGETHER, Number, number_cause
+from generator.history.plan_replay import PlanReplay
 from generator.history.questions import NO_ANSWER, NO_BOUND, NOT_KNOWN, Answer
 from generator.history.records import Cause, Change, Edit, Part
 from generator.history.relevance import Question
@@ -32,10 +34,16 @@ MOST_IN_ALL = 12_000
 #: Of these so many in a hundred are kept for changes whose cause can't be searched for to the end.
 _RESERVE = 20
 
+#: Of the plan's replays so many in a hundred as of all others: some ten seconds at worst (measured).
+_FOR_PLANS = 50
+NOT_PROVEN = "The plan was not proven best, so that no edit can be named for what it gives."
+
 #: What one replay takes, where a plain one takes 1 (measured).
 PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 8}
 #: The kinds of changes that have a cause, in the turns in which it is searched for.
 _TURNS: tuple[tuple[str, ...], ...] = (("verdict",), ("cost", "amount", "room", "conformity"), ("recipe",))
+#: A plan takes about so many plain replays, and as many more for every node of its search.
+_PLAN_PRICE = 60
 #: What stands for a number that isn't there.
 _INSTEAD: Mapping[str, str] = {"cost": NOT_KNOWN, "amount": NO_BOUND}
 
@@ -71,6 +79,12 @@ def explained(
         causes = side_by_side([work.cause(changes[position]) for position in positions])
         for position, cause in zip(positions, causes, strict=True):
             told[position] = replace(changes[position], cause=cause)
+    plans = _Plans(old, new, edits, Allowance(most * _FOR_PLANS // 100), same_program=same_program)
+    for position in sorted(range(len(changes)), key=lambda position: _urgency(changes[position])):
+        if changes[position].kind in ("accepted", "plan"):
+            # One after another: what one has asked the next one knows, and plans are not solved in stacks.
+            (told_of_plan,) = side_by_side([plans.cause(changes[position])])
+            told[position] = replace(changes[position], cause=told_of_plan)
     return tuple(told)
 
 
@@ -170,6 +184,67 @@ class _Work:
         return all(
             abs(float(shares.get(lot, 0)) - float(others.get(lot, 0))) < SHARE_MOVED for lot in {**shares, **others}
         )
+
+
+class _Plans:
+    """The causes of what the plan gives otherwise, from plans made with some of the edits."""
+
+    def __init__(
+        self, old: Side, new: Side, edits: Sequence[Edit], allowance: Allowance, *, same_program: bool
+    ) -> None:
+        self._plans = [side.findings.plan for side in (old, new)]
+        self._replay = PlanReplay(old.campaign, new.campaign, edits)
+        self._edits = edits
+        self._allowance = allowance
+        self._same_program = same_program
+
+    def cause(self, change: Change) -> Searching[Cause]:
+        """The cause of a changed amount of one order, or of the plan's changed value."""
+        assert isinstance(change.old, float)
+        assert isinstance(change.new, float)
+        if any(plan is None or plan.status != "proven" for plan in self._plans):
+            return Cause(remark=NOT_PROVEN)
+        every = self._replay.relevant()
+        nodes = max(plan.nodes for plan in self._plans if plan is not None)
+        price = _PLAN_PRICE * (1 + nodes)
+        if change.kind == "plan":
+            groups = grouped(self._edits, every)
+            if self._same_program and len(groups) == 1:
+                ((group, positions),) = groups.items()
+                return Cause(parts=(Part(group=group, edits=positions, amount=change.new - change.old),))
+            number = Number(
+                replay=self._replay, question="value", old=change.old, new=change.new, price=price, what="plans"
+            )
+            return (
+                yield from number_cause(number, self._edits, every, self._allowance, same_program=self._same_program)
+            )
+        if self._same_program and len(every) == 1:
+            return Cause(suffices=(every,), at_least=1, restores=every)
+        target = Target(
+            replay=self._replay,
+            question="plan",
+            old={change.subject: Fraction(change.old)},
+            new={change.subject: Fraction(change.new)},
+            alike=_gives_alike(change),
+            price=price,
+            what="plans",
+            same_program=self._same_program,
+        )
+        return (yield from set_cause(target, self._edits, every, self._allowance))
+
+
+def _gives_alike(change: Change) -> Callable[[Answer, Answer], bool]:
+    """Whether two plans give the order of a change the same amount, as it is told."""
+    places = change.places or 0
+
+    def alike(one: Answer, other: Answer) -> bool:
+        if not isinstance(one, Mapping) or not isinstance(other, Mapping):
+            return False
+        amounts = [plan.get(change.subject) for plan in (one, other)]
+        texts = {None if amount is None else numbers.text(amount, places) for amount in amounts}
+        return len(texts) == 1
+
+    return alike
 
 
 def verdict_cause(replay: Replay, old: object, new: object, most: int = MOST_IN_ALL) -> Cause:

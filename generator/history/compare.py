@@ -16,10 +16,12 @@ from generator.findings.records import Findings, HullFinding, LotFinding, OrderF
 from generator.history.records import GRAVITY, Change, ChangeKind, Value
 
 _BETTER_FIRST = ("makeable", "edge", "short", "barred", "unreachable", None)
-#: Costs and amounts are told to so many significant digits, enough to see a change worth telling.
-_DIGITS = 5
 _ROOM_DIGITS = 3
+#: From here on hundredths of money say nothing.
+_WHOLE_FROM = 10_000
 _VOLUME_DIGITS = 4
+#: The unit of a difference of probabilities.
+PERCENT = "percentage points"
 #: A recipe has moved when a share did by as much as pages print: 0.1 %.
 SHARE_MOVED = 0.001
 
@@ -40,7 +42,7 @@ def changes(
     old = _under_new_names(old, renamed_orders or {}, renamed_lots or {})
     found = [
         *_order_changes(old, new),
-        *_plan_changes(old.plan, new.plan, new.quantity_unit),
+        *_plan_changes(old.plan, new.plan, new),
         *_lot_changes(old.lots, new.lots),
         *_hull_changes(old.hulls, new.hulls),
     ]
@@ -130,7 +132,7 @@ def _one_order(old: OrderFinding, new: OrderFinding, findings: Findings) -> list
         return []
     return [
         *_amount_changes(old, new, findings.quantity_unit),
-        *_recipe_changes(old, new, f" {findings.currency} per {findings.quantity_unit}"),
+        *_recipe_changes(old, new, f"{findings.currency} per {findings.quantity_unit}"),
         *_room_changes(old, new),
     ]
 
@@ -138,12 +140,13 @@ def _one_order(old: OrderFinding, new: OrderFinding, findings: Findings) -> list
 def _amount_changes(old: OrderFinding, new: OrderFinding, unit: str) -> list[Change]:
     """Tell of the greatest amount; null is "no bound"."""
     before, after = old.greatest_amount, new.greatest_amount
+    places = _amount_places(before, after)
     if (before is None) == (after is None):
-        return _moved("amount", new.order, "greatest amount", before, after, f" {unit}", _DIGITS)
+        return _moved("amount", f"Order {new.order}: greatest amount", new.order, before, after, unit, places)
     if after is None:
         sentence = f"Order {new.order}: the amount has no bound now."
     else:
-        amount = numbers.significant(after, _DIGITS)
+        amount = numbers.text(after, places)
         sentence = f"Order {new.order}: the greatest amount is now {amount} {unit}; it had no bound."
     return [Change(kind="amount", subject=new.order, old=before, new=after, sentence=sentence)]
 
@@ -167,16 +170,17 @@ def _conformity_changes(order: str, before: float | None, after: float | None) -
     if was == now:
         return []
     sentence = f"Order {order}: the cheapest recipe holds all limits with {now} %; it was {was} %."
-    return [Change(kind="conformity", subject=order, old=before, new=after, sentence=sentence)]
+    return [Change(kind="conformity", subject=order, old=before, new=after, sentence=sentence, unit=PERCENT, places=1)]
 
 
 def _cost_changes(order: str, before: float | None, after: float | None, unit: str) -> list[Change]:
+    places = _cost_places(before, after)
     if (before is None) == (after is None):
-        return _moved("cost", order, "cheapest cost", before, after, unit, _DIGITS)
+        return _moved("cost", f"Order {order}: cheapest cost", order, before, after, unit, places)
     if after is None:
         sentence = f"Order {order}: the cheapest cost is not known any more."
     else:
-        sentence = f"Order {order}: the cheapest cost is now known: {numbers.significant(after, _DIGITS)}{unit}."
+        sentence = f"Order {order}: the cheapest cost is now known: {numbers.text(after, places)} {unit}."
     return [Change(kind="cost", subject=order, old=before, new=after, sentence=sentence)]
 
 
@@ -197,34 +201,74 @@ def _share_changes(order: str, before: Recipe, after: Recipe) -> list[Change]:
 def _room_changes(old: OrderFinding, new: OrderFinding) -> list[Change]:
     if old.room_unit != new.room_unit:
         return []
-    unit = {"sd": " sd", "scale": " scale steps"}.get(new.room_unit or "", "")
-    return _moved("room", new.order, "room", old.room, new.room, unit, _ROOM_DIGITS)
+    # Only where every limit's standard deviation is known is it counted in these.
+    unit = "sd" if new.room_unit == "sd" else "scale steps"
+    places = _room_places(old.room, new.room)
+    return _moved("room", f"Order {new.order}: room", new.order, old.room, new.room, unit, places)
 
 
 def _moved(
-    kind: ChangeKind, order: str, what: str, old: float | None, new: float | None, unit: str, digits: int
+    kind: ChangeKind, what: str, subject: str, old: float | None, new: float | None, unit: str, places: int
 ) -> list[Change]:
     """Tell of a number that was known and is known, and prints differently."""
     if old is None or new is None:
         return []
-    before, after = numbers.significant(old, digits), numbers.significant(new, digits)
+    before, after = numbers.text(old, places), numbers.text(new, places)
     if before == after:
         return []
     direction = "rose" if new > old else "fell"
-    sentence = f"Order {order}: {what} {direction} to {after}{unit} from {before}{unit}."
-    return [Change(kind=kind, subject=order, old=old, new=new, sentence=sentence)]
+    sentence = f"{what} {direction} to {after} {unit} from {before} {unit}."
+    return [Change(kind=kind, subject=subject, old=old, new=new, sentence=sentence, unit=unit, places=places)]
 
 
-def _plan_changes(old: Plan | None, new: Plan | None, unit: str) -> list[Change]:
-    """Tell what the plan gives each order that both plans know."""
+def _amount_places(*amounts: float | None) -> int:
+    """Decimals in which amounts are told, as pages print the greater one."""
+    return numbers.amount_places(max((abs(amount) for amount in amounts if amount is not None), default=0.0))
+
+
+def _cost_places(*costs: float | None) -> int:
+    """Decimals in which a cost is told: two, as pages print it, more where that would leave less than two digits."""
+    greatest = max((abs(cost) for cost in costs if cost is not None), default=0.0)
+    return max(2, numbers.amount_places(greatest) - 2)
+
+
+def _room_places(old: float | None, new: float | None) -> int:
+    """Decimals in which rooms are told: those of the greater one to three digits, more where only more tell them
+    apart and pages do."""
+    if old is None or new is None:
+        return 0
+    known: list[float] = [old, new]
+    less, greater = (_behind_point(numbers.significant(room, _ROOM_DIGITS)) for room in sorted(known, key=abs))
+    return greater if numbers.text(old, greater) != numbers.text(new, greater) else max(less, greater)
+
+
+def _behind_point(text: str) -> int:
+    return len(text.partition(".")[2])
+
+
+def _plan_changes(old: Plan | None, new: Plan | None, findings: Findings) -> list[Change]:
+    """Tell what the plan gives each order that both plans know, and what it is worth in all."""
     if old is None or new is None:
         return []
     found: list[Change] = []
+    unit = findings.quantity_unit
     for name, planned in new.orders.items():
         if name in old.orders:
-            was = old.orders[name].accepted
-            found += _moved("accepted", name, "amount in the plan", was, planned.accepted, f" {unit}", _DIGITS)
-    return found
+            was, now = old.orders[name].accepted, planned.accepted
+            what = f"Order {name}: amount in the plan"
+            found += _moved("accepted", what, name, was, now, unit, _amount_places(was, now))
+    return [*found, *_plan_value(old, new, findings)]
+
+
+def _plan_value(old: Plan, new: Plan, findings: Findings) -> list[Change]:
+    if old.measure != new.measure or old.value is None or new.value is None:
+        return []
+    if new.measure == "amount":
+        what, unit, places = "the amount accepted in all", findings.quantity_unit, _amount_places(old.value, new.value)
+    else:
+        is_great = max(abs(old.value), abs(new.value)) >= _WHOLE_FROM
+        what, unit, places = "its value", findings.currency, 0 if is_great else 2
+    return _moved("plan", f"The plan: {what}", "", old.value, new.value, unit, places)
 
 
 def _lot_changes(old: Sequence[LotFinding], new: Sequence[LotFinding]) -> list[Change]:

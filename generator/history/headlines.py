@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from datetime import datetime
+from fractions import Fraction
 
 from generator import numbers
 from generator.history.compare import is_lost
@@ -28,6 +29,7 @@ _MONTHS = (
     "November",
     "December",
 )
+_RANKS = {"order gone": 4, "order new": 5, "accepted": 6, "plan": 7, "cost": 8, "amount": 9, "room": 10}
 #: More edits than this are counted, not named.
 _MOST_NAMED = 3
 _PART_DIGITS = 3
@@ -57,7 +59,7 @@ def importance(change: Change) -> tuple[int, float]:
     """The order in which changes are told: lost orders, won ones, orders that came or went, costs by size, …"""
     if change.kind == "verdict":
         return (0 if _fate(change) == "lost" else 1 if _fate(change) == "won" else 2 if is_lost(change) else 3), 0.0
-    rank = {"order gone": 4, "order new": 5, "accepted": 6, "cost": 7, "amount": 8, "room": 9}.get(change.kind, 10)
+    rank = _RANKS.get(change.kind, 11)
     if isinstance(change.old, float) and isinstance(change.new, float):
         return rank, -abs(change.new - change.old) / (abs(change.old) or 1.0)
     return rank, 0.0
@@ -77,10 +79,17 @@ def cause_text(change: Change, edits: Sequence[Edit]) -> str:
         text += " (each alone suffices)" if len(cause.suffices) > 1 else ""
     elif cause.found:
         text = f"{len(cause.found)} edits together: {_together(change, cause.found, edits)}"
-        text += f" (at least {cause.at_least} are needed)"
+        text += _needed(cause.at_least)
     else:
         return PROGRAM
     return f"{PROGRAM} and {text}" if cause.by_program else text
+
+
+def _needed(at_least: int) -> str:
+    """What is known of how few edits would do."""
+    if at_least > 2:
+        return f" (at least {at_least} are needed)"
+    return " (no single one does)" if at_least == 2 else ""
 
 
 def with_cause(change: Change, edits: Sequence[Edit]) -> str:
@@ -95,7 +104,8 @@ def part_words(part: Part, edits: Sequence[Edit], subject: str = "") -> str:
         return PROGRAM
     if len(part.edits) == 1:
         return clause_of(edits[part.edits[0]], subject)
-    return f"{len(part.edits)} edits of {part.group.replace('settings', 'the settings')}"
+    count = f"{len(part.edits)} edits"
+    return f"{count} of {part.group.replace('settings', 'the settings')}" if part.group else count
 
 
 def clause_of(edit: Edit, subject: str) -> str:
@@ -151,6 +161,18 @@ def _biggest(change: Change, parts: Sequence[Part], edits: Sequence[Edit]) -> st
     text = part_words(parts[0], edits, change.subject)
     if len(parts) == 1:
         return text
-    sign = numbers.MINUS if parts[0].amount < 0 else "+"
-    size = numbers.significant(abs(parts[0].amount), _PART_DIGITS)
-    return f"most of all {text} ({sign}{size})"
+    return f"most of all {text} ({part_size(change, parts[0].amount)})"
+
+
+def part_size(change: Change, amount: float) -> str:
+    """What a part adds, with its sign and the unit of the change, in the places in which that is told."""
+    percent = 100 if change.kind == "conformity" else 1
+    places = change.places
+    exact = Fraction(amount) * percent
+    if places is None or not round(exact * 10**places):
+        # A part that would print as 0 still has a size.
+        size = numbers.significant(abs(exact), _PART_DIGITS if places is None else 1)
+    else:
+        size = numbers.text(abs(exact), places)
+    sign = numbers.MINUS if amount < 0 else "+"
+    return f"{sign}{size} {change.unit}".rstrip()

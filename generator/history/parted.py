@@ -15,7 +15,7 @@ from generator.history.systems import Subset
 
 PROGRAM = "program version"
 TOGETHER = "The edits can't be told apart here: made one by one, they leave no answer in between."
-COARSE = "Divided by file only: row by row, {} answers would have to be asked again."
+COARSE = "Divided by file only: row by row, {} {} would have to be asked again."
 
 #: Replays for one changed number: a division among about a hundred rows.
 MOST_FOR_A_NUMBER = 5000
@@ -27,13 +27,14 @@ _SAME_CHANCE = 5e-5
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Number:
-    """A number that changed, of one question: as recorded before and now, and the price of one replay."""
+    """A number that changed, of one question: as recorded before and now; ``price`` and ``what`` as of a Target."""
 
     replay: Answering
     question: Question
     old: float
     new: float
     price: int = 1
+    what: str = "answers"
 
     def value(self, subset: Subset) -> Fraction | None:
         """The number with these edits made; None where there is none."""
@@ -85,13 +86,13 @@ def _affordable(
 ) -> tuple[Mapping[str, tuple[int, ...]] | None, str]:
     """The groups among which the number is divided, the finest that can be afforded; and what to say of it."""
     groups = grouped(edits, every)
-    needed = number.price * most_asked_by(len(groups))
-    if needed <= MOST_FOR_A_NUMBER and allowance.takes(needed):
+    needed = most_asked_by(len(groups))
+    if needed <= MOST_FOR_A_NUMBER and allowance.takes(number.price * needed):
         return groups, ""
     files = filed(edits, every)
     if len(files) < len(groups) and allowance.takes_reserve(number.price * most_asked_by(len(files))):
-        return files, COARSE.format(needed)
-    return None, not_looked_for(needed)
+        return files, COARSE.format(needed, number.what)
+    return None, not_looked_for(needed, number.what)
 
 
 def _union(groups: Sequence[tuple[int, ...]], players: frozenset[int]) -> Subset:

@@ -125,7 +125,7 @@ def _ask_conformity(system: System, model: OrderModel) -> Asking[Answer]:
     return None if conformity.all is None else Fraction(f"{conformity.all:.{DECIMALS}f}")
 
 
-_ASKED: Mapping[Question, Callable[[System, OrderModel], Asking[Answer]]] = {
+_ASKED: Mapping[str, Callable[[System, OrderModel], Asking[Answer]]] = {
     "verdict": _ask_verdict,
     "cost": _ask_cost,
     "amount": _ask_amount,

@@ -16,6 +16,7 @@ ChangeKind = Literal[
     "order gone",
     "order new",
     "accepted",
+    "plan",
     "amount",
     "cost",
     "room",
@@ -93,10 +94,11 @@ class Cause:
     """Why one answer changed.
 
     ``suffices``: every smallest set of edits (positions in the story's edits) that alone gives the new
-    verdict; ``at_least``: no set of fewer edits does; ``found``: a set that does, from which no edit can
+    answer; ``at_least``: no set of fewer edits does; ``found``: a set that does, from which no edit can
     be spared, where the smallest could not be searched for; ``restores``: edits whose undoing alone
-    brings the old verdict back.  ``parts`` divide a change of a number.  ``by_program``: the program's
-    version changed this answer, with the old input already.  ``remark`` says what could not be told.
+    brings the old answer back.  ``parts`` divide a change of a number.  ``by_program``: the program's
+    version changed this answer, with the old input already.  ``remark`` says what could not be told, or
+    how far what is told holds.
     """
 
     suffices: tuple[tuple[int, ...], ...] = ()
@@ -115,7 +117,11 @@ class Cause:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Change:
-    """One answer that differs: of which order, lot or hull, what it was, what it is, and why."""
+    """One answer that differs: of which order, lot or hull, what it was, what it is, and why.
+
+    ``unit`` and ``places`` are those in which the sentence gives its numbers (None: to a few significant
+    digits); those of a probability are percent.
+    """
 
     kind: ChangeKind
     subject: str
@@ -123,6 +129,8 @@ class Change:
     new: Value
     sentence: str
     cause: Cause | None = None
+    unit: str = ""
+    places: int | None = None
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -15,7 +15,8 @@ from generator.history.meaning import meaning
 from generator.history.records import CellChange
 from generator.intake.records import Campaign, Derived, Limit, LinearForm, Measured, Order
 
-Question = Literal["verdict", "cost", "room", "amount", "conformity", "recipe"]
+#: What can be asked again of one order; ``plan`` and ``value`` are of all orders together.
+Question = Literal["verdict", "cost", "room", "amount", "conformity", "recipe", "plan", "value"]
 
 #: What never reaches an order's answers, by where it stands; what is not named here may.
 _IDLE_LOT = frozenset({"supplier", "location", "load_order", "alias", "remark", "sampled", "weigh_step"})
@@ -23,6 +24,9 @@ _IDLE_ORDER = frozenset({"price", "priority", "client", "accept", "remark"})
 _IDLE_COMPONENT = frozenset({"label", "tolerance", "blank_is_zero"})
 _IDLE_HOUSE = frozenset({"weigh_step"})
 _LIVE_SETTINGS = frozenset({"quantity_basis", "below_detection"})
+#: What besides reaches the plan, and what does not.
+_PLAN_SETTINGS = _LIVE_SETTINGS | {"plan_nodes", "plan_seconds"}
+_IDLE_IN_PLAN = frozenset({"client", "remark"})
 #: Which questions the lots' costs reach, and the aims of limits, and an assay's standard deviations.
 _ON_COSTS: frozenset[Question] = frozenset({"cost", "conformity", "recipe"})
 _ON_AIMS: frozenset[Question] = frozenset({"conformity", "recipe"})
@@ -70,6 +74,27 @@ class Relevance:
         if path[1] == "cost":
             return question in _ON_COSTS
         return path[1] not in _IDLE_LOT
+
+
+def plan_needs(*campaigns: Campaign) -> frozenset[str]:
+    """The components that any order's limits take, in any of the campaigns."""
+    return frozenset().union(*(needs_of(campaign, order.name) for campaign in campaigns for order in campaign.orders))
+
+
+def matters_to_plan(cells: Iterable[CellChange], needs: frozenset[str]) -> bool:
+    """Whether an edit of these cells can reach the plan; ``needs`` as :func:`plan_needs` gives them."""
+    everything = Relevance((), needs)
+    for cell in cells:
+        room, *path = cell.path
+        if room == "order":
+            if len(path) == 1 or path[1] not in _IDLE_IN_PLAN:
+                return True
+        elif room == "setting":
+            if path[0] in _PLAN_SETTINGS:
+                return True
+        elif everything.can_matter([cell], "cost"):
+            return True
+    return False
 
 
 def _order_matters(path: list[str], cell: CellChange, question: Question) -> bool:

@@ -39,8 +39,8 @@ class Answering(Asked, Protocol):
 class Target:
     """An answer that changed, and when two answers count as the same.
 
-    ``old`` and ``new`` are as recorded; ``price`` is that of one replay.  ``same_program``: both were found
-    by this very program, so that its version is not the cause.
+    ``old`` and ``new`` are as recorded; ``price`` is that of one replay, in plain ones, and ``what`` it gives.
+    ``same_program``: both were found by this very program, so that its version is not the cause.
     """
 
     replay: Answering
@@ -49,6 +49,7 @@ class Target:
     new: Answer
     alike: Callable[[Answer, Answer], bool]
     price: int = 1
+    what: str = "answers"
     same_program: bool = False
 
     def wanted(self, subsets: Iterable[Subset]) -> list[Wanted]:
@@ -84,7 +85,7 @@ def set_cause(
     remark = ""
     if not smallest:
         if not allowance.takes_reserve(target.price * len(every)):
-            remark = not_looked_for(target.price * len(every))
+            remark = not_looked_for(len(every), target.what)
             return Cause(at_least=at_least, by_program=by_program, remark=remark)
         found, is_spared = yield from _spared(target, edits, every, allowance)
         remark = "" if is_spared else NOT_SPARED
@@ -101,9 +102,9 @@ def set_cause(
     )
 
 
-def not_looked_for(count: int) -> str:
+def not_looked_for(count: int, what: str = "answers") -> str:
     """What stands instead of a cause where even the least search is too much."""
-    return f"Not looked for: at least {count} more answers would have to be asked again."
+    return f"Not looked for: at least {count} {what} would have to be asked again."
 
 
 def _smallest(

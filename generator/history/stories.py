@@ -25,7 +25,7 @@ UNREADABLE_INPUT = "This version of the program can't read the input of that rev
 INTERVALS = ((timedelta(days=7), "a week before"), (timedelta(days=28), "four weeks before"))
 FIRST_TITLE = "the first revision"
 #: Replays for comparisons further back, of which the edits and changes matter more than the causes.
-_MOST_FURTHER_BACK = 120
+_MOST_FURTHER_BACK = 600
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

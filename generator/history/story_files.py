@@ -84,7 +84,7 @@ def _from_json(content: Json) -> Story:
 
 _ORDER = ("verdict", "cost", "room", "accepted")
 _EDIT = ("kind", "name", "field", "old", "new", "clause", "renamed_from")
-_CHANGE = ("kind", "subject", "old", "new", "sentence")
+_CHANGE = ("kind", "subject", "old", "new", "sentence", "unit", "places")
 _COMPARISON = ("number", "recorded", "title", "by_program", "remark")
 _PART = ("group", "edits", "amount", "error")
 _CAUSE = ("at_least", "by_program", "remark")

@@ -19,7 +19,7 @@ from generator.report.parts import Cell, Column, FigureView, Row, Section, Table
 MOST_OWN = 10
 _MOST_CHANGES_TOLD = 4
 #: Changes whose subject is no order.
-_NOT_OF_ORDERS = frozenset({"lot gone", "lot new", "role", "hull", "volume"})
+_NOT_OF_ORDERS = frozenset({"lot gone", "lot new", "role", "hull", "volume", "plan"})
 
 _Told = Sequence[tuple[Line, Story]]
 

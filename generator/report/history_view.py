@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 from generator import numbers
 from generator.history.chronicle import Line
-from generator.history.headlines import cause_text, clause_of, part_words
+from generator.history.headlines import cause_text, clause_of, part_size, part_words
 from generator.history.records import Cause, Change, Comparison, Edit, Outline
 from generator.report import words
 from generator.report.figures import trends
@@ -15,9 +15,8 @@ from generator.report.parts import Cell, Column, FigureView, Legend, Row, Sectio
 
 #: Rows of one table at most, so that no page grows without end; what is left out is counted.
 MOST_ROWS = 150
-_PART_DIGITS = 4
 #: What a change is of, where it is not of an order.
-_KINDS = {"lot gone": "Lot", "lot new": "Lot", "role": "Lot", "hull": "Hull", "volume": "Hull"}
+_KINDS = {"lot gone": "Lot", "lot new": "Lot", "role": "Lot", "hull": "Hull", "volume": "Hull", "plan": "Plan"}
 
 
 def revision_address(slug: str, number: int) -> str:
@@ -60,8 +59,10 @@ def changes_section(comparison: Comparison, anchor: str, title: str) -> Section:
         sentences.append("No answer changed.")
         return Section(anchor=anchor, title=title, sentences=tuple(sentences))
     shown = comparison.changes[:MOST_ROWS]
-    rows = tuple(Row(cells=_change_cells(change, comparison.edits)) for change in shown)
-    columns = (Column(title="Of"), Column(title="What changed"), Column(title="Cause"))
+    has_cause = any(change.cause is not None for change in shown)
+    # A column without an entry would be a header squeezed to the edge.
+    columns = (Column(title="Of"), Column(title="What changed"), *([Column(title="Cause")] if has_cause else []))
+    rows = tuple(Row(cells=_change_cells(change, comparison.edits)[: len(columns)]) for change in shown)
     note = _left_out(len(comparison.changes) - len(shown), "change")
     table = Table(anchor=f"{anchor}-table", caption=title, columns=columns, rows=rows, note=note)
     return Section(anchor=anchor, title=title, sentences=tuple(sentences), tables=(table,))
@@ -104,9 +105,9 @@ def _change_cells(change: Change, edits: Sequence[Edit]) -> tuple[Cell, Cell, Ce
     verdict = change.new if change.kind in ("verdict", "order new") else None
     of = _KINDS.get(change.kind, "Order")
     said = change.sentence
-    for start in (f"Order {change.subject}: ", f"Order {change.subject} ", f"Lot {change.subject} "):
+    for start in (f"Order {change.subject}: ", f"Order {change.subject} ", f"Lot {change.subject} ", "The plan: "):
         said = said.removeprefix(start)
-    name = of if of == "Hull" else f"{of} {change.subject}"
+    name = of if of in ("Hull", "Plan") else f"{of} {change.subject}"
     return (
         text_cell(name),
         Cell(
@@ -124,29 +125,31 @@ def _cause_cell(change: Change, edits: Sequence[Edit]) -> Cell:
         texts = [_part_text(cause, position, change, edits) for position in range(len(cause.parts))]
         return text_cell("; ".join(texts) + ".", detail=cause.remark)
     why = cause_text(change, edits)
-    text = f"{why[:1].upper()}{why[1:]}." if why else cause.remark
-    return text_cell(text, detail=_undone(cause, change, edits) if why else "")
+    if not why:
+        return text_cell(cause.remark)
+    told = [_undone(cause, change, edits), cause.remark]
+    return text_cell(f"{why[:1].upper()}{why[1:]}.", detail=" ".join(text for text in told if text))
 
 
 def _part_text(cause: Cause, position: int, change: Change, edits: Sequence[Edit]) -> str:
     part = cause.parts[position]
-    sign = numbers.MINUS if part.amount < 0 else "+"
-    error = "" if part.error is None else f" ± {numbers.significant(part.error, 1)} (sampled)"
-    size = numbers.significant(abs(part.amount), _PART_DIGITS)
-    return f"{sign}{size}{error} from {part_words(part, edits, change.subject)}"
+    percent = 100 if change.kind == "conformity" else 1
+    error = "" if part.error is None else f" (sampled, ± {numbers.significant(part.error * percent, 1)})"
+    return f"{part_size(change, part.amount)}{error} from {part_words(part, edits, change.subject)}"
 
 
 def _undone(cause: Cause, change: Change, edits: Sequence[Edit]) -> str:
-    """Whether one edit taken back alone brings the old verdict back."""
-    if not (cause.suffices or cause.found):
+    """Whether one edit taken back alone brings the old answer back."""
+    if not (cause.suffices or cause.found) or (cause.found and cause.remark):
         return ""
+    old = {"verdict": "old verdict", "recipe": "old recipe", "accepted": "old amount"}.get(change.kind, "old answer")
     if not cause.restores:
-        return "Undoing no single one of these brings the old verdict back."
+        return f"Undoing no single one of these brings the {old} back."
     named = [clause_of(edits[position], change.subject) for position in cause.restores[:3]]
     involved = {position for chosen in (*cause.suffices, cause.found) for position in chosen}
     if involved == set(cause.restores):
-        return "Undoing it brings the old verdict back." if len(involved) == 1 else "Undoing any one brings it back."
-    return f"Undoing one alone brings the old verdict back: {words.listed(named, 'or')}."
+        return f"Undoing it brings the {old} back." if len(involved) == 1 else "Undoing any one brings it back."
+    return f"Undoing one alone brings the {old} back: {words.listed(named, 'or')}."
 
 
 def _left_out(count: int, what: str) -> str:

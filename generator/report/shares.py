@@ -132,12 +132,7 @@ def _recipe_totals(
     return tuple(cells)
 
 
-def amount_places(total: Fraction | float) -> int:
-    """Decimals of an amount such that its last place is at most a thousandth of ``total``."""
-    size, places = abs(Fraction(total)), 0
-    while 0 < size * 10**places < 1000 and places < numbers.MOST_PLACES:
-        places += 1
-    return places
+amount_places = numbers.amount_places
 
 
 def _printed_amounts(recipe: Recipe) -> dict[str, str] | None:

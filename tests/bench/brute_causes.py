@@ -1,4 +1,4 @@
-"""Hold causes against brute force on many random pairs: ``python -m tests.bench.brute_causes [PAIRS]``.
+"""Hold causes against brute force on many random pairs: ``python -m tests.bench.brute_causes [PAIRS [FIRST]]``.
 
 Every smallest set of edits, every undoing and every fair part is compared with trying all subsets and all
 orders.  Ends with an AssertionError at the first pair that differs.
@@ -8,27 +8,29 @@ from __future__ import annotations
 
 import sys
 import time
+from collections import Counter
 
 from tests.bench import one_thread  # noqa: F401  # isort: skip  (numpy reads the number of threads when it is imported)
 from tests.history.brute import check_pair
 from tests.history.making import pair
 
+#: Every so many pairs the plan's causes are checked as well: each subset makes a whole plan.
+WITH_PLANS = 5
 
-def main(pairs: int) -> None:
-    """Check pairs 0 … pairs−1 and tell what was compared."""
-    start = time.perf_counter()
-    verdicts = costs = undivided = 0
-    seeds = []
-    for seed in range(pairs):
-        counted = check_pair(*pair(seed))
-        verdicts, costs = verdicts + counted.verdicts, costs + counted.costs
+
+def main(pairs: int, first: int = 0) -> None:
+    """Check so many pairs from ``first`` on and tell what was compared."""
+    start = time.process_time()
+    kinds: Counter[str] = Counter()
+    undivided = 0
+    for seed in range(first, first + pairs):
+        counted = check_pair(*pair(seed), with_plans=seed % WITH_PLANS == 0)
+        kinds.update(counted.kinds)
         undivided += counted.undivided
-        if counted.verdicts:
-            seeds.append(seed)
-    print(f"{pairs} pairs in {time.perf_counter() - start:.0f} s, all as brute force finds:")
-    print(f"{verdicts} changed verdicts, {costs} changed costs, {undivided} of them rightly not divided")
-    print(f"pairs with a changed verdict: {seeds}")
+    print(f"{pairs} pairs in {time.process_time() - start:.0f} s, all as brute force finds:")
+    print(", ".join(f"{count} of kind {kind}" for kind, count in sorted(kinds.items())))
+    print(f"{undivided} numbers rightly not divided")
 
 
 if __name__ == "__main__":
-    main(int(sys.argv[1]) if len(sys.argv) > 1 else 200)
+    main(*([int(text) for text in sys.argv[1:]] or [200]))

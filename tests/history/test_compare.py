@@ -99,10 +99,10 @@ def test_a_lost_verdict_in_words() -> None:
 @pytest.mark.parametrize(
     "fields, old, new, sentence",
     [
-        ("greatest_amount", 120.0, 80.5, "Order 1042: greatest amount fell to 80.5 t from 120 t."),
-        ("greatest_amount", None, 80.5, "Order 1042: the greatest amount is now 80.5 t; it had no bound."),
+        ("greatest_amount", 120.0, 80.5, "Order 1042: greatest amount fell to 80.5 t from 120.0 t."),
+        ("greatest_amount", None, 80.5, "Order 1042: the greatest amount is now 80.50 t; it had no bound."),
         ("greatest_amount", 80.5, None, "Order 1042: the amount has no bound now."),
-        ("room", 0.8, 1.25, "Order 1042: room rose to 1.25 from 0.8."),
+        ("room", 0.8, 1.25, "Order 1042: room rose to 1.25 scale steps from 0.80 scale steps."),
     ],
 )
 def test_numbers_in_words(fields: str, old: float | None, new: float | None, sentence: str) -> None:
@@ -114,9 +114,9 @@ def test_numbers_in_words(fields: str, old: float | None, new: float | None, sen
 @pytest.mark.parametrize(
     "old, new, sentence",
     [
-        (100.0, 112.5, "Order 1042: cheapest cost rose to 112.5 EUR per t from 100 EUR per t."),
+        (100.0, 112.5, "Order 1042: cheapest cost rose to 112.50 EUR per t from 100.00 EUR per t."),
         (100.0, None, "Order 1042: the cheapest cost is not known any more."),
-        (None, 99.0, "Order 1042: the cheapest cost is now known: 99 EUR per t."),
+        (None, 99.0, "Order 1042: the cheapest cost is now known: 99.00 EUR per t."),
     ],
 )
 def test_costs_in_words(old: float | None, new: float | None, sentence: str) -> None:
@@ -172,7 +172,7 @@ def test_the_plan_in_words() -> None:
         return Plan(value=0.0, orders=orders, left={}, runs_out=(), status="optimal", gap=0.0)
 
     before, after = make_findings(make_order(), plan=plan(50.0)), make_findings(make_order(), plan=plan(0.0))
-    assert sentences(before, after) == ["Order 1042: amount in the plan fell to 0 t from 50 t."]
+    assert sentences(before, after) == ["Order 1042: amount in the plan fell to 0.00 t from 50.00 t."]
 
 
 def test_a_flat_hull_in_words() -> None:
@@ -217,7 +217,9 @@ def test_a_renamed_order_and_lot_are_compared_under_their_new_names() -> None:
         make_order("2", recipes={"cheapest": make_recipe(110.0, Z=0.5, B=0.5)}), lots=(make_lot("Z"), make_lot("B"))
     )
     found = changes(before, after, renamed_orders={"1": "2"}, renamed_lots={"A": "Z"})
-    assert [change.sentence for change in found] == ["Order 2: cheapest cost rose to 110 EUR per t from 100 EUR per t."]
+    assert [change.sentence for change in found] == [
+        "Order 2: cheapest cost rose to 110.00 EUR per t from 100.00 EUR per t."
+    ]
 
 
 def test_lost_verdicts_come_first() -> None:

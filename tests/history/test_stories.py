@@ -10,7 +10,16 @@ import pytest
 
 from generator.findings import results
 from generator.findings.answers import find
-from generator.history.headlines import FIRST, NO_CHANGE, cause_text, headline, importance, with_cause
+from generator.history.headlines import (
+    FIRST,
+    NO_CHANGE,
+    cause_text,
+    headline,
+    importance,
+    part_size,
+    part_words,
+    with_cause,
+)
 from generator.history.records import Cause, Change, Edit, Part, Story
 from generator.history.stories import PREVIOUS, UNREADABLE_ANSWERS, UNREADABLE_INPUT, Earlier, further_back, tell
 from generator.history.story_files import UnreadableStoryError, from_bytes, to_bytes
@@ -114,7 +123,26 @@ def test_at_least_so_many_edits() -> None:
     """A search that was cut short names what it found and how many edits are needed at least."""
     change = lost(cause=Cause(found=(0, 1), at_least=2))
     assert cause_text(change, EDITS).startswith("2 edits together: ")
-    assert with_cause(change, EDITS).endswith("(at least 2 are needed).")
+    assert with_cause(change, EDITS).endswith("(no single one does).")
+    change = lost(cause=Cause(found=(0, 1), at_least=3))
+    assert with_cause(change, EDITS).endswith("(at least 3 are needed).")
+    change = lost(cause=Cause(found=(0, 1), at_least=1))
+    assert with_cause(change, EDITS).endswith("at least 3.")
+
+
+def test_a_part_has_the_unit_of_its_change() -> None:
+    """A part is told as its change is: money per amount, percentage points; what would print as 0 still has a size."""
+    change = Change(kind="cost", subject="7", old=10.0, new=12.0, sentence="", unit="EUR per t", places=2)
+    assert part_size(change, 1.5) == "+1.50 EUR per t"
+    assert part_size(change, -0.00123) == "−0.001 EUR per t"
+    chance = Change(kind="conformity", subject="7", old=0.9, new=0.95, sentence="", unit="percentage points", places=1)
+    assert part_size(chance, 0.05) == "+5.0 percentage points"
+
+
+def test_edits_of_a_row_that_is_not_named() -> None:
+    """Several edits of a row whose name is hidden are counted."""
+    assert part_words(Part(group="", edits=(0, 1), amount=1.0), EDITS) == "2 edits"
+    assert part_words(Part(group="lots", edits=(0, 1), amount=1.0), EDITS) == "2 edits of lots"
 
 
 def test_edits_that_change_nothing() -> None:
