@@ -48,11 +48,20 @@ def typed_decimals(value: Fraction, text: str) -> int:
     Tells ``1,234`` read as 1234 (none) from ``1,234`` read as 1.234 (three).
     """
     digits = re.sub(r"\D", "", text)
-    if digits:
+    if digits and value:
         for places in range(MOST_PLACES + 1):
             if abs(value) * 10**places == int(digits):
                 return places
     return _decimals_of(text)
+
+
+def as_typed(value: Fraction, typed: str) -> str:
+    """Write ``value`` with the decimals of the text that it was read from: "58,40" is "58.40".
+
+    Where that text shows no decimals of the value ("1e-3", "1/8") it stands exactly.
+    """
+    places = typed_decimals(value, typed)
+    return text(value, places) if (value * 10**places).denominator == 1 else exact(value)
 
 
 def text(value: Fraction | float | int, places: int) -> str:

@@ -204,7 +204,7 @@ def _lots(lookup: Lookup, page: str) -> Section | None:
     if any(lot.cost is not None for lot in lots):
         unit = f"{settings.currency} per {settings.quantity_unit}"
         columns.append(Column(title="Cost", unit=unit, kind="number"))
-        texts.append(aligned(lot.cost.text if lot.cost else "unknown" for lot in lots))
+        texts.append(aligned(numbers.as_typed(lot.cost.value, lot.cost.text) if lot.cost else "unknown" for lot in lots))
     for component in lookup.campaign.components:
         columns.append(Column(title=component.label or component.name, unit=component.unit, kind="number"))
         texts.append(aligned(as_typed(lot.assay.get(component.name)) for lot in lots))
@@ -230,7 +230,9 @@ def _lots(lookup: Lookup, page: str) -> Section | None:
 
 
 def _stock_text(lot: Lot) -> str:
-    return "unlimited" if lot.is_unlimited else lot.stock.text if lot.stock else numbers.UNKNOWN
+    if lot.is_unlimited:
+        return "unlimited"
+    return numbers.as_typed(lot.stock.value, lot.stock.text) if lot.stock else numbers.UNKNOWN
 
 
 def _role(finding: LotFinding | None) -> str:

@@ -104,9 +104,9 @@ def order_of(lookup: Lookup, finding: OrderFinding) -> Order | None:
 
 
 def as_typed(measured: Measured | None) -> str:
-    """A lot's readings as the laboratory typed them; replicates one after another.
+    """A lot's readings with the decimals that the laboratory typed; replicates one after another.
 
-    What was typed in another unit than the component's is shown converted.
+    What was typed in another unit than the component's is shown converted, a decimal comma as a point.
     """
     if measured is None:
         return numbers.UNKNOWN
@@ -116,10 +116,7 @@ def as_typed(measured: Measured | None) -> str:
 def _reading_text(reading: Reading) -> str:
     if not reading.text.strip():
         return "0"
-    places = numbers.typed_decimals(reading.value, reading.text)
-    if places == numbers.decimals([reading.text]):
-        return reading.text.strip()
-    return ("<" if reading.below else "") + numbers.text(reading.value, places)
+    return ("<" if reading.below else "") + numbers.as_typed(reading.value, reading.text)
 
 
 def _places(campaign: Campaign, quantity: str) -> int:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from generator import numbers
-from generator.intake.records import Lot, Measured
+from generator.intake.records import Lot, Measured, Number
 from generator.report import words
 from generator.report.lookup import Lookup, as_typed
 from generator.report.parts import Cell, Column, Fact, Row, Section, Table, text_cell
@@ -14,8 +14,8 @@ def lot_facts(lookup: Lookup, lot: Lot) -> tuple[Fact, ...]:
     """What stands beside the assay: stock, cost, place, dates, remarks."""
     settings = lookup.campaign.settings
     unit = settings.quantity_unit
-    stock = "unlimited" if lot.is_unlimited else words.with_unit(lot.stock.text, unit) if lot.stock else "not checked"
-    cost = f"{lot.cost.text} {settings.currency} per {unit}" if lot.cost else "unknown"
+    stock = "unlimited" if lot.is_unlimited else words.with_unit(_typed(lot.stock), unit) if lot.stock else "not checked"
+    cost = f"{_typed(lot.cost)} {settings.currency} per {unit}" if lot.cost else "unknown"
     found = [
         ("Stock", "" if lookup.hides("stock") else stock),
         ("Cost", "" if lookup.hides("cost") else cost),
@@ -25,13 +25,17 @@ def lot_facts(lookup: Lookup, lot: Lot) -> tuple[Fact, ...]:
         ("Load order", lot.load_order),
         ("Sampled", lot.sampled.isoformat() if lot.sampled else ""),
         ("Available", lot.available.isoformat() if lot.available else ""),
-        ("Moisture", words.with_unit(lot.moisture.text, "%") if lot.moisture else ""),
-        ("LOI", words.with_unit(lot.loi.text, "%") if lot.loi else ""),
-        ("Density", lot.density.text if lot.density else ""),
-        ("Molar mass", lot.molar_mass.text if lot.molar_mass else ""),
+        ("Moisture", words.with_unit(_typed(lot.moisture), "%") if lot.moisture else ""),
+        ("LOI", words.with_unit(_typed(lot.loi), "%") if lot.loi else ""),
+        ("Density", _typed(lot.density) if lot.density else ""),
+        ("Molar mass", _typed(lot.molar_mass) if lot.molar_mass else ""),
         *lot.remarks.items(),
     ]
     return tuple(Fact(name=name, value=value) for name, value in found if value)
+
+
+def _typed(number: Number) -> str:
+    return numbers.as_typed(number.value, number.text)
 
 
 def lot_sentence(lookup: Lookup, lot: Lot) -> str:
@@ -78,7 +82,7 @@ def _assay(lookup: Lookup, lot: Lot) -> Section | None:
 
 
 def _deviations(measured: Measured) -> str:
-    return "; ".join(deviation.text for deviation in measured.sds) or numbers.UNKNOWN
+    return "; ".join(_typed(deviation) for deviation in measured.sds) or numbers.UNKNOWN
 
 
 def _imitation(lookup: Lookup, lot: Lot, page: str) -> Section | None:

@@ -76,6 +76,23 @@ def test_typed_decimals_tells_a_thousand_from_a_decimal() -> None:
     assert numbers.typed_decimals(Fraction("12.5"), "12.50") == 2
 
 
+@pytest.mark.parametrize(
+    ("value", "typed", "expected"),
+    [
+        ("58.4", "58,40", "58.40"),
+        ("24000", "24.000", "24\u202f000"),
+        ("0", "0.00", "0.00"),
+        ("-3.5", "-3,5", "\u22123.5"),
+        ("0.001", "1e-3", "0.001"),
+        ("1/3", "1/3", "1/3"),
+        ("0.075", "750", "0.0750"),
+    ],
+)
+def test_as_typed_keeps_the_decimals_and_not_the_separators(value: str, typed: str, expected: str) -> None:
+    """A stock typed as 24.000 and read as twenty-four thousand never stands on a page as 24.000."""
+    assert numbers.as_typed(Fraction(value), typed) == expected
+
+
 @given(SHARES, st.integers(0, 4))
 def test_percent_shares_sum_to_a_hundred_and_stay_close(parts: list[int], places: int) -> None:
     """Printed shares sum to exactly 100, each within one unit of its last place."""
