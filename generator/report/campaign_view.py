@@ -6,7 +6,7 @@ from collections.abc import Iterable, Mapping, Sequence
 
 from generator import numbers
 from generator.findings.records import HalfPlane, HullFinding, LotFinding, OrderFinding
-from generator.intake.records import Lot
+from generator.intake.records import Lot, Number
 from generator.problems import Problem
 from generator.report import words
 from generator.report.history_view import history_index, revision_address
@@ -204,7 +204,7 @@ def _lots(lookup: Lookup, page: str) -> Section | None:
     if any(lot.cost is not None for lot in lots):
         unit = f"{settings.currency} per {settings.quantity_unit}"
         columns.append(Column(title="Cost", unit=unit, kind="number"))
-        texts.append(aligned(numbers.as_typed(lot.cost.value, lot.cost.text) if lot.cost else "unknown" for lot in lots))
+        texts.append(aligned(_typed(lot.cost, "unknown") for lot in lots))
     for component in lookup.campaign.components:
         columns.append(Column(title=component.label or component.name, unit=component.unit, kind="number"))
         texts.append(aligned(as_typed(lot.assay.get(component.name)) for lot in lots))
@@ -230,9 +230,11 @@ def _lots(lookup: Lookup, page: str) -> Section | None:
 
 
 def _stock_text(lot: Lot) -> str:
-    if lot.is_unlimited:
-        return "unlimited"
-    return numbers.as_typed(lot.stock.value, lot.stock.text) if lot.stock else numbers.UNKNOWN
+    return "unlimited" if lot.is_unlimited else _typed(lot.stock, numbers.UNKNOWN)
+
+
+def _typed(number: Number | None, otherwise: str) -> str:
+    return numbers.as_typed(number.value, number.text) if number else otherwise
 
 
 def _role(finding: LotFinding | None) -> str:

@@ -14,7 +14,9 @@ def lot_facts(lookup: Lookup, lot: Lot) -> tuple[Fact, ...]:
     """What stands beside the assay: stock, cost, place, dates, remarks."""
     settings = lookup.campaign.settings
     unit = settings.quantity_unit
-    stock = "unlimited" if lot.is_unlimited else words.with_unit(_typed(lot.stock), unit) if lot.stock else "not checked"
+    stock = (
+        "unlimited" if lot.is_unlimited else words.with_unit(_typed(lot.stock), unit) if lot.stock else "not checked"
+    )
     cost = f"{_typed(lot.cost)} {settings.currency} per {unit}" if lot.cost else "unknown"
     found = [
         ("Stock", "" if lookup.hides("stock") else stock),

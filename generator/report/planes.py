@@ -9,7 +9,7 @@ from dataclasses import dataclass, field, replace
 from generator import numbers
 from generator.findings.records import BlockingProof, HullFinding, LimitFinding, OrderFinding, Recipe
 from generator.report import words
-from generator.report.figures.canvas import finished
+from generator.report.figures.canvas import finished, fitted
 from generator.report.figures.frame import Axis, padded
 from generator.report.figures.hull import (
     Base,
@@ -18,6 +18,7 @@ from generator.report.figures.hull import (
     Separation,
     clipped,
     draw_base,
+    lot_names,
     overlay_markup,
     touch,
 )
@@ -29,6 +30,8 @@ Bounds = tuple[float | None, float | None]
 
 #: More names than this at one point are counted instead.
 _MOST_JOINED = 3
+#: A longer name is cut in a figure, in SVG units: it would cover too much.
+_LONGEST_NAME = 130.0
 #: How many spans of the lots' values a window may lie outside before the view leaves it out.
 _FARTHEST = 2.0
 
@@ -218,11 +221,12 @@ class Planes:
         asks = _has_window(overlay)
         overlay = _in_view(overlay, x_axis, y_axis)
         caption = _caption(overlay, order, is_outside=asks and not _has_window(overlay))
-        if base.unlabelled:
-            unnamed = words.plural(base.unlabelled, "point")
-            caption += f" For want of room {unnamed} stand without a name; the table of lots has all."
+        named, unlabelled = lot_names(base, overlay)
+        if unlabelled:
+            stand = "point stands" if unlabelled == 1 else "points stand"
+            caption += f" For want of room {unlabelled} {stand} without a name; the table of lots has all."
         description = f"{caption} {_description(points, across, up, overlay)}"
-        above = overlay_markup(base.frame, overlay) + base.labels
+        above = overlay_markup(base.frame, overlay) + named
         above += "".join(touch(base.frame, item.x, item.y, [lot_key(name) for name in item.lots]) for item in points)
         svg = finished(base.text, f"fig-{key}", title, description, above)
         return FigureView(anchor=key, title=title, svg=svg, caption=caption, legend=_legend(overlay, points))
@@ -270,9 +274,10 @@ def _blocking_names(finding: OrderFinding, hull: HullFinding) -> list[str]:
 
 
 def _joined(names: Sequence[str]) -> str:
-    if len(names) <= _MOST_JOINED:
-        return ", ".join(names)
-    return f"{', '.join(names[: _MOST_JOINED - 1])} +{len(names) - _MOST_JOINED + 1}"
+    shown = [fitted(name, _LONGEST_NAME) for name in names]
+    if len(shown) <= _MOST_JOINED:
+        return ", ".join(shown)
+    return f"{', '.join(shown[: _MOST_JOINED - 1])} +{len(shown) - _MOST_JOINED + 1}"
 
 
 def _has_window(overlay: Overlay) -> bool:

@@ -14,7 +14,16 @@ from hypothesis import strategies as st
 from generator.report.figures import canvas, curve, strips, ternary
 from generator.report.figures.canvas import SMALL_SIZE, width_of
 from generator.report.figures.frame import Axis, padded
-from generator.report.figures.hull import LotPoint, Overlay, Separation, clipped, draw_base, overlay_markup, shadow
+from generator.report.figures.hull import (
+    LotPoint,
+    Overlay,
+    Separation,
+    clipped,
+    draw_base,
+    lot_names,
+    overlay_markup,
+    shadow,
+)
 from generator.report.figures.labels import place
 
 FLOATS = st.floats(-1e6, 1e6, allow_nan=False).map(lambda value: round(value, 3))
@@ -26,7 +35,8 @@ def drawn(points: list[LotPoint]) -> tuple[str, Axis, Axis]:
     y_axis = Axis(label="K", unit="%", ends=padded([point.y for point in points]))
     base = draw_base(points, x_axis, y_axis)
     overlay = Overlay(x_window=(1.0, None), y_window=(None, 2.0), blend=(1.0, 1.0))
-    text = canvas.finished(base.text, "key", "T <", "D &", overlay_markup(base.frame, overlay) + base.labels)
+    above = overlay_markup(base.frame, overlay) + lot_names(base, overlay)[0]
+    text = canvas.finished(base.text, "key", "T <", "D &", above)
     return text, x_axis, y_axis
 
 
@@ -109,6 +119,38 @@ def test_labels_never_overlap(places: list[tuple[int, int]]) -> None:
             assert box[2] <= other[0] or other[2] <= box[0] or box[3] <= other[1] or other[3] <= box[1]
         for x, y in points:
             assert not (box[0] < x < box[2] and box[1] < y < box[3])
+
+
+def test_labels_shun_lines_where_they_can() -> None:
+    """A name stands off the hull's edge through its own point, and across it where nothing else is free."""
+    corner, far = (100.0, 100.0), (400.0, 400.0)
+    frame = (0.0, 0.0, 420.0, 420.0)
+    placed, _ = place([corner], ["LOT-1"], frame, lines=[(corner, far)])
+    assert placed[0].x + canvas.width_of("LOT-1") < corner[0]
+    placed, left_over = place([corner], ["LOT-1"], frame, lines=[((0.0, y), (420.0, y)) for y in range(0, 420, 5)])
+    assert (len(placed), left_over) == (1, 0)
+
+
+def test_no_name_covers_the_blend_of_the_order() -> None:
+    """The diamond of a recipe beside a lot stays in sight."""
+    points = [LotPoint(name="SWEEP-26A", x=10.0, y=10.0, is_corner=False)]
+    axis = Axis(label="N", unit="%", ends=(0.0, 20.0))
+    base = draw_base(points, axis, axis)
+    blend = (11.0, 10.5)
+    text, left_over = lot_names(base, Overlay(blend=blend))
+    left, middle = (float(re.findall(rf' {name}="([^"]+)"', text)[0]) for name in "xy")
+    x, y = base.frame.x(blend[0]), base.frame.y(blend[1])
+    assert left_over == 0
+    assert left > x + 6 or left + canvas.width_of("SWEEP-26A") < x - 6 or abs(middle - 4 - y) > 12
+
+
+def test_long_names_are_cut_to_their_room() -> None:
+    """Text that is too long for its place ends in an ellipsis; wide characters count as such."""
+    assert canvas.fitted("K₂O, %", 200) == "K₂O, %"
+    cut = canvas.fitted("a name that goes on and on " * 4, 120)
+    assert cut.endswith("…")
+    assert canvas.width_of(cut) <= 120
+    assert canvas.width_of("鉄鉱石") > 1.5 * canvas.width_of("abc")
 
 
 @given(st.lists(st.tuples(st.none() | st.floats(0, 1), st.none() | st.floats(0, 1)), min_size=3, max_size=3))

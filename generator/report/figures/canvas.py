@@ -9,6 +9,7 @@ from __future__ import annotations
 import io
 import re
 from html import escape
+from unicodedata import east_asian_width
 
 import matplotlib as mpl
 from matplotlib.backends.backend_svg import FigureCanvasSVG
@@ -39,10 +40,16 @@ _VARIABLES = {
     PAPER: "--paper",
 }
 
+#: How wide every figure is, in SVG units: narrow enough that its text can be read on a telephone.
+WIDTH = 420.0
 #: Size of text in figures, in SVG units, and the share of it that an average character is wide.
 TEXT_SIZE = 12.0
 SMALL_SIZE = 11.0
 CHARACTER_WIDTH = 0.58
+#: Characters of East Asian scripts are as wide as the text is high.
+_WIDE = 1.75
+#: Bold text is wider by this factor.
+BOLD = 1.12
 
 # The defaults are set once, here: a context around each drawing would not be safe between threads,
 # and a reader's own matplotlibrc must not change the bytes of a page.
@@ -123,4 +130,14 @@ def _prefixed(tag: str, key: str) -> str:
 
 def width_of(text: str, size: float = SMALL_SIZE) -> float:
     """About how wide ``text`` is drawn, in SVG units; rather too much than too little."""
-    return len(text) * size * CHARACTER_WIDTH
+    return sum(_WIDE if east_asian_width(character) in "WF" else 1.0 for character in text) * size * CHARACTER_WIDTH
+
+
+def fitted(text: str, room: float, size: float = SMALL_SIZE) -> str:
+    """``text``, cut with an ellipsis where it would be wider than ``room`` SVG units."""
+    if width_of(text, size) <= room:
+        return text
+    kept = text
+    while kept and width_of(kept + "…", size) > room:
+        kept = kept[:-1]
+    return kept.rstrip() + "…"

@@ -11,7 +11,7 @@ from matplotlib.ticker import MaxNLocator
 from generator import numbers
 from generator.report.figures import canvas
 
-WIDTH, HEIGHT = 480.0, 400.0
+WIDTH, HEIGHT = canvas.WIDTH, 352.0
 _TOP, _RIGHT, _BOTTOM = 26.0, 14.0, 42.0
 #: Share of the span of the values that stays free on each side.
 _PADDING = 0.12
@@ -93,8 +93,9 @@ def framed(x_axis: Axis, y_axis: Axis) -> Frame:
     for spine in axes.spines.values():
         spine.set_color(canvas.LINE)
     size = canvas.TEXT_SIZE
-    figure.text(0.004, 1 - 14 / HEIGHT, y_axis.title, color=canvas.INK, size=size, weight="bold")
-    figure.text(1 - _RIGHT / WIDTH, 6 / HEIGHT, x_axis.title, color=canvas.INK, size=size, weight="bold", ha="right")
+    x_title, y_title = (canvas.fitted(axis.title, WIDTH / canvas.BOLD - 20, size) for axis in (x_axis, y_axis))
+    figure.text(0.004, 1 - 14 / HEIGHT, y_title, color=canvas.INK, size=size, weight="bold")
+    figure.text(1 - _RIGHT / WIDTH, 6 / HEIGHT, x_title, color=canvas.INK, size=size, weight="bold", ha="right")
     return Frame(figure, axes, x_axis, y_axis, left)
 
 

@@ -14,6 +14,9 @@ from generator.report.figures.frame import Axis, Frame, framed
 Pair = tuple[float, float]
 Bounds = tuple[float | None, float | None]
 
+#: From the middle of a blend's diamond to its corners, in SVG units.
+_DIAMOND = 7.0
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class LotPoint:
@@ -48,14 +51,11 @@ class Overlay:
 
 @dataclass(frozen=True, slots=True)
 class Base:
-    """A drawn plane with its lots, to lay overlays on; ``unlabelled`` lots found no room for a name.
-
-    ``labels`` are SVG to draw last, above any overlay."""
+    """A drawn plane with its lots, to lay overlays and names on."""
 
     text: str
     frame: Frame
-    labels: str
-    unlabelled: int
+    points: tuple[LotPoint, ...]
 
 
 def draw_base(points: Sequence[LotPoint], x_axis: Axis, y_axis: Axis) -> Base:
@@ -79,17 +79,51 @@ def draw_base(points: Sequence[LotPoint], x_axis: Axis, y_axis: Axis) -> Base:
             markeredgewidth=1.5,
             zorder=3,
         )
-    return Base(canvas.markup(frame.figure), frame, *_labels(frame, points))
+    return Base(canvas.markup(frame.figure), frame, tuple(points))
 
 
-def _labels(frame: Frame, points: Sequence[LotPoint]) -> tuple[str, int]:
-    """Names beside points as SVG, the outline's first, then corners; and how many found no room."""
+def lot_names(base: Base, overlay: Overlay) -> tuple[str, int]:
+    """Names beside the lots as SVG to draw last, the outline's first, then corners; and how many found no room.
+
+    No name covers the order's blend, and where there is a choice none crosses the hull's edge, the window or
+    the separating line.
+    """
+    frame, points = base.frame, base.points
     left, top, right, bottom = frame.box
-    outline = set(shadow([(point.x, point.y) for point in points]))
+
+    def at(place: Pair) -> Pair:
+        return frame.x(place[0]), bottom - frame.y(place[1])
+
+    outline = shadow([(point.x, point.y) for point in points])
     first = sorted(points, key=lambda point: ((point.x, point.y) not in outline, not point.is_corner))
-    at = [(frame.x(point.x), bottom - frame.y(point.y)) for point in first]
-    placed, left_over = labels.place(at, [point.name for point in first], (left, 0, right, bottom - top))
+    marks = [at(place) for place in (overlay.blend, overlay.nearest) if place is not None]
+    placed, left_over = labels.place(
+        [at((point.x, point.y)) for point in first],
+        [point.name for point in first],
+        (left, 0, right, bottom - top),
+        obstacles=[(x - _DIAMOND, y - _DIAMOND, x + _DIAMOND, y + _DIAMOND) for x, y in marks],
+        lines=[(at(a), at(b)) for a, b in [*_edges(outline), *_overlay_lines(frame, overlay)]],
+    )
     return labels.markup(placed, bottom), left_over
+
+
+def _edges(outline: Sequence[Pair]) -> list[tuple[Pair, Pair]]:
+    return list(zip(outline, [*outline[1:], *outline[:1]], strict=True)) if len(outline) > 1 else []
+
+
+def _overlay_lines(frame: Frame, overlay: Overlay) -> list[tuple[Pair, Pair]]:
+    """The sides of the window and the separating line, in values."""
+    x0, x1 = _within(overlay.x_window, frame.x_axis.ends)
+    y0, y1 = _within(overlay.y_window, frame.y_axis.ends)
+    found = [((x, y0), (x, y1)) for x in overlay.x_window if x is not None]
+    found += [((x0, y), (x1, y)) for y in overlay.y_window if y is not None]
+    line = clipped(overlay.separation, frame.x_axis.ends, frame.y_axis.ends) if overlay.separation else None
+    return [*found, line] if line else found
+
+
+def _within(bounds: Bounds, ends: Pair) -> Pair:
+    low, high = bounds
+    return ends[0] if low is None else low, ends[1] if high is None else high
 
 
 def touch(frame: Frame, x: float, y: float, keys: Sequence[str]) -> str:

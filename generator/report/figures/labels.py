@@ -1,15 +1,16 @@
-"""Labels beside points, placed so that none covers another label, a point or the frame."""
+"""Labels beside points, placed so that none covers another label, a point or the frame, and few cross a line."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from html import escape
 
 from generator.report.figures.canvas import SMALL_SIZE, width_of
 
 Box = tuple[float, float, float, float]
+Segment = tuple[tuple[float, float], tuple[float, float]]
 
 #: Where a label may stand around its point: (horizontal, vertical) side, best first.
 _SIDES = ((1, 1), (-1, 1), (1, -1), (-1, -1), (1, 0), (-1, 0), (0, 1), (0, -1))
@@ -36,14 +37,15 @@ def place(
     texts: Sequence[str],
     frame: Box,
     obstacles: Sequence[Box] = (),
+    lines: Sequence[Segment] = (),
     most: int = 25,
 ) -> tuple[list[Placed], int]:
     """Labels for ``points`` (SVG units, y upwards), and how many found no room.
 
     Greedy, in the order given, at most ``most``: a label that would overlap a point, an obstacle, an
     earlier label or leave the frame, or would stand as near to another point as to its own, tries the next
-    place, and is left out when there is none.
-    Boxes are (left, bottom, right, top).
+    place, and is left out when there is none.  Of the free places the first that crosses none of ``lines`` is
+    taken, else the first.  Boxes are (left, bottom, right, top).
     """
     taken: list[Box] = [(x - _MARK, y - _MARK, x + _MARK, y + _MARK) for x, y in points]
     taken.extend(obstacles)
@@ -51,10 +53,8 @@ def place(
     for (x, y), text in zip(points, texts, strict=True):
         if len(placed) == most:
             break
-        box = next(
-            (box for box in _candidates(x, y, text) if _is_free(box, taken, frame) and _is_own(box, (x, y), points)),
-            None,
-        )
+        free = (box for box in _candidates(x, y, text) if _is_free(box, taken, frame) and _is_own(box, (x, y), points))
+        box = _clearest(free, lines)
         if box is not None:
             taken.append(box)
             placed.append(Placed(text, box[0], (box[1] + box[3]) / 2))
@@ -79,6 +79,31 @@ def _candidates(x: float, y: float, text: str) -> list[Box]:
             bottom = y + up * gap + (-high / 2 + up * high / 2 if across == 0 or up == 0 else up * high / 2 - high / 2)
             boxes.append((left, bottom, left + wide, bottom + high))
     return boxes
+
+
+def _clearest(boxes: Iterable[Box], lines: Sequence[Segment]) -> Box | None:
+    """Find the first box that no line crosses, else the first, else none."""
+    first = None
+    for box in boxes:
+        if not any(_is_crossed(box, line) for line in lines):
+            return box
+        first = first or box
+    return first
+
+
+def _is_crossed(box: Box, line: Segment) -> bool:
+    """Whether a segment has a point in a box: its part within each pair of sides (Liang and Barsky 1984)."""
+    (x0, y0), (x1, y1) = line
+    left, bottom, right, top = box
+    enters, leaves = 0.0, 1.0
+    for start, step, low, high in ((x0, x1 - x0, left, right), (y0, y1 - y0, bottom, top)):
+        if step == 0:
+            if not low < start < high:
+                return False
+            continue
+        ends = sorted(((low - start) / step, (high - start) / step))
+        enters, leaves = max(enters, ends[0]), min(leaves, ends[1])
+    return enters < leaves
 
 
 def _is_own(box: Box, point: tuple[float, float], points: Sequence[tuple[float, float]]) -> bool:

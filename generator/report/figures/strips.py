@@ -16,7 +16,7 @@ from generator import numbers
 from generator.report import words
 from generator.report.figures import canvas
 
-WIDTH = 480.0
+WIDTH = canvas.WIDTH
 _ROW = 76.0
 _SIDE = 8.0
 #: A range without an end, or a one-sided window, is drawn to the edge of the strip, this much beyond the rest.
@@ -73,10 +73,12 @@ def _draw_one(figure: Figure, strip: Strip, top: float) -> None:
     scale = _scale(strip)
     track = top - 50
     title = f"{strip.label}, {strip.unit}" if strip.unit else strip.label
-    _text(figure, _SIDE, top - 15, title, canvas.INK, weight="bold")
-    if strip.value is not None:
+    value = f"blend {strip.value_text}" if strip.value is not None else ""
+    room = (WIDTH - 4 * _SIDE) / canvas.BOLD - canvas.width_of(value)
+    _text(figure, 0, top - 15, canvas.fitted(title, room), canvas.INK, weight="bold")
+    if value:
         tone = canvas.BLEND if strip.holds else canvas.BAD
-        _text(figure, WIDTH - _SIDE, top - 15, f"blend {strip.value_text}", tone, side="right", weight="bold")
+        _text(figure, WIDTH, top - 15, value, tone, side="right", weight="bold")
     _window(figure, strip, scale, track)
     if strip.lots is not None:
         low, high = _ends(strip.lots, scale)

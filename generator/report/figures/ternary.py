@@ -12,8 +12,8 @@ from matplotlib.transforms import IdentityTransform
 from generator.report.figures import canvas, labels
 from generator.report.figures.hull import Bounds, Pair, shadow
 
-WIDTH, HEIGHT = 480.0, 440.0
-_SIDE = 420.0
+WIDTH, HEIGHT = canvas.WIDTH, 386.0
+_SIDE = 360.0
 _LEFT, _FOOT = (WIDTH - _SIDE) / 2, 40.0
 _TALL = _SIDE * 3**0.5 / 2
 _STEPS = 5

@@ -13,7 +13,7 @@ from math import floor, log10
 from generator import numbers
 from generator.report.figures.hull import shadow
 
-WIDTH, HEIGHT = 480.0, 240.0
+WIDTH, HEIGHT = 420.0, 224.0
 _TOP, _BOTTOM, _RIGHT = 26.0, 26.0, 14.0
 _SIZE = 11.0
 _CHARACTER = 6.4
@@ -103,7 +103,7 @@ def hulls(old: Mapping[str, Pair], new: Mapping[str, Pair], across: str, up: str
     ``old`` and ``new`` map lots to (across, up).
     """
     places = [*old.values(), *new.values()]
-    height = 400.0
+    height = 352.0
     x_ends, y_ends = padded([x for x, _ in places], 0.12), padded([y for _, y in places], 0.12)
     frame, parts = _plane(x_ends, y_ends, across, up, height)
     parts.append(_polygon(frame, shadow(list(new.values())), 'fill="var(--hull)" stroke="var(--lot)"'))
