@@ -7,6 +7,7 @@ them, so that ``--help`` and ``--version`` answer at once.
 from __future__ import annotations
 
 import argparse
+import contextlib
 import os
 import sys
 from collections.abc import Sequence
@@ -40,9 +41,10 @@ class Lines:
             self.warn(line)
 
     def warn(self, line: str) -> None:
-        """Print a line; what the terminal can't show is escaped."""
+        """Print a line; what the terminal can't show is escaped, and one that is gone or full ends nothing."""
         encoding = sys.stderr.encoding or "utf-8"
-        print(line.encode(encoding, "backslashreplace").decode(encoding), file=sys.stderr, flush=True)
+        with contextlib.suppress(OSError):
+            print(line.encode(encoding, "backslashreplace").decode(encoding), file=sys.stderr, flush=True)
 
 
 def main(arguments: Sequence[str] | None = None) -> int:

@@ -102,6 +102,17 @@ def read_inputs(folder: Folder, *, is_just_found: bool = False) -> Inputs:
     )
 
 
+def is_gone(folder: Folder) -> bool:
+    """Whether a campaign's folder is not there any more; one that can't be asked is."""
+    try:
+        folder.path.stat()
+    except (FileNotFoundError, NotADirectoryError):
+        return True
+    except OSError:
+        return False
+    return False
+
+
 def scan(root: Path) -> dict[Path, tuple[tuple[str, Stamp], ...]]:
     """Stamp every input file below ``root``, by campaign folder; a site.toml under its own path.
 

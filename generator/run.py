@@ -8,11 +8,12 @@ import hashlib
 import time
 from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import asdict
+from datetime import datetime
 from pathlib import Path
 
 from generator import identity
 from generator.disk import canonical_json, digest_of
-from generator.folders import Folder, Inputs, read_inputs, site_theme
+from generator.folders import Folder, Inputs, is_gone, read_inputs, site_theme
 from generator.history.archive import can_record, head_key
 from generator.job import Job, Log, Outcome, history_of
 from generator.problems import Problem, failing
@@ -80,9 +81,12 @@ class Run:
     def _tasks(self, due: Iterable[Folder]) -> Iterator[Task]:
         """Read what is due, each campaign when its turn comes: all together may be more than memory holds."""
         for folder in due:
+            inputs = read_inputs(folder)
+            if is_gone(folder):
+                continue  # gone since it was found, or its disk is: what is published stays until the next build
             yield Task(
                 folder=folder,
-                inputs=read_inputs(folder),
+                inputs=inputs,
                 history=history_of(folder, self._job.history),
                 theme=self._job.theme,
                 moment=self._job.moment,
@@ -103,7 +107,7 @@ class Run:
         slug = task.folder.slug
         problems = chapter.entry.problems
         if chapter.incident is not None:
-            self._log_incident(slug, chapter.incident)
+            log_incident(self._job.output, self._job.moment, slug, chapter.incident)
         if (chapter.files is None or chapter.is_makeshift) and self._keep(task.folder):
             # Not even a page of problems could be drawn, or the theme is broken: what is published stays.
             self._entries[slug], step = asdict(chapter.entry), Written()
@@ -230,14 +234,15 @@ class Run:
         for problem in (*failing(entry.problems), *unrecorded, *step.problems):
             self._log.warn(f"{entry.slug}: {problem.sentence()}")
 
-    def _log_incident(self, slug: str, incident: Incident) -> None:
-        """Keep the traceback where the maker of the program can ask for it."""
-        path = self._job.output / ERROR_LOG_NAME
-        with contextlib.suppress(OSError):
-            path.parent.mkdir(parents=True, exist_ok=True)
-            mode = "a" if path.exists() and path.stat().st_size < _LONGEST_LOG else "w"
-            with path.open(mode, encoding="utf-8", errors="backslashreplace") as stream:
-                stream.write(f"{self._job.moment.isoformat()} {slug} {incident.reference}\n{incident.trace}\n")
+
+def log_incident(output: Path, moment: datetime, where: str, incident: Incident) -> None:
+    """Keep the traceback of an unexpected error where the maker of the program can ask for it."""
+    path = output / ERROR_LOG_NAME
+    with contextlib.suppress(OSError):
+        path.parent.mkdir(parents=True, exist_ok=True)
+        mode = "a" if path.exists() and path.stat().st_size < _LONGEST_LOG else "w"
+        with path.open(mode, encoding="utf-8", errors="backslashreplace") as stream:
+            stream.write(f"{moment.isoformat()} {where} {incident.reference}\n{incident.trace}\n")
 
 
 class Progress:

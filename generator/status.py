@@ -61,8 +61,8 @@ def read_status(output: Path) -> Mapping[str, object]:
 
 def _write(output: Path, content: Mapping[str, object]) -> None:
     path = output / STATUS_NAME
-    if path.exists() and not read_status(output):
-        return  # somebody else's file of that name
+    if not output.is_dir() or (path.exists() and not read_status(output)):
+        return  # the folder is away, or it is somebody else's file of that name
     whole = {"format": FORMAT, "program": __version__, **content}
     data = json.dumps(whole, indent=1, ensure_ascii=False).encode("utf-8", "surrogatepass") + b"\n"
     try:

@@ -9,36 +9,32 @@ from __future__ import annotations
 
 import contextlib
 import logging
-import os
 import signal
-import sys
 import threading
 import time
-import warnings
+import traceback
 from collections.abc import Callable, Iterator
 from dataclasses import replace
 from datetime import datetime
 from pathlib import Path
 from types import FrameType
-from typing import TYPE_CHECKING, Literal
 
 from generator import disk, folders
 from generator.book import build, writer_lock
 from generator.disk import WriteError
 from generator.folders import NoCampaignsError, is_site
+from generator.hints import Hints, Place, Poll, WakeOnWarning, place_of, wants_events
 from generator.intake.campaign import input_name, is_whole
 from generator.job import Job, Log
 from generator.lock import OwnerLock
+from generator.problems import HullbookError
 from generator.report.manifest import MANIFEST_NAME
 from generator.report.theme_folders import PLAIN, theme_folder, theme_stamps
+from generator.run import log_incident
 from generator.settling import Scan, Settling
 from generator.status import write_trouble
+from generator.tasks import Incident
 from generator.workers import Crew, Here, Makers
-
-if TYPE_CHECKING:
-    from watchdog.observers.api import BaseObserver
-
-Poll = Literal["auto", "always", "never"]
 
 #: Scans without any event: the first catches lost events soon, the second is all there is.
 RESCAN_EVERY = 10.0
@@ -53,93 +49,6 @@ RETRY_PAUSES = (2.0, 4.0, 8.0, 16.0, 32.0, 60.0)
 _LEAST_PAUSE = 0.05
 #: So soon the end is noticed when it was asked for without waking the loop.
 _LONGEST_WAIT = 0.25
-
-_NETWORK_TYPES = ("nfs", "cifs", "smb", "fuse.sshfs", "9p", "afs", "ncpfs", "fuse.rclone", "davfs", "fuse.davfs")
-_IDLE_EVENTS = frozenset({"opened", "closed_no_write"})
-
-
-class Hints:
-    """An observer that wakes the loop, restarted when it dies; without one the loop polls."""
-
-    def __init__(self, root: Path, wake: threading.Event) -> None:
-        self._root = os.path.realpath(root)  # an observer gets no events through a link
-        self._wake = wake
-        self._observer: BaseObserver | None = None
-        self._themes: frozenset[Path] = frozenset()
-
-    def follow(self, themes: frozenset[Path]) -> None:
-        """Observe these folders of themes as well, from now on."""
-        if themes != self._themes:
-            self._themes = themes
-            self.stop()
-            self._wake.set()  # the loop starts it anew
-
-    def ensure(self) -> bool:
-        """Start observing if that is not going on; False where the system refuses."""
-        observer = self._observer
-        if observer is not None and observer.is_alive() and all(emitter.is_alive() for emitter in observer.emitters):
-            return True
-        self.stop()
-        from watchdog.events import FileSystemEvent, FileSystemEventHandler
-        from watchdog.observers import Observer
-
-        # It warns, at length, of folders that come with folders inside, as a revision does.
-        warnings.filterwarnings("ignore", category=RuntimeWarning, module=r"watchdog\.")
-        wake = self._wake
-
-        class Handler(FileSystemEventHandler):
-            """Set the event and return: an error or a delay here would lose events."""
-
-            def __init__(self, root: str) -> None:
-                self._root = root
-
-            def on_any_event(self, event: FileSystemEvent) -> None:
-                """Wake the loop, but not for what no campaign is made of, nor for a file that was only read."""
-                paths = (os.fsdecode(path) for path in (event.src_path, event.dest_path) if path)
-                if event.event_type not in _IDLE_EVENTS and any(
-                    is_telling(self._root, path, event.event_type, is_folder=event.is_directory) for path in paths
-                ):
-                    wake.set()
-
-        class ThemeHandler(FileSystemEventHandler):
-            """The same for the folder of a theme, where everything counts."""
-
-            def on_any_event(self, event: FileSystemEvent) -> None:
-                """Wake the loop, but not for a file that was only read."""
-                if event.event_type not in _IDLE_EVENTS:
-                    wake.set()
-
-        observer = Observer()
-        try:
-            observer.schedule(Handler(self._root), self._root, recursive=True)
-            observer.start()
-        except OSError:
-            return False
-        for folder in self._themes:
-            with contextlib.suppress(OSError):  # a scan finds its edits, only later
-                observer.schedule(ThemeHandler(), os.path.realpath(folder), recursive=True)
-        self._observer = observer
-        self._wake.set()  # what happened before the start gave no event
-        return True
-
-    def stop(self) -> None:
-        """End the observer's threads."""
-        observer, self._observer = self._observer, None
-        if observer is not None and observer.is_alive():
-            observer.stop()
-            observer.join(5)
-
-
-class _WakeOnWarning(logging.Handler):
-    """The observer tells of lost events in its log only."""
-
-    def __init__(self, wake: threading.Event) -> None:
-        super().__init__(logging.WARNING)
-        self._wake = wake
-
-    def emit(self, record: logging.LogRecord) -> None:  # noqa: ARG002 - what is said does not matter
-        """Wake the loop: a scan finds what was lost."""
-        self._wake.set()
 
 
 def watch(
@@ -157,7 +66,7 @@ def watch(
     """
     wake = threading.Event()
     ending = stop or threading.Event()
-    listener = _WakeOnWarning(wake)
+    listener = WakeOnWarning(wake)
     with writer_lock(job.output) as lock, _signals(ending, wake) if stop is None else contextlib.nullcontext():
         logging.getLogger("watchdog").addHandler(listener)
         try:
@@ -202,6 +111,7 @@ class _Watcher:
         self._hints = Hints(job.campaigns, wake)
         self._is_gone = False
         self._device: int | None = None
+        self._output: Place | None = None
         self._scan_seconds = 0.0
         self._full_look_at = time.monotonic() + FULL_LOOK_EVERY
         self._retry_at: float | None = None
@@ -217,11 +127,16 @@ class _Watcher:
         self._log.say(f"watching {self._job.campaigns} by {how}, pages go to {self._job.output}; Ctrl-C ends it")
         try:
             while not self._ending.is_set():
-                if has_events and not self._is_gone and not self._hints.ensure():
+                if has_events and not self._is_gone and not self._hints.ensure() and self._job.campaigns.is_dir():
                     has_events = False
                     self._log.warn("the system gives no events for this folder: polling instead")
                 self._lock.beat()
-                self._round()
+                try:
+                    self._round()
+                except HullbookError:
+                    raise
+                except Exception as error:  # noqa: BLE001 - nobody is there to start it again: it has to go on
+                    self._go_on_after(error)
                 self._rest(self._timeout(has_events))
         finally:
             self._hints.stop()
@@ -310,14 +225,25 @@ class _Watcher:
     def _is_full_look_due(self) -> bool:
         now = time.monotonic()
         is_retry = self._retry_at is not None and now >= self._retry_at
-        is_lost = self._is_published and not (self._job.output / MANIFEST_NAME).exists()
+        is_lost = self._is_published and (not self._has_manifest() or place_of(self._job.output) != self._output)
         return is_retry or is_lost or now >= self._full_look_at
+
+    def _has_manifest(self) -> bool:
+        return (self._job.output / MANIFEST_NAME).exists()
+
+    def _check_output(self) -> None:
+        """WriteError where the disk with the pages was taken away: they don't belong into what shows in its place."""
+        output = self._job.output.absolute()
+        place = next((place for path in (output, *output.parents) if (place := place_of(path))), None)
+        if self._output and place and place[0] != self._output[0] and not self._has_manifest():
+            raise WriteError(f"{self._job.output} is not there (its disk is not mounted)")
 
     def _build(self, scan: Scan, chosen: frozenset[Path], *, everything: bool, thorough: bool = False) -> None:
         """Build, and remember what is built and what has to be tried again."""
         moment = self._clock()
         without = self._settling.waiting - chosen
         try:
+            self._check_output()
             outcome = build(
                 replace(self._job, moment=moment),
                 self._lock,
@@ -338,6 +264,7 @@ class _Watcher:
             return
         self._settling.built({*chosen, *(scan if everything else ())} - without, scan)
         self._is_published, self._is_first = True, False
+        self._output = place_of(self._job.output)
         self._follow(outcome.themes)
         if everything:
             self._full_look_at = time.monotonic() + FULL_LOOK_EVERY
@@ -355,6 +282,14 @@ class _Watcher:
         self._themes = themes
         self._hints.follow(themes)
 
+    def _go_on_after(self, error: Exception) -> None:
+        """A defect, or a system that has nothing left to give: tell it, keep its traceback, and try again later."""
+        incident = Incident(reference=type(error).__name__, trace="".join(traceback.format_exception(error)))
+        trouble = f"internal error {incident.reference}: {error}"
+        log_incident(self._job.output, self._clock(), "watch", incident)
+        self._blocked_until = self._fail(f"{trouble}; the pages stay as they were")
+        write_trouble(self._job.output, self._clock(), trouble)
+
     def _fail(self, what: str) -> float:
         """Tell of a failure, and return when to try again."""
         pause = RETRY_PAUSES[min(self._failures, len(RETRY_PAUSES) - 1)]
@@ -362,42 +297,6 @@ class _Watcher:
         self._retry_at = time.monotonic() + pause
         self._log.warn(f"{what}; trying again in {pause:.0f} s")
         return self._retry_at
-
-
-def is_telling(root: str, path: str, kind: str, *, is_folder: bool) -> bool:
-    """Whether an event below the observed folder may have changed a campaign; its own history never does."""
-    inner = Path(os.path.relpath(path, root)).parts
-    if is_folder:
-        return not inner or (len(inner) == 1 and kind != "modified")
-    return len(inner) <= 2 and input_name(inner[-1]) is not None
-
-
-def wants_events(root: Path, poll: Poll) -> bool:
-    """Whether to wait for events: ``auto`` polls on network folders, which give none for others' edits."""
-    if poll != "auto":
-        return poll == "never"
-    real = os.path.realpath(root)
-    if sys.platform == "win32":
-        return not real.startswith("\\\\")
-    try:
-        mounts = Path("/proc/mounts").read_text(encoding="utf-8", errors="replace")
-    except OSError:
-        return True
-    return not mount_type(real, mounts).startswith(_NETWORK_TYPES)
-
-
-def mount_type(path: str, mounts: str) -> str:
-    """Find the file system type of an absolute path in the text of ``/proc/mounts``; "" if unknown."""
-    found, longest = "", -1
-    for line in mounts.splitlines():
-        fields = line.split(" ")
-        if len(fields) < 3:
-            continue
-        point = fields[1].replace("\\040", " ")
-        is_above = path == point or path.startswith(point.rstrip("/") + "/")
-        if is_above and len(point) >= longest:
-            found, longest = fields[2], len(point)
-    return found
 
 
 @contextlib.contextmanager

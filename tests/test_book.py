@@ -4,7 +4,7 @@ import os
 import re
 import shutil
 import socket
-from collections.abc import Iterator
+from collections.abc import Iterable, Iterator
 from dataclasses import replace
 from datetime import timedelta
 from pathlib import Path
@@ -20,6 +20,8 @@ from generator.history.archive import read_history
 from generator.history.check import check_history
 from generator.job import WrongUseError
 from generator.report.manifest import MANIFEST_NAME
+from generator.tasks import Chapter, Task
+from generator.workers import Here, Tick
 from tests.sample import ASSAYS, TARGETS, Told, light_pages, make_job, pages_of, put_campaign, run, text_of
 
 
@@ -433,6 +435,29 @@ def test_only_named_folders_are_read(tmp_path: Path) -> None:
     assert outcome.made == ("second",)
     assert "torn" not in text_of(tmp_path / "output", "index.html")
     assert run(make_job(tmp_path), only=frozenset({first}), without=frozenset({torn})).made == ("first",)
+
+
+class Away(Here):
+    """Makes campaigns after one folder was taken away, as when a share goes while a build is on."""
+
+    def __init__(self, folder: Path) -> None:
+        self._folder = folder
+
+    def make_all(self, tasks: Iterable[Task], tick: Tick) -> Iterator[tuple[Task, Chapter]]:
+        self._folder.rename(self._folder.with_name(".away"))
+        return super().make_all(tasks, tick)
+
+
+def test_a_folder_that_goes_during_a_build_leaves_its_pages(tmp_path: Path) -> None:
+    """A campaign that can't be found when its turn comes stays as published: nothing is said of missing files."""
+    folder = put_campaign(tmp_path / "campaigns")
+    run(make_job(tmp_path))
+    before = text_of(tmp_path / "output", "spring/index.html")
+    put_campaign(tmp_path / "campaigns", targets_csv=TARGETS.replace("16", "17"))
+    put_campaign(tmp_path / "campaigns", "other")
+    assert run(make_job(tmp_path), makers=Away(folder)).made == ("other",)
+    assert text_of(tmp_path / "output", "spring/index.html") == before
+    assert "spring" in text_of(tmp_path / "output", "index.html")
 
 
 def test_a_build_that_is_not_wanted_any_more_ends_early(tmp_path: Path) -> None:

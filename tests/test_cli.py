@@ -52,6 +52,23 @@ def test_build_with_the_default_folders(
     assert re.fullmatch(line.format("0 built, 0 files written"), capsys.readouterr().err)
 
 
+@pytest.mark.skipif(not Path("/dev/full").exists(), reason="the system has no device that is always full")
+def test_a_log_that_is_full_ends_nothing(tmp_path: Path) -> None:
+    """Where standard error goes to a full disk the pages come all the same."""
+    put_campaign(tmp_path / "campaigns", targets_csv=SMALL)
+    with Path("/dev/full").open("w") as full:
+        subprocess.run(
+            [sys.executable, "-m", "generator", "build"],
+            cwd=tmp_path,
+            env={**os.environ, "PYTHONPATH": str(CHECKOUT)},
+            stderr=full,
+            check=False,
+        )
+    assert (tmp_path / "output/index.html").exists()
+    assert not (tmp_path / "output/.hullbook-lock").exists()
+    assert json.loads(text_of(tmp_path / "output", "status.json"))["state"] == "well"
+
+
 def test_problems_are_exit_1_each_time(
     tmp_path: Path, monkeypatch: pytest.MonkeyPatch, capsys: pytest.CaptureFixture[str]
 ) -> None:

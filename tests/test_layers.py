@@ -24,7 +24,7 @@ STEPS = (
     {"run"},
     {"book"},
     {"packing"},
-    {"settling"},
+    {"settling", "hints"},
     {"watch"},
     {"cli"},
     {"__main__"},
@@ -38,7 +38,7 @@ ONLY = {
     "jinja2": ("report/themes", "report/pages"),
     "markupsafe": ("report/",),
     "markdown": ("report/notes",),
-    "watchdog": ("watch",),
+    "watchdog": ("hints",),
     "scipy": ("geometry/", "findings/"),
 }
 

@@ -14,10 +14,13 @@ from pathlib import Path
 
 import pytest
 
+from generator import folders, hints
 from generator import watch as watching
+from generator.hints import is_telling, mount_type, wants_events
 from generator.lock import LockedError
+from generator.settling import Scan
 from generator.status import read_status
-from generator.watch import is_telling, mount_type, wants_events, watch
+from generator.watch import watch
 from tests.sample import ASSAYS, NOON, TARGETS, Told, light_pages, make_job, put_campaign, run
 
 #: Far more than anything here takes, so that a busy machine fails no test.
@@ -195,6 +198,72 @@ def test_the_root_may_go_and_come_back(watched: Watched) -> None:
     assert sum("is not there" in line for line in watched.log.warned) == 1
     put_campaign(watched.campaigns)
     watched.shows("1: makeable")
+
+
+def test_events_come_from_the_folder_that_is_there_now(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """After another folder was put in the place of the campaigns folder, it is the one that is observed."""
+    monkeypatch.setattr(watching, "RESCAN_EVERY", 0.3)
+    put_campaign(tmp_path / "campaigns")
+    put_campaign(tmp_path / "other", targets_csv=TARGETS.replace(">= 16", ">= 21"))
+    with light_pages():
+        watcher = Watched(tmp_path, "never")
+        try:
+            watcher.shows("1: makeable")
+            (tmp_path / "campaigns").rename(tmp_path / "old")
+            (tmp_path / "other").rename(tmp_path / "campaigns")
+            watcher.shows("1: unreachable")
+            watcher.rests()
+            monkeypatch.setattr(watching, "RESCAN_EVERY", 3600.0)  # from now on nothing but events
+            time.sleep(1.0)
+            put_campaign(watcher.campaigns, campaign_toml='title = "seen by its event"\n')
+            watcher.shows("seen by its event")
+        finally:
+            watcher.end()
+
+
+def test_an_unexpected_error_does_not_end_the_watch(watched: Watched, monkeypatch: pytest.MonkeyPatch) -> None:
+    """A defect is told and kept in the log of errors, the pages stay, and the watch goes on."""
+    monkeypatch.setattr(watching, "RETRY_PAUSES", (0.2,))
+    scan = folders.scan
+    broken = threading.Event()
+    broken.set()
+
+    def failing(root: Path) -> Scan:
+        if broken.is_set():
+            raise RuntimeError("out of luck")
+        return scan(root)
+
+    monkeypatch.setattr(folders, "scan", failing)
+    put_campaign(watched.campaigns, campaign_toml='title = "after the defect"\n')
+    eventually(lambda: any("internal error RuntimeError: out of luck" in line for line in watched.log.warned))
+    eventually(lambda: read_status(watched.output).get("state") == "trouble")
+    assert "1: makeable" in watched.page()
+    assert "in failing" in (watched.output / ".hullbook-errors.log").read_text(encoding="utf-8")
+    broken.clear()
+    watched.shows("after the defect")
+
+
+def test_nothing_is_written_where_the_output_disk_was(watched: Watched, monkeypatch: pytest.MonkeyPatch) -> None:
+    """While the disk with the pages is not mounted they are not written into the folder below; then they come."""
+    monkeypatch.setattr(watching, "RETRY_PAUSES", (0.2,))
+    place_of = hints.place_of
+    away = threading.Event()
+
+    def other_disk(path: Path | str) -> hints.Place | None:
+        place = place_of(path)
+        return (place[0] + 1, place[1]) if place and away.is_set() else place
+
+    monkeypatch.setattr(watching, "place_of", other_disk)
+    away.set()
+    watched.output.rename(watched.root / "unmounted")
+    put_campaign(watched.campaigns, campaign_toml='title = "while it is away"\n')
+    eventually(lambda: any("its disk is not mounted" in line for line in watched.log.warned))
+    watched.rests()
+    assert watched.page() == ""
+    shutil.rmtree(watched.output, ignore_errors=True)
+    (watched.root / "unmounted").rename(watched.output)
+    away.clear()
+    watched.shows("while it is away")
 
 
 def test_a_burst_ends_in_the_final_state(watched: Watched) -> None:

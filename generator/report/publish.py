@@ -281,7 +281,7 @@ class Publication:
         for path, digests in sorted(leftover.items()):
             digest, since = self.old.retired.get(path, (min(digests, default=""), ""))
             if path.startswith(ASSETS):
-                since = since or f"{now.isoformat()}Z"
+                since = since if "" < since <= f"{now.isoformat()}Z" else f"{now.isoformat()}Z"  # a clock set back
                 is_due = now - datetime.fromisoformat(since.removesuffix("Z")) > ASSET_GRACE
             else:
                 is_due = True

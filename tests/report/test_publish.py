@@ -139,6 +139,16 @@ def test_assets_stay_for_a_day(tmp_path: Path) -> None:
     assert set(read_manifest(tmp_path).retired) == set()
 
 
+def test_a_clock_set_back_keeps_no_asset_for_years(tmp_path: Path) -> None:
+    """What was retired at a moment that is yet to come, by a wrong clock, goes a day from now all the same."""
+    publish(tmp_path, site("one"))
+    publish(tmp_path, site("two"), moment=NOON + timedelta(days=9000))
+    publish(tmp_path, site("two"), moment=NOON)
+    assert (tmp_path / "assets/one.css").exists()
+    publish(tmp_path, site("two"), moment=NOON + timedelta(seconds=1) + ASSET_GRACE)
+    assert not (tmp_path / "assets/one.css").exists()
+
+
 def test_an_asset_in_use_again_is_kept(tmp_path: Path) -> None:
     """A retired style sheet that a page names again is no longer retired."""
     for step, word in enumerate(["one", "two", "one", "one"]):
