@@ -208,7 +208,8 @@ def test_events_come_from_the_folder_that_is_there_now(tmp_path: Path, monkeypat
     with light_pages():
         watcher = Watched(tmp_path, "never")
         try:
-            watcher.shows("1: makeable")
+            eventually(lambda: watcher.builds() == 1)
+            watcher.rests()  # the observer is started anew to follow the theme as well
             (tmp_path / "campaigns").rename(tmp_path / "old")
             (tmp_path / "other").rename(tmp_path / "campaigns")
             watcher.shows("1: unreachable")
