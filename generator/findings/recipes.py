@@ -17,6 +17,7 @@ from generator.findings.fewest import fewest_lots
 from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import Measure, blend_value
 from generator.findings.model import OrderModel
+from generator.findings.narrowing import Guide
 from generator.findings.programs import (
     ONE,
     ZERO,
@@ -115,7 +116,8 @@ def ask_least_cost(model: OrderModel) -> Asking[LeastCost | None]:
         best = yield from ask_best(program)
         return Offer(best.x, (best.value,), best.value) if isinstance(best, Point) else None
 
-    found = yield from ask_best_within(model, ask)
+    program = share_program(model, share_rows(model), costs, upper=capped_upper(model, model.amount))
+    found = yield from ask_best_within(model, ask, guide=Guide(program, (costs,)))
     return None if found is None else LeastCost(found.answer)
 
 
@@ -246,10 +248,21 @@ def ask_best_shares(
         key = (*(_dot(objective, staged.x) for objective in (*objectives, positions)), *reversed(staged.x[:n]))
         return Offer(staged.x[:n], key, staged)
 
-    found = yield from ask_best_within(model, ask)
+    aims = (*(tuple(objective) for objective in objectives), positions)
+    upper = (*capped_upper(model, model.amount), *_reach(extra, n, n + more))
+    guide = Guide(share_program(model, rows, (ZERO,) * (n + more), upper=upper, extra=extra), aims)
+    found = yield from ask_best_within(model, ask, guide=guide)
     if found is None:
         raise ValueError(f"no shares meet the limits of order {model.order.name} in its amount")
     return Best(found.answer, found.branch.model, not found.branch.path)
+
+
+def _reach(extra: Sequence[tuple[Vector, Bound, Bound]], n: int, width: int) -> list[Fraction]:
+    """A bound on each column beyond the n lots that no shares need more of: the most that they make of its rows."""
+    return [
+        max((max(abs(a) for a in row[:n]) / abs(row[column]) for row, _, _ in extra if row[column]), default=ZERO)
+        for column in range(n, width)
+    ]
 
 
 @lru_cache(maxsize=16)
