@@ -16,13 +16,11 @@ from typing import Generic, TypeVar
 from generator.findings.ask import Asking
 from generator.findings.house_rules import Rules
 from generator.findings.model import OrderModel
-from generator.findings.narrowing import Guide, ask_open_boxes
 from generator.findings.programs import ONE, ZERO
-from generator.geometry.choice import Box
 
 T = TypeVar("T")
 
-#: Branches looked at exactly for one question before it is given up as undecided.
+#: Branches looked at for one question before it is given up as undecided.
 MOST_BRANCHES = 4000
 
 
@@ -49,16 +47,6 @@ class Branch:
         lower[lot] = max(lower[lot], least or ZERO)
         model = replace(self.model, lower=tuple(lower))
         return replace(self, model=model, inside=self.inside | {lot}, path=(*self.path, words))
-
-    def within(self, box: Box, rules: Rules) -> Branch:
-        """The branch of a box: its lots out are not used, its lots in have their least share."""
-        names = self.model.names
-        branch = self
-        if box.out:
-            branch = branch.with_out(box.out, f"without {', '.join(names[i] for i in sorted(box.out))}")
-        for i in sorted(box.inside):
-            branch = branch.with_in(i, rules.least[i], f"with {names[i]}")
-        return branch
 
     @property
     def is_empty(self) -> bool:
@@ -89,43 +77,20 @@ class Offer(Generic[T]):
 
 
 def ask_best_within(
-    model: OrderModel,
-    ask: Callable[[OrderModel], Asking[Offer[T] | None]],
-    rules: Rules | None = None,
-    guide: Guide | None = None,
+    model: OrderModel, ask: Callable[[OrderModel], Asking[Offer[T] | None]], rules: Rules | None = None
 ) -> Asking[Found[T] | None]:
     """The best answer within the rules, where ``ask`` gives that of one branch; None if there is none.
 
-    ``guide`` tells the question as a program, by which most branches are closed before anything is asked of
-    them.  UndecidedError past MOST_BRANCHES.
+    UndecidedError past MOST_BRANCHES.
     """
     rules = rules or model.rules
-    root = Branch(model)
-    offer = yield from ask(model)
-    if offer is None:
-        return None
-    waiting = split(root, rules, offer.shares)
-    if not waiting:
-        return Found(offer.answer, root)
-    if guide is not None:
-        floor = offer.key[guide.place] if guide.place < len(offer.key) else None
-        boxes = yield from ask_open_boxes(guide, rules, floor)
-        if boxes is None:
-            raise UndecidedError("more branches than may be looked at")
-        waiting = [root.within(box, rules) for box in reversed(boxes)]
-    return (yield from _ask_best_of(waiting, ask, rules))
-
-
-def _ask_best_of(
-    waiting: list[Branch], ask: Callable[[OrderModel], Asking[Offer[T] | None]], rules: Rules
-) -> Asking[Found[T] | None]:
-    """The best answer on these branches, the last one first."""
     best: tuple[Offer[T], Branch] | None = None
+    waiting = [Branch(model)]
     for _ in range(MOST_BRANCHES):
         if not waiting:
             break
         branch = waiting.pop()
-        offer = None if branch.is_empty else (yield from ask(branch.model))
+        offer = None if branch.path and branch.is_empty else (yield from ask(branch.model))
         if offer is None or (best is not None and offer.key >= best[0].key):
             continue
         children = split(branch, rules, offer.shares)

@@ -17,7 +17,6 @@ from generator.findings.fewest import fewest_lots
 from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import Measure, blend_value
 from generator.findings.model import OrderModel
-from generator.findings.narrowing import Guide
 from generator.findings.programs import (
     ONE,
     ZERO,
@@ -116,8 +115,7 @@ def ask_least_cost(model: OrderModel) -> Asking[LeastCost | None]:
         best = yield from ask_best(program)
         return Offer(best.x, (best.value,), best.value) if isinstance(best, Point) else None
 
-    program = share_program(model, share_rows(model), costs, upper=capped_upper(model, model.amount))
-    found = yield from ask_best_within(model, ask, guide=Guide(program, (costs,)))
+    found = yield from ask_best_within(model, ask)
     return None if found is None else LeastCost(found.answer)
 
 
@@ -248,21 +246,10 @@ def ask_best_shares(
         key = (*(_dot(objective, staged.x) for objective in (*objectives, positions)), *reversed(staged.x[:n]))
         return Offer(staged.x[:n], key, staged)
 
-    aims = (*(tuple(objective) for objective in objectives), positions)
-    upper = (*capped_upper(model, model.amount), *_reach(extra, n, n + more))
-    guide = Guide(share_program(model, rows, (ZERO,) * (n + more), upper=upper, extra=extra), aims)
-    found = yield from ask_best_within(model, ask, guide=guide)
+    found = yield from ask_best_within(model, ask)
     if found is None:
         raise ValueError(f"no shares meet the limits of order {model.order.name} in its amount")
     return Best(found.answer, found.branch.model, not found.branch.path)
-
-
-def _reach(extra: Sequence[tuple[Vector, Bound, Bound]], n: int, width: int) -> list[Fraction]:
-    """A bound on each column beyond the n lots that no shares need more of: the most that they make of its rows."""
-    return [
-        max((max(abs(a) for a in row[:n]) / abs(row[column]) for row, _, _ in extra if row[column]), default=ZERO)
-        for column in range(n, width)
-    ]
 
 
 @lru_cache(maxsize=16)
