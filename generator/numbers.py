@@ -49,8 +49,10 @@ def typed_decimals(value: Fraction, text: str) -> int:
     """
     digits = re.sub(r"\D", "", text)
     if digits and value:
+        above, below = abs(value.numerator), value.denominator
+        wanted = int(digits) * below
         for places in range(MOST_PLACES + 1):
-            if abs(value) * 10**places == int(digits):
+            if above * 10**places == wanted:
                 return places
     return _decimals_of(text)
 
@@ -85,11 +87,11 @@ def significant(value: Fraction | float | int, digits: int) -> str:
 
     Digits before the point are all kept: 123,456 to three digits is "123 456".
     """
-    exact_value = _fraction(value)
-    if exact_value == 0:
+    above, below = _ratio(value)
+    if above == 0:
         return "0"
-    places = max(0, digits - 1 - _magnitude(exact_value))
-    scaled = round(exact_value * 10**places)
+    places = max(0, digits - 1 - _magnitude(abs(above), below))
+    scaled = _rounded(above * 10**places, below)
     while places > 0 and scaled % 10 == 0:
         scaled //= 10
         places -= 1
@@ -119,8 +121,9 @@ def weight(value: Fraction) -> str:
 
 def exact_places(value: Fraction) -> int | None:
     """Count the decimals that write ``value`` exactly; None if more than ``MOST_PLACES`` are needed."""
+    below = value.denominator
     for places in range(MOST_PLACES + 1):
-        if (value * 10**places).denominator == 1:
+        if 10**places % below == 0:
             return places
     return None
 
@@ -165,22 +168,29 @@ def share_places(shares: Iterable[Fraction], least: int = 1) -> int:
     return places
 
 
-def _fraction(value: Fraction | float | int) -> Fraction:
+def _ratio(value: Fraction | float | int) -> tuple[int, int]:
+    """A number as two integers, exactly: pages print tens of thousands, and fractions take their time."""
     if isinstance(value, float) and value - value != 0:
         raise ValueError(f"not a finite number: {value}")
-    return Fraction(value)
+    return value.as_integer_ratio()
 
 
 def _scaled(value: Fraction | float | int, places: int) -> int:
-    scaled: int = round(_fraction(value) * 10**places)
-    return scaled
+    above, below = _ratio(value)
+    return _rounded(above * 10**places, below)
 
 
-def _magnitude(value: Fraction) -> int:
-    """Find the power of ten of the first digit of ``value``, which is not 0."""
-    size = abs(value)
-    guess = len(str(size.numerator)) - len(str(size.denominator))
-    return guess if size >= Fraction(10) ** guess else guess - 1
+def _rounded(above: int, below: int) -> int:
+    """The integer nearest to above / below (which is greater than 0), half to even."""
+    whole, rest = divmod(above, below)
+    return whole + (2 * rest > below or (2 * rest == below and whole % 2 == 1))
+
+
+def _magnitude(above: int, below: int) -> int:
+    """Find the power of ten of the first digit of above / below, both greater than 0."""
+    guess = len(str(above)) - len(str(below))
+    is_reached = above >= 10**guess * below if guess >= 0 else above * 10**-guess >= below
+    return guess if is_reached else guess - 1
 
 
 def _digits(scaled: int, places: int) -> str:

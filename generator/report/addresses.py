@@ -5,6 +5,7 @@ An address is a path below the output folder, with forward slashes: ``spring-ble
 
 from __future__ import annotations
 
+import functools
 import posixpath
 import re
 import unicodedata
@@ -53,6 +54,7 @@ def slugs(names: Iterable[str], taken: Iterable[str] = ()) -> dict[str, str]:
     return result
 
 
+@functools.lru_cache(maxsize=8192)
 def relative(source: str, target: str) -> str:
     """The link on page ``source`` that leads to ``target`` (which may carry a ``#fragment``)."""
     path, mark, fragment = target.partition("#")

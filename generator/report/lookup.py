@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 
 from generator import numbers
-from generator.findings.measures import Measure, measures_of, own_value, reports, stated
+from generator.findings.measures import Measure, measures_of, own_value, stated_forms
 from generator.findings.records import LotFinding, OrderFinding
 from generator.findings.values import Table, table_of
 from generator.intake.records import Campaign, Component, Lot, Measured, Order, Reading
@@ -66,9 +67,9 @@ class Lookup:
         The value of a blend is Σ share·numerator / Σ share·denominator, in index values.
         """
         measure, position = self.measures.get(quantity), self.positions.get(lot)
-        if measure is None or position is None or reports(measure, self.table, position) is not None:
+        if measure is None or position is None:
             return None
-        return stated(measure.numerator, self.table, position), stated(measure.denominator, self.table, position)
+        return stated_forms(measure, self.table)[position]
 
     def value(self, quantity: str, lot: str) -> Fraction | None:
         """What the lot alone has of a quantity, on the limits' basis; None where it has none."""
@@ -113,6 +114,7 @@ def as_typed(measured: Measured | None) -> str:
     return "; ".join(_reading_text(reading) for reading in measured.readings)
 
 
+@functools.lru_cache(maxsize=8192)
 def _reading_text(reading: Reading) -> str:
     if not reading.text.strip():
         return "0"

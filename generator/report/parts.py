@@ -58,6 +58,34 @@ class Table:
     note: str = ""
     is_caption_shown: bool = True
 
+    @property
+    def lines(self) -> list[Line]:
+        """The rows as a template lays them out: each with its header, and every cell with the classes it wears."""
+        kinds = [column.kind for column in self.columns]
+        lines: list[Line] = []
+        for row in self.rows:
+            dressed = [(cell, _dress(cell, kind)) for cell, kind in zip(row.cells, kinds, strict=False)]
+            lines.append((row, *dressed[0], dressed[1:]))
+        return lines
+
+
+#: A row, its first cell with its classes, and the other cells with theirs.
+Line = tuple[Row, Cell, str, list[tuple[Cell, str]]]
+
+#: A cell with less text than this is not broken into lines.
+_SHORT = 18
+
+
+def _dress(cell: Cell, kind: Kind) -> str:
+    names = "s" if len(cell.text) < _SHORT else ""
+    if kind == "number":
+        names += " n"
+    if cell.tone:
+        names += f" {cell.tone}"
+    if cell.mark:
+        names += f" v-{cell.mark}"
+    return names.lstrip()
+
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Legend:

@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from dataclasses import dataclass
 from fractions import Fraction
 from itertools import combinations
+from math import lcm
 
 from generator import numbers
 from generator.findings.records import LimitFinding, OrderFinding, Recipe
@@ -37,10 +38,12 @@ def printed_shares(lookup: Lookup, finding: OrderFinding, shares: Mapping[str, F
     that they sum to 100, and the nearest rounding that holds is taken.
     """
     least = min(numbers.share_places(shares.values()), MOST_SHARE_PLACES)
+    held = [_held(lookup, limit, shares) for limit in finding.limits]
     for places in range(least, MOST_SHARE_PLACES + 1):
         roundings = _roundings(shares, places) if places > 1 else [numbers.percent_shares(shares, places)]
         for percent in roundings:
-            if all(_holds(lookup, limit, percent) for limit in finding.limits):
+            units = {lot: int(share * 10**places) for lot, share in percent.items()}
+            if all(_holds(limit, units) for limit in held):
                 return PrintedShares(percent=percent, places=places, holds=True)
     places = max(least, 2)
     return PrintedShares(percent=numbers.percent_shares(shares, places), places=places, holds=False)
@@ -65,19 +68,47 @@ def _roundings(shares: Mapping[str, Fraction], places: int) -> Iterator[dict[str
             yield percent
 
 
-def _holds(lookup: Lookup, limit: LimitFinding, percent: Mapping[str, Fraction]) -> bool:
-    """Whether a blend of these shares is within a limit, exactly; a limit in index values by its value."""
-    above = below = Fraction(0)
-    for lot, share in percent.items():
-        parts = lookup.parts(limit.on, lot) if share else (Fraction(0), Fraction(0))
-        if parts is None:
-            return False
-        above, below = above + share * parts[0], below + share * parts[1]
+@dataclass(frozen=True, slots=True)
+class _Held:
+    """A limit for whole numbers of shares: each of ``sides`` over a blend is 0 or more where it holds.
+
+    ``lacking`` lots report too little; of ``below``, the denominators, only whether they come to 0 is asked.
+    """
+
+    sides: tuple[Mapping[str, int], ...]
+    below: Mapping[str, int]
+    lacking: frozenset[str]
+
+
+def _held(lookup: Lookup, limit: LimitFinding, lots: Iterable[str]) -> _Held:
+    """A limit as integer factors of the lots' shares; one in index values is kept by its value alone."""
+    parts = {lot: lookup.parts(limit.on, lot) for lot in lots}
+    known = {lot: found for lot, found in parts.items() if found is not None}
+    lacking = frozenset(parts.keys() - known.keys())
     measure = lookup.measures.get(limit.on)
-    if measure is None or below == 0 or measure.rule.name != "linear":
-        return True
+    if measure is None or measure.rule.name != "linear":
+        return _Held((), {}, lacking)
     low, high = (None if bound is None else words.decimal(bound) for bound in (limit.low, limit.high))
-    return (low is None or above >= low * below) and (high is None or above <= high * below)
+    sides = [{lot: above - low * below for lot, (above, below) in known.items()}] if low is not None else []
+    if high is not None:
+        sides.append({lot: high * below - above for lot, (above, below) in known.items()})
+    whole = _whole({lot: below for lot, (_, below) in known.items()})
+    return _Held(tuple(_whole(side) for side in sides), whole, lacking)
+
+
+def _whole(factors: Mapping[str, Fraction]) -> dict[str, int]:
+    """Factors times what makes them all integers."""
+    common = lcm(*(factor.denominator for factor in factors.values()))
+    return {lot: factor.numerator * (common // factor.denominator) for lot, factor in factors.items()}
+
+
+def _holds(held: _Held, units: Mapping[str, int]) -> bool:
+    """Whether a blend of these shares is within a limit, exactly."""
+    if any(units[lot] for lot in held.lacking):
+        return False
+    if not held.sides or sum(units[lot] * factor for lot, factor in held.below.items()) == 0:
+        return True
+    return all(sum(units[lot] * factor for lot, factor in side.items()) >= 0 for side in held.sides)
 
 
 def recipe_table(lookup: Lookup, finding: OrderFinding, recipe: Recipe, anchor: str, caption: str, page: str) -> Table:

@@ -14,6 +14,7 @@ import traceback
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
+from types import BuiltinMethodType, MethodType
 from typing import Any
 
 from jinja2 import (
@@ -154,6 +155,10 @@ def built_in_themes() -> Path:
     return folder
 
 
+#: What the sandbox wraps before a template may call it.
+_METHODS = (MethodType, BuiltinMethodType)
+
+
 class _Sandbox(ImmutableSandboxedEnvironment):
     """The sandbox, but an attribute of a type is judged once: pages ask for hundreds of thousands.
 
@@ -163,6 +168,14 @@ class _Sandbox(ImmutableSandboxedEnvironment):
     def __init__(self, **options: Any) -> None:
         super().__init__(**options)
         self._judged: dict[tuple[type, str], bool] = {}
+
+    def getattr(self, obj: Any, attribute: str) -> Any:
+        """As the sandbox does it, but without asking anew for what was judged safe and is no method."""
+        if self._judged.get((type(obj), attribute)):
+            value = getattr(obj, attribute, _METHODS)
+            if not isinstance(value, _METHODS) and value is not _METHODS:
+                return value
+        return super().getattr(obj, attribute)
 
     def is_safe_attribute(self, obj: Any, attr: str, value: Any) -> bool:
         """Whether a template may see this attribute."""

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import functools
 from collections.abc import Callable, Mapping, Sequence
 from fractions import Fraction
 
@@ -19,6 +20,7 @@ LOT = Column(title="Lot")
 _SIDE_WORDS = {"low": "at least", "high": "at most", "exact": "exactly"}
 
 
+@functools.lru_cache(maxsize=4096)
 def exact_cell(value: Fraction, tone: str = "") -> Cell:
     """An exact number; a fraction that has no short decimal form has its rounded value below it."""
     if numbers.exact_places(value) is not None:
@@ -28,6 +30,7 @@ def exact_cell(value: Fraction, tone: str = "") -> Cell:
     return Cell(text=numbers.weight(value), detail=f"≈ {shown(value)}", tone=tone)
 
 
+@functools.lru_cache(maxsize=4096)
 def shown(value: Fraction) -> str:
     """A number as a calculator shows it: exact where it has a short decimal form, else with ``DIGITS`` digits."""
     return numbers.exact(value) if numbers.exact_places(value) is not None else numbers.significant(value, DIGITS)

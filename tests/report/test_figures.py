@@ -10,8 +10,11 @@ from xml.etree import ElementTree
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
+from matplotlib.lines import Line2D
+from matplotlib.patches import Polygon, Rectangle
+from matplotlib.transforms import IdentityTransform
 
-from generator.report.figures import canvas, curve, strips, ternary
+from generator.report.figures import canvas, curve, stencil, strips, ternary
 from generator.report.figures.canvas import SMALL_SIZE, width_of
 from generator.report.figures.frame import Axis, padded
 from generator.report.figures.hull import (
@@ -192,3 +195,53 @@ def test_labels_of_sixty_points_are_told_apart() -> None:
             assert name == other or right <= a or c <= left or top <= b or d <= bottom, (name, other)
         away = [math.hypot(max(left - x, 0, x - right), max(bottom - y, 0, y - top)) for x, y in points]
         assert min(range(60), key=away.__getitem__) == names.index(name)
+
+
+def test_stencils_are_what_matplotlib_draws() -> None:
+    """Lines, areas, marks and words laid down by a stencil are the elements of a figure drawn whole."""
+    figure = canvas.blank(40.0, 30.0)
+    flat = {"transform": IdentityTransform()}
+    figure.add_artist(Line2D([3, 20.5, 30], [4, 9, 2.25], color=canvas.BLEND, linewidth=2.0, **flat))
+    corners = [(3, 4), (20.5, 9), (30, 2.25)]
+    figure.add_artist(Polygon(corners, facecolor=canvas.FILL, edgecolor=canvas.LOT, linewidth=1.2, **flat))
+    figure.add_artist(Rectangle((2, 5), 10, 4, facecolor=canvas.WINDOW, alpha=0.16, linewidth=0, **flat))
+    mark = Line2D([7, 9.5], [8, 3], linestyle="none", marker="D", markersize=6, **flat)
+    mark.set_markerfacecolor(canvas.PAPER)
+    mark.set_markeredgecolor(canvas.BLEND)
+    mark.set_markeredgewidth(1.5)
+    figure.add_artist(mark)
+    figure.text(10, 12, "a < b", color=canvas.INK, weight="bold", ha="right", size=12.0, **flat)
+    places = [(x, 30 - y) for x, y in corners]
+    laid = (
+        stencil.line(places, canvas.BLEND, 2.0),
+        stencil.area(places, canvas.FILL, canvas.LOT, 1.2),
+        stencil.box(2, 21, 12, 25, canvas.WINDOW, opacity=0.16),
+        stencil.marks([(7, 22), (9.5, 27)], "D", 6, canvas.PAPER, canvas.BLEND),
+        stencil.text(10, 18, "a < b", canvas.INK, side="right", weight="bold", size=12.0),
+    )
+    whole = _elements(canvas.markup(figure))
+    assert len(whole) > 6
+    assert sorted(_elements(stencil.sheet(40, 30, *laid))) == sorted(whole)
+
+
+def _elements(drawn: str) -> list[tuple[str, ...]]:
+    """What is seen of a drawing: kind, style, words and places of its elements, a path's corners in any order."""
+    root = ElementTree.fromstring(canvas.finished(drawn, "k", "", ""))
+    found = []
+    for element in root.iter():
+        kind = element.tag.rpartition("}")[2]
+        if kind in ("path", "use", "text"):
+            corners = sorted(re.findall(r"-?[\d.]+ -?[\d.]+", element.get("d", "")))
+            place = (element.get("x", ""), element.get("y", ""), *corners)
+            found.append((kind, element.get("style", ""), element.text or "", *place))
+    return found
+
+
+def test_strips_of_one_figure_share_no_id() -> None:
+    """However many limits hold or are broken, every id of the drawing is there once."""
+    strip = strips.Strip(label="N", unit="%", places=1, window=(1.0, 2.0), value=1.5, value_text="1.5")
+    broken = strips.Strip(label="K", unit="%", places=1, window=(1.0, 2.0), value=3.0, value_text="3.0", holds=False)
+    text = strips.draw([strip, broken, strip, broken])
+    ids = re.findall(r'\bid="([^"]+)"', text)
+    assert len(ids) == len(set(ids)) == 2
+    assert text.count("<use ") == 4

@@ -92,7 +92,7 @@ def markup(figure: Figure) -> str:
 def _tidy(match: re.Match[str]) -> str:
     """One tag (never text, which may look like anything): short numbers, the theme's colours and font."""
     tag = re.sub(r"\s+", " ", match.group(0))
-    tag = re.sub(r"-?\d+\.\d{2,}", lambda number: _short(float(number.group(0))), tag)
+    tag = re.sub(r"-?\d+\.\d{2,}", lambda number: short(float(number.group(0))), tag)
     tag = re.sub(r"font-family: [^;\"]*", "font-family: var(--figure-font, sans-serif)", tag)
     tag = re.sub(r' transform="rotate\(-0[^"]*"', "", tag)
     tag = re.sub(r'<g id="[^"]*"', "<g", tag)
@@ -101,7 +101,8 @@ def _tidy(match: re.Match[str]) -> str:
     return tag
 
 
-def _short(number: float) -> str:
+def short(number: float) -> str:
+    """A place as text: tenths of an SVG unit, and never "-0"."""
     return f"{number:.1f}".removesuffix(".0").replace("-0", "0" if abs(number) < 0.05 else "-0")
 
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from generator.report.figures import canvas
+from generator.report.figures import canvas, stencil
 from generator.report.figures.frame import Axis, framed, padded
 
 
@@ -14,15 +14,6 @@ def draw(points: Sequence[tuple[float, float]], room_unit: str, money: str) -> s
     frame = framed(
         Axis(label="Room", unit=room_unit, ends=padded(rooms)), Axis(label="Cost", unit=money, ends=padded(costs))
     )
-    frame.axes.plot(
-        rooms,
-        costs,
-        color=canvas.BLEND,
-        linewidth=2,
-        marker="D",
-        markersize=6,
-        markerfacecolor=canvas.PAPER,
-        markeredgecolor=canvas.BLEND,
-        markeredgewidth=1.5,
-    )
-    return canvas.markup(frame.figure)
+    places = [(frame.x(room), frame.y(cost)) for room, cost in points]
+    corners = stencil.marks(places, "D", 6, canvas.PAPER, canvas.BLEND)
+    return frame.drawn(stencil.line(places, canvas.BLEND, 2.0) + corners)

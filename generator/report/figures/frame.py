@@ -2,19 +2,23 @@
 
 from __future__ import annotations
 
+import functools
+from collections.abc import Iterator
 from dataclasses import dataclass
 
-from matplotlib.axes import Axes
-from matplotlib.figure import Figure
 from matplotlib.ticker import MaxNLocator
 
 from generator import numbers
-from generator.report.figures import canvas
+from generator.report.figures import canvas, stencil
 
 WIDTH, HEIGHT = canvas.WIDTH, 352.0
 _TOP, _RIGHT, _BOTTOM = 26.0, 14.0, 42.0
 #: Share of the span of the values that stays free on each side.
 _PADDING = 0.12
+#: Where numbers stand below and beside the frame, and how far below the middle of a number its base line is.
+_BELOW, _BESIDE, _TO_MIDDLE = 14.4, 6.0, 4.1
+_EDGE, _MARGIN = 0.8, 1.7
+_LOCATOR = MaxNLocator(nbins=6)
 
 Ends = tuple[float, float]
 
@@ -37,8 +41,6 @@ class Axis:
 class Frame:
     """An empty drawing between two axes.  Places are SVG units, y downwards."""
 
-    figure: Figure
-    axes: Axes
     x_axis: Axis
     y_axis: Axis
     left: float
@@ -60,6 +62,38 @@ class Frame:
         low, high = self.y_axis.ends
         return bottom - (value - low) / (high - low) * (bottom - top)
 
+    def drawn(self, inside: str, above: str = "") -> str:
+        """The drawing: grid, ticks with their numbers in the house style, names of the axes, and what is given.
+
+        ``inside`` is SVG below the frame's edge, ``above`` SVG over it.
+        """
+        left, top, right, bottom = self.box
+        corners = ((left, bottom), (right, bottom), (left, top), (right, top))
+        edges = [(corners[a], corners[b]) for a, b in ((0, 2), (1, 3), (0, 1), (2, 3))]
+        return stencil.sheet(
+            WIDTH,
+            HEIGHT,
+            *self._ticked(),
+            inside,
+            *(stencil.line(edge, canvas.LINE, _EDGE) for edge in edges),
+            above,
+            _title(_MARGIN, 14.0, self.y_axis.title, "left"),
+            _title(right, HEIGHT - 6, self.x_axis.title, "right"),
+        )
+
+    def _ticked(self) -> Iterator[str]:
+        left, top, right, bottom = self.box
+        ticks = _ticks(self.x_axis.ends)
+        for tick, words in zip(ticks, _tick_texts(ticks), strict=True):
+            x = self.x(tick)
+            yield stencil.line(((x, bottom), (x, top)), canvas.LINE, 1.0)
+            yield stencil.text(x, bottom + _BELOW, words, canvas.MUTED, side="center")
+        ticks = _ticks(self.y_axis.ends)
+        for tick, words in zip(ticks, _tick_texts(ticks), strict=True):
+            y = self.y(tick)
+            yield stencil.line(((left, y), (right, y)), canvas.LINE, 1.0)
+            yield stencil.text(left - _BESIDE, y + _TO_MIDDLE, words, canvas.MUTED, side="right")
+
 
 def padded(values: list[float]) -> Ends:
     """Axis ends with some room around ``values`` (at least one); a single value gets room of its size."""
@@ -69,39 +103,20 @@ def padded(values: list[float]) -> Ends:
 
 
 def framed(x_axis: Axis, y_axis: Axis) -> Frame:
-    """A frame with ticks, their numbers in the house style, and the names of the axes."""
-    x_ticks, y_ticks = _ticks(x_axis.ends, 6), _ticks(y_axis.ends, 6)
-    x_texts, y_texts = _tick_texts(x_ticks), _tick_texts(y_ticks)
-    left = 14 + max(canvas.width_of(text) for text in y_texts)
-    figure = canvas.blank(WIDTH, HEIGHT)
-    axes = figure.add_axes(
-        (
-            left / WIDTH,
-            _BOTTOM / HEIGHT,
-            (WIDTH - left - _RIGHT) / WIDTH,
-            (HEIGHT - _TOP - _BOTTOM) / HEIGHT,
-        )
-    )
-    axes.patch.set_visible(False)
-    axes.set_xlim(*x_axis.ends)
-    axes.set_ylim(*y_axis.ends)
-    axes.set_xticks(x_ticks, x_texts)
-    axes.set_yticks(y_ticks, y_texts)
-    axes.tick_params(length=0, pad=6, labelcolor=canvas.MUTED, labelsize=canvas.SMALL_SIZE)
-    axes.grid(color=canvas.LINE, linewidth=1.0)
-    axes.set_axisbelow(True)
-    for spine in axes.spines.values():
-        spine.set_color(canvas.LINE)
-    size = canvas.TEXT_SIZE
-    x_title, y_title = (canvas.fitted(axis.title, WIDTH / canvas.BOLD - 20, size) for axis in (x_axis, y_axis))
-    figure.text(0.004, 1 - 14 / HEIGHT, y_title, color=canvas.INK, size=size, weight="bold")
-    figure.text(1 - _RIGHT / WIDTH, 6 / HEIGHT, x_title, color=canvas.INK, size=size, weight="bold", ha="right")
-    return Frame(figure, axes, x_axis, y_axis, left)
+    """A frame with as much room on the left as the numbers there need."""
+    texts = _tick_texts(_ticks(y_axis.ends))
+    return Frame(x_axis, y_axis, 14 + max(canvas.width_of(text) for text in texts))
 
 
-def _ticks(ends: Ends, most: int) -> list[float]:
+def _title(x: float, y: float, words: str, side: str) -> str:
+    shown = canvas.fitted(words, WIDTH / canvas.BOLD - 20, canvas.TEXT_SIZE)
+    return stencil.text(x, y, shown, canvas.INK, side=side, weight="bold", size=canvas.TEXT_SIZE)
+
+
+@functools.lru_cache(maxsize=1024)
+def _ticks(ends: Ends) -> list[float]:
     low, high = ends
-    return [float(tick) for tick in MaxNLocator(nbins=most).tick_values(low, high) if low <= tick <= high]
+    return [float(tick) for tick in _LOCATOR.tick_values(low, high) if low <= tick <= high]
 
 
 def _tick_texts(ticks: list[float]) -> list[str]:

@@ -6,9 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from html import escape
 
-from matplotlib.patches import Polygon
-
-from generator.report.figures import canvas, labels
+from generator.report.figures import canvas, labels, stencil
 from generator.report.figures.frame import Axis, Frame, framed
 
 Pair = tuple[float, float]
@@ -61,25 +59,13 @@ class Base:
 def draw_base(points: Sequence[LotPoint], x_axis: Axis, y_axis: Axis) -> Base:
     """The plane with the hull's shadow and the lots: corners as filled squares, inner lots as rings."""
     frame = framed(x_axis, y_axis)
-    outline = shadow([(point.x, point.y) for point in points])
-    if len(outline) > 1:
-        frame.axes.add_patch(
-            Polygon(outline, closed=True, facecolor=canvas.FILL, edgecolor=canvas.LOT, linewidth=1.2, zorder=1)
-        )
+    outline = [(frame.x(x), frame.y(y)) for x, y in shadow([(point.x, point.y) for point in points])]
+    tinted = stencil.area(outline, canvas.FILL, canvas.LOT, 1.2) if len(outline) > 1 else ""
+    lots = ""
     for is_corner, mark, fill, edge in ((False, "o", canvas.PAPER, canvas.INNER), (True, "s", canvas.LOT, canvas.LOT)):
-        chosen = [point for point in points if point.is_corner == is_corner]
-        frame.axes.plot(
-            [point.x for point in chosen],
-            [point.y for point in chosen],
-            linestyle="none",
-            marker=mark,
-            markersize=6.5,
-            markerfacecolor=fill,
-            markeredgecolor=edge,
-            markeredgewidth=1.5,
-            zorder=3,
-        )
-    return Base(canvas.markup(frame.figure), frame, tuple(points))
+        places = [(frame.x(point.x), frame.y(point.y)) for point in points if point.is_corner == is_corner]
+        lots += stencil.marks(places, mark, 6.5, fill, edge)
+    return Base(frame.drawn(tinted, lots), frame, tuple(points))
 
 
 def lot_names(base: Base, overlay: Overlay) -> tuple[str, int]:

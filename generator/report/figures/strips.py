@@ -2,22 +2,18 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from html import escape
 
-from matplotlib.artist import Artist
-from matplotlib.figure import Figure
-from matplotlib.lines import Line2D
-from matplotlib.patches import Rectangle
-from matplotlib.transforms import IdentityTransform
-
 from generator import numbers
 from generator.report import words
-from generator.report.figures import canvas
+from generator.report.figures import canvas, stencil
 
 WIDTH = canvas.WIDTH
 _ROW = 76.0
+#: From the top of a row down to the line on which values stand.
+_TRACK = 50.0
 _SIDE = 8.0
 #: A range without an end, or a one-sided window, is drawn to the edge of the strip, this much beyond the rest.
 _BEYOND = 0.08
@@ -53,11 +49,20 @@ class _Scale:
 
 
 def draw(strips: Sequence[Strip]) -> str:
-    """Markup of all strips, one above the other (at least one)."""
-    figure = canvas.blank(WIDTH, _ROW * len(strips))
-    for position, strip in enumerate(strips):
-        _draw_one(figure, strip, _ROW * (len(strips) - position))
-    return canvas.markup(figure)
+    """Markup of all strips, one below the other (at least one)."""
+    parts = [part for position, strip in enumerate(strips) for part in _draw_one(strip, _ROW * position)]
+    for holds in (True, False):
+        blends = [
+            (_scale(strip)(strip.value), _ROW * position + _TRACK)
+            for position, strip in enumerate(strips)
+            if strip.value is not None and strip.holds is holds
+        ]
+        parts.append(stencil.marks(blends, "D", 9, _tone(holds), canvas.PAPER))
+    return stencil.sheet(WIDTH, _ROW * len(strips), *parts)
+
+
+def _tone(holds: bool) -> str:
+    return canvas.BLEND if holds else canvas.BAD
 
 
 def touch(keys: Sequence[str]) -> str:
@@ -69,31 +74,26 @@ def touch(keys: Sequence[str]) -> str:
     )
 
 
-def _draw_one(figure: Figure, strip: Strip, top: float) -> None:
+def _draw_one(strip: Strip, top: float) -> Iterator[str]:
     scale = _scale(strip)
-    track = top - 50
+    track = top + _TRACK
+    yield from _window(strip, scale, track)
+    if strip.lots is not None:
+        low, high = _ends(strip.lots, scale)
+        for ends in (((low, track), (high, track)), *(((end, track + 5), (end, track - 5)) for end in (low, high))):
+            yield stencil.line(ends, canvas.INNER, 1.5)
+    if strip.attainable is not None:
+        low, high = _ends(strip.attainable, scale)
+        yield stencil.box(low, track - 3.5, max(high, low + 2), track + 3.5, canvas.LOT)
     title = f"{strip.label}, {strip.unit}" if strip.unit else strip.label
     value = f"blend {strip.value_text}" if strip.value is not None else ""
     room = (WIDTH - 4 * _SIDE) / canvas.BOLD - canvas.width_of(value)
-    _text(figure, 0, top - 15, canvas.fitted(title, room), canvas.INK, weight="bold")
+    yield stencil.text(0, top + 15, canvas.fitted(title, room), canvas.INK, weight="bold")
     if value:
-        tone = canvas.BLEND if strip.holds else canvas.BAD
-        _text(figure, WIDTH, top - 15, value, tone, side="right", weight="bold")
-    _window(figure, strip, scale, track)
+        yield stencil.text(WIDTH, top + 15, value, _tone(strip.holds), side="right", weight="bold")
+    yield _bound_text(strip, scale, track)
     if strip.lots is not None:
-        low, high = _ends(strip.lots, scale)
-        _add(figure, Line2D([low, high], [track, track], color=canvas.INNER, linewidth=1.5))
-        for end in (low, high):
-            _add(figure, Line2D([end, end], [track - 5, track + 5], color=canvas.INNER, linewidth=1.5))
-        _end_texts(figure, strip.lots, scale, strip.places, track - 21)
-    if strip.attainable is not None:
-        low, high = _ends(strip.attainable, scale)
-        _add(figure, Rectangle((low, track - 3.5), max(high - low, 2), 7, color=canvas.LOT, linewidth=0, zorder=3))
-    if strip.value is not None:
-        mark = Line2D([scale(strip.value)], [track], marker="D", markersize=9, markeredgecolor=canvas.PAPER, zorder=4)
-        mark.set_markerfacecolor(canvas.BLEND if strip.holds else canvas.BAD)
-        mark.set_markeredgewidth(1.5)
-        _add(figure, mark)
+        yield from _end_texts(strip.lots, scale, strip.places, track + 21)
 
 
 def _scale(strip: Strip) -> _Scale:
@@ -109,25 +109,30 @@ def _ends(ends: Bounds, scale: _Scale) -> tuple[float, float]:
     return scale(scale.low if low is None else low), scale(scale.high if high is None else high)
 
 
-def _window(figure: Figure, strip: Strip, scale: _Scale, track: float) -> None:
-    """The window as a tinted box with a firm edge at each bound, and the bounds above it."""
+def _window(strip: Strip, scale: _Scale, track: float) -> Iterator[str]:
+    """The window as a tinted box with a firm edge at each bound."""
     low, high = _ends(strip.window, scale)
-    _add(figure, Rectangle((low, track - 11), high - low, 22, facecolor=canvas.WINDOW, alpha=0.16, linewidth=0))
+    yield stencil.box(low, track - 11, high, track + 11, canvas.WINDOW, opacity=0.16)
     for bound, place in zip(strip.window, (low, high), strict=True):
         if bound is not None:
-            _add(figure, Line2D([place, place], [track - 11, track + 11], color=canvas.WINDOW, linewidth=2))
-    _text(figure, *_bound_place(strip, low, high, track), canvas.WINDOW, side="center")
+            yield stencil.line(((place, track + 11), (place, track - 11)), canvas.WINDOW, 2.0)
 
 
-def _bound_place(strip: Strip, low: float, high: float, track: float) -> tuple[float, float, str]:
-    """Where the window's words stand: centred above it, but inside the figure."""
+def _bound_text(strip: Strip, scale: _Scale, track: float) -> str:
+    """The window's words, centred above it, but inside the figure."""
+    low, high = _ends(strip.window, scale)
     text = words.window(*strip.window)
     centre = low if strip.window[1] is None else high if strip.window[0] is None else (low + high) / 2
+    return stencil.text(_inside(centre, text), track - 17, text, canvas.WINDOW, side="center")
+
+
+def _inside(centre: float, text: str) -> float:
+    """The middle of a text as near to ``centre`` as keeps it inside the figure."""
     half = canvas.width_of(text) / 2
-    return min(max(centre, _SIDE + half), WIDTH - _SIDE - half), track + 17, text
+    return min(max(centre, _SIDE + half), WIDTH - _SIDE - half)
 
 
-def _end_texts(figure: Figure, ends: Bounds, scale: _Scale, places: int, y: float) -> None:
+def _end_texts(ends: Bounds, scale: _Scale, places: int, y: float) -> Iterator[str]:
     """The ends of the lots' range below it; as one text where two would touch."""
     low, high = ends
     if low is None or high is None:
@@ -137,21 +142,7 @@ def _end_texts(figure: Figure, ends: Bounds, scale: _Scale, places: int, y: floa
     room = right - left - (canvas.width_of(texts[0]) + canvas.width_of(texts[1])) / 2
     if room > _GAP:
         for text, x in zip(texts, (left, right), strict=True):
-            half = canvas.width_of(text) / 2
-            inside = min(max(x, _SIDE + half), WIDTH - _SIDE - half)
-            _text(figure, inside, y, text, canvas.MUTED, side="center")
+            yield stencil.text(_inside(x, text), y, text, canvas.MUTED, side="center")
         return
     joined = texts[0] if low == high else f"{texts[0]} to {texts[1]}"
-    half = canvas.width_of(joined) / 2
-    _text(figure, min(max((left + right) / 2, _SIDE + half), WIDTH - _SIDE - half), y, joined, canvas.MUTED, "center")
-
-
-def _text(
-    figure: Figure, x: float, y: float, text: str, colour: str, side: str = "left", weight: str = "normal"
-) -> None:
-    figure.text(x, y, text, color=colour, ha=side, weight=weight, transform=IdentityTransform())
-
-
-def _add(figure: Figure, artist: Artist) -> None:
-    artist.set_transform(IdentityTransform())
-    figure.add_artist(artist)
+    yield stencil.text(_inside((left + right) / 2, joined), y, joined, canvas.MUTED, side="center")
