@@ -202,6 +202,7 @@ class _Watcher:
         if self._is_gone:
             self._is_gone = False
             self._full_look_at = time.monotonic()  # who knows what happened meanwhile
+            self._wake.set()  # the observer is started at once, not after a rest
             self._log.say(f"{self._job.campaigns} is back")
         return {**scan, **{folder: theme_stamps(folder) for folder in self._themes}}
 

@@ -222,6 +222,25 @@ def test_events_come_from_the_folder_that_is_there_now(tmp_path: Path, monkeypat
             watcher.end()
 
 
+def test_an_edit_just_after_the_return_is_seen_at_once(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    """As soon as the campaigns folder is back its events count; the next regular scan need not be waited for."""
+    monkeypatch.setattr(watching, "RESCAN_EVERY", 0.3)
+    put_campaign(tmp_path / "campaigns")
+    with light_pages():
+        watcher = Watched(tmp_path, "never")
+        try:
+            eventually(lambda: watcher.builds() == 1)
+            (tmp_path / "campaigns").rename(tmp_path / "away")
+            eventually(lambda: any("is not there" in line for line in watcher.log.warned))
+            monkeypatch.setattr(watching, "RESCAN_EVERY", 3600.0)
+            (tmp_path / "away").rename(tmp_path / "campaigns")
+            eventually(lambda: any("is back" in line for line in watcher.log.said))
+            put_campaign(watcher.campaigns, campaign_toml='title = "just after"\n')
+            watcher.shows("just after")
+        finally:
+            watcher.end()
+
+
 def test_an_unexpected_error_does_not_end_the_watch(watched: Watched, monkeypatch: pytest.MonkeyPatch) -> None:
     """A defect is told and kept in the log of errors, the pages stay, and the watch goes on."""
     monkeypatch.setattr(watching, "RETRY_PAUSES", (0.2,))
