@@ -2,6 +2,7 @@
 
 import ast
 import importlib.util
+import re
 from pathlib import Path
 
 import pytest
@@ -143,6 +144,14 @@ def test_only_the_door_asks_the_clock() -> None:
         if any(call in path.read_text(encoding="utf-8") for call in ("datetime.now(", "date.today(", "time.time("))
     ]
     assert asking == ["generator.cli"]
+
+
+def test_the_guide_has_every_room() -> None:
+    """The table of rooms in DEVELOPERS.md names every room and module of the top, and nothing that is not there."""
+    table = (PACKAGE.parent / "DEVELOPERS.md").read_text(encoding="utf-8").split("## The rooms", 1)[1]
+    rows = [line.split("|")[1] for line in table.split("\n## ", 1)[0].splitlines() if line.startswith("| `")]
+    named = {name.strip("/").removesuffix(".py") for row in rows for name in re.findall("`([^`]+)`", row)}
+    assert named == set(STEP_OF) - {"__main__"}
 
 
 def test_every_step_is_there() -> None:
