@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import contextlib
 import json
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Collection, Iterable, Iterator, Mapping
 from dataclasses import dataclass, field, replace
 from pathlib import Path
 
@@ -80,11 +80,13 @@ class Published:
 class Manifest:
     """What an output folder holds by right: files by campaign, and files that are no longer used.
 
-    ``retired`` maps addresses to (digest, moment in ISO text since when, "" = remove at once).
+    ``retired`` maps addresses to (digest, moment in ISO text since when, "" = remove at once).  ``lines`` are
+    the lines of ``campaigns`` as they were read: what stays as it is need not be put into words again.
     """
 
     campaigns: Mapping[str, Published] = field(default_factory=dict)
     retired: Mapping[str, tuple[str, str]] = field(default_factory=dict)
+    lines: Mapping[str, str] = field(default_factory=dict, compare=False, repr=False)
 
     def files(self) -> dict[str, str]:
         """Every address in use, with its digest."""
@@ -107,7 +109,8 @@ class Journal:
 def read_manifest(output: Path) -> Manifest:
     """Read the manifest of an output folder; an empty one where there is none that can be read."""
     try:
-        content = json.loads((output / MANIFEST_NAME).read_bytes())
+        text = (output / MANIFEST_NAME).read_bytes().decode("utf-8", "surrogatepass")
+        content = json.loads(text)
         if content["format"] != FORMAT:
             return Manifest()
         return Manifest(
@@ -120,6 +123,7 @@ def read_manifest(output: Path) -> Manifest:
                 for name, item in content["campaigns"].items()
             },
             retired={path: (_text(digest), _text(since)) for path, (digest, since) in content["retired"].items()},
+            lines=_by_name(content["campaigns"], text),
         )
     except (OSError, ValueError, TypeError, KeyError, AttributeError, RecursionError):
         return Manifest()
@@ -131,11 +135,19 @@ def _text(value: object) -> str:
     return value
 
 
-def dump(manifest: Manifest) -> bytes:
-    """The manifest as JSON of one form only, one line for each campaign."""
+def _by_name(names: Collection[str], text: str) -> dict[str, str]:
+    """The line of each campaign, as :func:`dump` wrote them; none where somebody has laid the text out otherwise."""
+    lines = [line.removesuffix(",") for line in text.split("\n")[1:-2]]
+    found = dict(zip(names, lines, strict=False))
+    is_ours = len(lines) == len(names) and all(line.startswith(f"{_json(name)}: ") for name, line in found.items())
+    return found if is_ours else {}
+
+
+def dump(manifest: Manifest, old: Manifest | None = None) -> bytes:
+    """The manifest as JSON of one form only, one line for each campaign; ``old`` lends the lines of what it shares."""
+    known = old or Manifest()
     lines = [
-        f"{_json(name)}: "
-        + _json({"fingerprint": item.fingerprint, "about": item.about, "files": _listed(item.files).text})
+        known.lines[name] if name in known.lines and known.campaigns.get(name) is item else _line(name, item)
         for name, item in sorted(manifest.campaigns.items())
     ]
     campaigns = ",\n".join(lines)
@@ -143,12 +155,16 @@ def dump(manifest: Manifest) -> bytes:
     return text.encode("utf-8", "surrogatepass")
 
 
+def _line(name: str, item: Published) -> str:
+    told = {"fingerprint": item.fingerprint, "about": item.about, "files": _listed(item.files).text}
+    return f"{_json(name)}: {_json(told)}"
+
+
 def _listed(files: Mapping[str, str]) -> FileList:
     return files if isinstance(files, FileList) else FileList(files)
 
 
-def _json(value: object) -> str:
-    return json.dumps(value, ensure_ascii=False, sort_keys=True)
+_json = json.JSONEncoder(ensure_ascii=False, sort_keys=True).encode
 
 
 def journal_line(campaign: str, files: Mapping[str, str]) -> str:

@@ -17,7 +17,7 @@ from pathlib import Path
 from generator.disk import WriteError, sha256, write_whole
 
 STAMPS_NAME = ".hullbook-stamps.json"
-FORMAT = "hullbook-stamps-1"
+FORMAT = "hullbook-stamps-2"
 
 #: When a folder's entries changed last, its number on the disk, and a digest of its files' sizes and moments.
 Look = tuple[int, int, str]
@@ -30,33 +30,33 @@ class Presence:
         self._output = os.fspath(output)
         self._thorough = thorough
         self._before = _read(output)
-        self._now: dict[str, dict[str, Look]] = {}
+        self._now: dict[str, str] = {}
         self._folders: dict[str, tuple[int, int]] = {}
 
     def holds(self, campaign: str, files: Mapping[str, str]) -> bool:
         """Whether every file of a campaign, digests by address, is there with its content."""
-        before = self._before.get(campaign)
+        before = _looks(self._before.get(campaign, ""))
         # The program writes its own records into the top folder all the time: its stamp tells nothing.
         if before and not self._thorough and self._stand(before):
-            self._now[campaign] = before
+            self._now[campaign] = self._before[campaign]
             return True
         looks = {}
         for name, own in _by_folder(files).items():
             look = self._look(name, own)
             if look is None:
                 return False
-            is_known = before is not None and name in before and before[name][2] == look[2]
+            is_known = name in before and before[name][2] == look[2]
             if not is_known and not all(_has(f"{self._output}/{path}", files[path]) for path in own):
                 return False
             looks[name] = look
-        self._now[campaign] = looks
+        self._now[campaign] = _text(looks)
         return True
 
     def note(self, campaign: str, files: Iterable[str]) -> None:
         """Remember how the files of a campaign, just written, look."""
         self._folders.clear()
         looks = {name: self._look(name, own) for name, own in _by_folder(files).items()}
-        self._now[campaign] = {name: look for name, look in looks.items() if look is not None}
+        self._now[campaign] = _text({name: look for name, look in looks.items() if look is not None})
 
     def keep(self, campaign: str) -> None:
         """Remember of a campaign what was known before."""
@@ -119,14 +119,28 @@ def _has(path: str, digest: str) -> bool:
         return False
 
 
-def _read(output: Path) -> dict[str, dict[str, Look]]:
+def _text(looks: Mapping[str, Look]) -> str:
+    """Looks as one text, which a build that keeps the campaign passes on as it is."""
+    return "\n".join(f"{moment} {number} {digest} {name}" for name, (moment, number, digest) in looks.items())
+
+
+def _looks(text: str) -> dict[str, Look]:
+    """Looks by folder, from their text; empty where it is none."""
+    looks: dict[str, Look] = {}
+    try:
+        for line in text.split("\n") if text else ():
+            moment, number, digest, name = line.split(" ", 3)
+            looks[name] = (int(moment), int(number), digest)
+    except ValueError:
+        return {}
+    return looks
+
+
+def _read(output: Path) -> dict[str, str]:
     try:
         content = json.loads((output / STAMPS_NAME).read_bytes())
         if content["format"] != FORMAT:
             return {}
-        return {
-            campaign: {name: (moment, number, digest) for name, (moment, number, digest) in looks.items()}
-            for campaign, looks in content["campaigns"].items()
-        }
+        return {campaign: text for campaign, text in content["campaigns"].items() if isinstance(text, str)}
     except (OSError, ValueError, TypeError, KeyError, AttributeError, RecursionError):
         return {}

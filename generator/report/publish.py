@@ -145,7 +145,8 @@ class Publication:
             self._announce(SHARED, {path: min(leftover[path], default="") for path in gone})
         manifest = Manifest(campaigns=self._new, retired=retired)
         try:
-            write_whole(self._output / MANIFEST_NAME, dump(manifest), durable=True, before_replace=self._before_replace)
+            data = dump(manifest, self.old)
+            write_whole(self._output / MANIFEST_NAME, data, durable=True, before_replace=self._before_replace)
         except HeldError:
             return Written(pending=(MANIFEST_NAME,))
         removed = [path for path in gone if self._remove(path, leftover[path])]

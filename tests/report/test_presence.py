@@ -1,10 +1,12 @@
 import os
+from collections.abc import Callable
+from dataclasses import replace
 from datetime import UTC, datetime
 from pathlib import Path
 
 import pytest
 
-from generator.report.manifest import FileList, Published
+from generator.report.manifest import MANIFEST_NAME, FileList, Manifest, Published, dump, read_manifest
 from generator.report.presence import STAMPS_NAME
 from generator.report.publish import SHARED, Publication
 
@@ -80,7 +82,13 @@ def test_foreign_files_beside_pages_are_none_of_our_business(output: Path) -> No
     assert holds(output) == [True, True]
 
 
-@pytest.mark.parametrize("content", [None, b"", b"{}", b'{"format": "hullbook-stamps-1", "campaigns": {"s": 5}}'])
+USELESS = [b"", b"{}", b'{"format": "hullbook-stamps-1", "campaigns": {"s": "1 2 x s"}}']
+USELESS += [
+    b'{"format": "hullbook-stamps-2", "campaigns": {"s": %b}}' % text for text in (b"5", b'"a b c d"', b'"1 2"')
+]
+
+
+@pytest.mark.parametrize("content", [None, *USELESS])
 def test_lost_stamps_cost_only_time(output: Path, content: bytes | None) -> None:
     """Without usable stamps the files themselves are read."""
     if content is None:
@@ -91,6 +99,30 @@ def test_lost_stamps_cost_only_time(output: Path, content: bytes | None) -> None
     (output / STAMPS_NAME).unlink()
     (output / "s/orders/1.html").write_bytes(b"ONE")
     assert holds(output) == [False, True]
+
+
+def test_a_manifest_is_written_again_from_its_own_lines(tmp_path: Path) -> None:
+    """What stays is written as it was read, what changed anew: the same bytes as if all were put into words."""
+    names = ("a", "b", '\u2028 "odd", {', "ü")
+    first = Manifest(
+        campaigns={name: Published(fingerprint=name, files={"x/y.html": "1"}, about={"n": [name]}) for name in names}
+    )
+    (tmp_path / MANIFEST_NAME).write_bytes(dump(first))
+    old = read_manifest(tmp_path)
+    assert old.lines.keys() == set(names)
+    assert dump(old) == dump(old, old) == dump(first)
+    changed = replace(old, campaigns={**old.campaigns, "b": replace(old.campaigns["b"], fingerprint="new")})
+    assert dump(changed, old) == dump(changed) != dump(first)
+    assert dump(old.voided(["a"]), old) == dump(old.voided(["a"]))
+
+
+@pytest.mark.parametrize("change", [lambda text: text.replace(b",\n", b", "), lambda text: text.replace(b"{", b"{\n")])
+def test_a_manifest_laid_out_otherwise_is_read_all_the_same(tmp_path: Path, change: Callable[[bytes], bytes]) -> None:
+    """Lines that are not those of this program are not passed on."""
+    first = Manifest(campaigns={name: Published(fingerprint=name, files={}) for name in "abc"})
+    (tmp_path / MANIFEST_NAME).write_bytes(change(dump(first)))
+    old = read_manifest(tmp_path)
+    assert dump(old, old) == dump(first)
 
 
 def test_a_list_of_files_is_the_same_as_text() -> None:
