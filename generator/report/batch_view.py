@@ -13,6 +13,7 @@ from generator.report.addresses import slugs
 from generator.report.loading import loading_turn
 from generator.report.lookup import Lookup, order_of
 from generator.report.parts import Fact, Table
+from generator.report.plan_view import plan_address
 from generator.report.shares import amount_places, values_table
 
 #: So many tick boxes stand on a card; of more batches the number is written in.
@@ -47,9 +48,10 @@ class CardBatch:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Card:
-    """The card of one order."""
+    """The card of one order; ``plan`` is the link to the plan's page."""
 
     order: str
+    plan: str
     unit: str
     batches: tuple[CardBatch, ...]
     has_places: bool
@@ -65,14 +67,15 @@ def card_addresses(lookup: Lookup) -> dict[str, str]:
     return {name: f"{lookup.campaign.slug}/batches/{slug}.html" for name, slug in named.items() if name in carded}
 
 
-def batch_card(lookup: Lookup, finding: OrderFinding) -> Card:
-    """Everything on the card of one order."""
+def batch_card(lookup: Lookup, finding: OrderFinding, page: str) -> Card:
+    """Everything on the card of one order, which stands at the address ``page``."""
     batches = [batch for batch in lookup.book.findings.batches if batch.order == finding.order]
     shown = tuple(_batch(lookup, finding, batch) for batch in batches)
     rows = [row for batch in shown for row in batch.rows]
     mark = lookup.book.findings.revision
     return Card(
         order=finding.order,
+        plan=lookup.link(page, plan_address(lookup)),
         unit=lookup.campaign.settings.quantity_unit,
         batches=shown,
         has_places=any(row.place for row in rows),
@@ -88,7 +91,13 @@ def card_lead(lookup: Lookup, finding: OrderFinding) -> str:
     unit = lookup.campaign.settings.quantity_unit
     total = sum((batch.times * _sum(batch) for batch in batches), Fraction(0))
     count = batches[0].of
-    text = f"{words.with_unit(_text(total, _places(batches)), unit)} in {words.plural(count, 'batch', 'batches')}."
+    text = f"{words.with_unit(_text(total, _places(batches)), unit)} in {words.plural(count, 'batch', 'batches')}"
+    plan = lookup.book.findings.plan
+    planned = plan.orders.get(finding.order) if plan else None
+    if planned is not None and _text(Fraction(planned.accepted), _places(batches)) != _text(total, _places(batches)):
+        accepted = numbers.text(planned.accepted, amount_places(planned.accepted))
+        text += f", of the {words.with_unit(accepted, unit)} that the plan gives it"
+    text += "."
     if not all(batch.holds for batch in batches):
         text += " Not every limit holds: see below before anything is loaded."
     return text
@@ -153,7 +162,10 @@ def _batch(lookup: Lookup, finding: OrderFinding, batch: Batch) -> CardBatch:
     last = batch.batch + batch.times - 1
     title = "The batch" if batch.of == 1 else f"Batch {batch.batch} of {batch.of}"
     if batch.times > 1:
-        title = f"Batches {batch.batch} to {last} of {batch.of}, each"
+        each = words.with_unit(_text(running, places), lookup.campaign.settings.quantity_unit)
+        title = f"{batch.of} equal batches of {each}"
+        if batch.times < batch.of:
+            title = f"Batches {batch.batch} to {last} of {batch.of}, {each} each"
     return CardBatch(
         anchor=f"batch-{batch.batch}",
         title=title,

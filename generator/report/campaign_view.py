@@ -12,8 +12,8 @@ from generator.report import words
 from generator.report.history_view import history_index, revision_address
 from generator.report.lookup import Lookup, as_typed, order_of
 from generator.report.order_view import amount_text
-from generator.report.parts import Cell, Column, Row, Section, Table, aligned, text_cell
-from generator.report.plan_view import plan_summary
+from generator.report.parts import Cell, Column, Fact, Row, Section, Table, aligned, text_cell
+from generator.report.plan_view import plan_address, plan_summary, plan_value
 from generator.report.planes import Planes
 from generator.report.shares import lot_cell
 from generator.report.wholes import Wholes
@@ -23,6 +23,25 @@ _MOST_REVISIONS = 10
 #: More changes than this are folded.
 _MOST_CHANGES = 6
 _SEVERITIES = {"stops": "stops the campaign", "drops": "left out", "note": "note"}
+
+
+def campaign_facts(lookup: Lookup) -> tuple[Fact, ...]:
+    """What a campaign has, and where its plan and its history stand."""
+    findings, home = lookup.book.findings, lookup.home
+    corners = sum(1 for lot in findings.lots if lot.role == "corner")
+    lots = str(len(findings.lots))
+    if corners:
+        lots += ", all corner lots" if corners == len(findings.lots) else f", {corners} of them corner lots"
+    facts = [Fact(name="Lots", value=lots)]
+    if not lookup.campaign.has_stock and not lookup.hides("stock"):
+        facts.append(Fact(name="Stock", value="not checked"))
+    if findings.plan is not None and findings.plan.orders:
+        facts.append(Fact(name="Plan", value=plan_value(lookup), href=lookup.link(home, plan_address(lookup))))
+    if lookup.book.revisions:
+        last = lookup.book.revisions[-1]
+        href = lookup.link(home, history_index(lookup.campaign.slug)) if lookup.book.past else ""
+        facts.append(Fact(name="Revision", value=f"{last.number}, {words.moment(last.recorded)}", href=href))
+    return tuple(facts)
 
 
 def campaign_sections(lookup: Lookup, planes: Planes, wholes: Wholes) -> tuple[Section, ...]:
@@ -73,9 +92,10 @@ def _orders(lookup: Lookup, page: str) -> Section | None:
     shown = [name for name in columns if is_shown.get(name, True)]
     table = Table(
         anchor="orders-table",
-        caption="Orders, each taken alone",
+        caption="Each taken alone",
         columns=tuple(columns[name] for name in shown),
         rows=tuple(Row(cells=tuple(row[name] for name in shown)) for row in cells),
+        stacks=True,
     )
     return Section(anchor="orders", title="Orders", tables=(table,))
 
@@ -93,7 +113,7 @@ def _order_cells(lookup: Lookup, finding: OrderFinding, page: str) -> dict[str, 
         "amount": text_cell(amount or numbers.UNKNOWN),
         "cost": text_cell(cost),
         "room": text_cell(numbers.significant(finding.room or 0, 3) if is_in_sd else numbers.UNKNOWN),
-        "sentence": text_cell(finding.sentence, tone="sentence"),
+        "sentence": text_cell(words.beside_verdict(finding.sentence), tone="sentence"),
     }
 
 
@@ -109,11 +129,12 @@ def _changes(lookup: Lookup) -> Section | None:
             what = "Nothing that these pages show" if lookup.book.hidden else "No answer"
             sentences = (f"{what} changed from revision {last.number - 1} to revision {last.number}.",)
     rest = sentences[_MOST_CHANGES:]
-    more = Section(anchor="more-changes", title=words.plural(len(rest), "more change"), sentences=rest)
+    more = Section(anchor="more-changes", title=words.plural(len(rest), "more change"), points=rest)
     return Section(
         anchor="changes",
         title="What changed last",
-        sentences=sentences[:_MOST_CHANGES],
+        sentences=(f"Revision {last.number}, recorded {words.moment(last.recorded)}.",),
+        points=sentences[:_MOST_CHANGES],
         folded=(more,) if rest else (),
     )
 
@@ -142,6 +163,8 @@ def _hull(lookup: Lookup, planes: Planes, wholes: Wholes) -> Section | None:
 
 
 def _hull_sentence(lookup: Lookup, hull: HullFinding) -> str:
+    if len(hull.over) == 1 and hull.facets:
+        return _reach_sentence(lookup, hull)
     names = words.listed(lookup.labels.get(name, name) for name in hull.over)
     corners = words.plural(len(hull.corners), "corner lot")
     text = f"Over {names} ({hull.basis} basis) the hull has {corners} and {words.plural(hull.dimension, 'dimension')}"
@@ -151,20 +174,41 @@ def _hull_sentence(lookup: Lookup, hull: HullFinding) -> str:
     return text + " Stock and cost are disregarded."
 
 
+def _reach_sentence(lookup: Lookup, hull: HullFinding) -> str:
+    """A hull over one component in words: from where to where."""
+    name = hull.over[0]
+    ends = sorted(
+        plane.at_most * plane.coefficients[name]
+        for plane in map(_plainest, hull.facets or ())
+        if name in plane.coefficients
+    )
+    unit = lookup.units.get(name, "")
+    reach = words.with_unit(f"{numbers.significant(ends[0], 5)} to {numbers.significant(ends[-1], 5)}", unit)
+    return f"{words.capitalised(lookup.labels.get(name, name))} ({hull.basis} basis) of a blend can be {reach}."
+
+
 def _facets_table(lookup: Lookup, hull: HullFinding, number: int) -> Table | None:
-    if not hull.facets:
+    if not hull.facets or len(hull.over) == 1:
         return None
-    planes = [_plainest(half_plane) for half_plane in hull.facets]
-    rows = [
-        Row(cells=(text_cell(_form_text(lookup, plane)), text_cell(numbers.significant(plane.at_most, 5))))
-        for plane in planes
-    ]
+    rows = [_half_plane_row(lookup, _plainest(half_plane)) for half_plane in hull.facets]
     return Table(
         anchor=f"half-planes-{number}",
         caption="The hull as inequalities",
-        columns=(Column(title="Every blend has"), Column(title="At most", kind="number")),
+        columns=(Column(title="Every blend has"), Column(title="Bound", kind="number")),
         rows=tuple(rows),
     )
+
+
+def _half_plane_row(lookup: Lookup, plane: HalfPlane) -> Row:
+    """A half-plane as a lower bound where every sign is minus: "N at least 10"."""
+    is_lower = all(coefficient <= 0 for coefficient in plane.coefficients.values())
+    sign = -1 if is_lower else 1
+    shown = HalfPlane(
+        coefficients={name: sign * coefficient for name, coefficient in plane.coefficients.items()},
+        at_most=sign * plane.at_most,
+    )
+    bound = f"at {'least' if is_lower else 'most'} {numbers.significant(shown.at_most, 5)}"
+    return Row(cells=(text_cell(_form_text(lookup, shown)), text_cell(bound)))
 
 
 def _plainest(half_plane: HalfPlane) -> HalfPlane:
@@ -269,7 +313,7 @@ def _revisions(lookup: Lookup) -> Section | None:
         Column(title="Program"),
         Column(title="Digest"),
     )
-    table = Table(anchor="revisions-table", caption="Revisions, newest first", columns=columns, rows=tuple(rows))
+    table = Table(anchor="revisions-table", caption="Newest first", columns=columns, rows=tuple(rows), stacks=True)
     return Section(anchor="revisions", title="Revisions", tables=(table,))
 
 
@@ -321,7 +365,9 @@ def problems_section(problems: Sequence[Problem], anchor: str = "problems") -> S
     ]
     titles: Iterable[str] = ("File", "Row", "Column", "Found", "What is wrong", "What to write instead", "Effect")
     columns = tuple(Column(title=title, kind="number" if title == "Row" else "text") for title in titles)
-    table = Table(anchor=f"{anchor}-table", caption="Problems of the input", columns=columns, rows=tuple(rows))
+    table = Table(
+        anchor=f"{anchor}-table", caption="Problems of the input", columns=columns, rows=tuple(rows), stacks=True
+    )
     return Section(anchor=anchor, title="Problems", tables=(table,))
 
 

@@ -46,7 +46,13 @@ def order_history(lookup: Lookup, order: str, page: str) -> tuple[Section, ...]:
         Column(title="What happened"),
     )
     figures = _order_trends(told, order, money)
-    table = _own_table(lookup, rows, columns, page)
+    kept = [
+        position
+        for position, column in enumerate(columns)
+        if column.kind == "text" or any(row.cells[position].text != numbers.UNKNOWN for row in rows)
+    ]
+    rows = [Row(cells=tuple(row.cells[position] for position in kept)) for row in rows]
+    table = _own_table(lookup, rows, tuple(columns[position] for position in kept), page)
     return (Section(anchor="history", title="History", tables=(table,), folded=_folded(figures)),)
 
 
@@ -121,11 +127,21 @@ def _of_order(story: Story, order: str) -> str:
     """What a story says of an order: its edits, then its changed answers and their causes."""
     told = [edit.sentence for edit in story.edits if (edit.kind, edit.name) == ("order", order)]
     own = [change for change in story.changes if change.subject == order and change.kind not in _NOT_OF_ORDERS]
-    return " ".join([*told, *(with_cause(change, story.edits) for change in own[:_MOST_CHANGES_TOLD])])
+    told += [with_cause(change, story.edits) for change in own[:_MOST_CHANGES_TOLD]]
+    return " ".join(_at_home(sentence, f"Order {order}") for sentence in told)
 
 
 def _of_lot(story: Story, lot: str) -> str:
-    return " ".join(edit.sentence for edit in story.edits if (edit.kind, edit.name) == ("lot", lot))
+    told = [edit.sentence for edit in story.edits if (edit.kind, edit.name) == ("lot", lot)]
+    return " ".join(_at_home(sentence, f"Lot {lot}") for sentence in told)
+
+
+def _at_home(sentence: str, name: str) -> str:
+    """A sentence on the page of what it is about, which it need not name: "Its stock fell from 40 to 0 t."."""
+    for opening, instead in ((f"{name}: ", ""), (f"{name}'s ", "Its "), (f"{name} ", "")):
+        if sentence.startswith(opening):
+            return words.capitalised(instead + sentence.removeprefix(opening))
+    return sentence
 
 
 def _revision_cell(lookup: Lookup, line: Line, page: str) -> Cell:
@@ -140,4 +156,4 @@ def _own_table(lookup: Lookup, rows: Sequence[Row], columns: tuple[Column, ...],
     index = addresses.relative(page, history_index(lookup.campaign.slug))
     more = f"All revisions ({left} more of these)" if left else "All revisions"
     closing = Row(cells=(Cell(text=more, href=index), *([text_cell("")] * (len(columns) - 1))))
-    return Table(anchor="history-table", caption="History", columns=columns, rows=(*shown, closing))
+    return Table(anchor="history-table", caption="History", columns=columns, rows=(*shown, closing), stacks=True)

@@ -64,7 +64,7 @@ def changes_section(comparison: Comparison, anchor: str, title: str) -> Section:
     columns = (Column(title="Of"), Column(title="What changed"), *([Column(title="Cause")] if has_cause else []))
     rows = tuple(Row(cells=_change_cells(change, comparison.edits)[: len(columns)]) for change in shown)
     note = _left_out(len(comparison.changes) - len(shown), "change")
-    table = Table(anchor=f"{anchor}-table", caption=title, columns=columns, rows=rows, note=note)
+    table = Table(anchor=f"{anchor}-table", caption=title, columns=columns, rows=rows, note=note, stacks=True)
     return Section(anchor=anchor, title=title, sentences=tuple(sentences), tables=(table,))
 
 
@@ -81,7 +81,7 @@ def edits_section(comparison: Comparison, anchor: str, title: str) -> Section:
         group = edit.group
     columns = (Column(title="Of"), Column(title="Edit"))
     note = _left_out(len(comparison.edits) - len(shown), "edit")
-    table = Table(anchor=f"{anchor}-table", caption=title, columns=columns, rows=tuple(rows), note=note)
+    table = Table(anchor=f"{anchor}-table", caption=title, columns=columns, rows=tuple(rows), note=note, stacks=True)
     return Section(anchor=anchor, title=title, tables=(table,))
 
 

@@ -3,10 +3,11 @@
 from __future__ import annotations
 
 from generator import numbers
-from generator.intake.records import Lot, Measured, Number
+from generator.findings.values import typed_values
+from generator.intake.records import Component, Lot, Measured, Number
 from generator.report import words
 from generator.report.lookup import Lookup, as_typed
-from generator.report.parts import Cell, Column, Fact, Row, Section, Table, text_cell
+from generator.report.parts import Cell, Column, Fact, Row, Section, Table, aligned, text_cell
 from generator.report.shares import lot_cell
 
 
@@ -41,13 +42,34 @@ def _typed(number: Number) -> str:
 
 
 def lot_sentence(lookup: Lookup, lot: Lot) -> str:
-    """The lot's role in one sentence."""
+    """What the lot is good for: where it is used, and whether others can imitate it."""
+    return " ".join(part for part in (_use_sentence(lookup, lot), _role_sentence(lookup, lot)) if part)
+
+
+def _use_sentence(lookup: Lookup, lot: Lot) -> str:
+    """How many orders take it, and how many are lost without it."""
+    orders = lookup.book.findings.orders
+    used = sum(1 for order in orders if (found := order.recipes.get("cheapest")) and found.shares.get(lot.name))
+    finding = lookup.lot_findings.get(lot.name)
+    needed = len(finding.needed_by) if finding else 0
+    if not orders:
+        return ""
+    if not used and not needed:
+        return "No order's cheapest recipe takes it."
+    text = f"In the cheapest recipe of {words.plural(used, 'order')}"
+    if not needed:
+        return f"{text}, and none is lost without it."
+    which = "which is" if used == needed == 1 else f"{needed} of them {'is' if needed == 1 else 'are'}"
+    return f"{text}, {which} lost without it."
+
+
+def _role_sentence(lookup: Lookup, lot: Lot) -> str:
     finding = lookup.lot_findings.get(lot.name)
     if finding is None or finding.role is None:
-        return f"Lot {lot.name} takes no part in the hull."
+        return "It takes no part in the hull."
     if finding.role == "corner":
-        return f"Lot {lot.name} is a corner of the hull: the other lots can't imitate it."
-    return f"Lot {lot.name} is an inner lot: a blend of others has the same composition."
+        return "A corner lot: no blend of the others has its composition."
+    return "An inner lot: a blend of others has the same composition."
 
 
 def lot_sections(lookup: Lookup, lot: Lot, page: str) -> tuple[Section, ...]:
@@ -57,34 +79,53 @@ def lot_sections(lookup: Lookup, lot: Lot, page: str) -> tuple[Section, ...]:
 
 
 def _assay(lookup: Lookup, lot: Lot) -> Section | None:
-    rows = [
-        Row(
-            cells=(
-                text_cell(component.label or component.name),
-                text_cell(component.unit),
-                text_cell(as_typed(lot.assay[component.name])),
-                text_cell(_deviations(lot.assay[component.name])),
-                text_cell(component.basis),
-            )
-        )
-        for component in lookup.campaign.components
-        if component.name in lot.assay
-    ]
-    if not rows:
+    components = [component for component in lookup.campaign.components if component.name in lot.assay]
+    if not components:
         return None
-    columns = (
-        Column(title="Component"),
-        Column(title="Unit"),
-        Column(title="As typed", kind="number"),
-        Column(title="sd", kind="number"),
-        Column(title="Basis"),
+    measured = [lot.assay[component.name] for component in components]
+    typed = aligned(map(as_typed, measured))
+    counts = [_counts_as(lookup, component, lot) for component in components]
+    deviations = [_deviation(component, found) for component, found in zip(components, measured, strict=True)]
+    columns = [Column(title="Component"), Column(title="As typed", kind="number")]
+    texts = [[lookup.name_with_unit(component.name) for component in components], typed]
+    if any(len(found.readings) > 1 or found.readings[0].below for found in measured):
+        columns.append(Column(title="Counts as", kind="number"))
+        texts.append(aligned(counts))
+    if any(deviations):
+        columns.append(Column(title="sd", kind="number"))
+        texts.append([text or numbers.UNKNOWN for text in deviations])
+    columns.append(Column(title="Basis"))
+    texts.append([component.basis for component in components])
+    rows = tuple(Row(cells=tuple(map(text_cell, row))) for row in zip(*texts, strict=True))
+    note = "Counts as: the mean of the readings, each below its detection limit by the campaign's rule."
+    table = Table(
+        anchor="assay-table",
+        caption="Assay",
+        columns=tuple(columns),
+        rows=rows,
+        note=note if any(column.title == "Counts as" for column in columns) else "",
     )
-    table = Table(anchor="assay-table", caption="Assay", columns=columns, rows=tuple(rows))
     return Section(anchor="assay", title="Assay", tables=(table,))
 
 
-def _deviations(measured: Measured) -> str:
-    return "; ".join(_typed(deviation) for deviation in measured.sds) or numbers.UNKNOWN
+def _counts_as(lookup: Lookup, component: Component, lot: Lot) -> str:
+    """The value that the answers use, with one decimal more than was typed where readings were averaged."""
+    measured = lot.assay[component.name]
+    value = typed_values(measured, lookup.campaign.settings.below_detection).stated
+    typed = max(numbers.typed_decimals(reading.value, reading.text) for reading in measured.readings)
+    places = next((places for places in (typed, typed + 1) if (value * 10**places).denominator == 1), typed + 2)
+    return numbers.text(value, places)
+
+
+def _deviation(component: Component, measured: Measured) -> str:
+    """The standard deviation typed beside the assay, else the component's; empty where neither is known."""
+    if measured.sds:
+        return "; ".join(map(_typed, measured.sds))
+    if component.sd is None:
+        return ""
+    return (
+        f"{numbers.exact(component.sd.value * 100)} %" if component.sd.relative else numbers.exact(component.sd.value)
+    )
 
 
 def _imitation(lookup: Lookup, lot: Lot, page: str) -> Section | None:
@@ -97,7 +138,7 @@ def _imitation(lookup: Lookup, lot: Lot, page: str) -> Section | None:
     ]
     columns = (Column(title="Lot"), Column(title="Share", unit="%", kind="number"))
     table = Table(anchor="imitation-table", caption="A blend that imitates it", columns=columns, rows=tuple(rows))
-    return Section(anchor="imitation", title="Imitation", tables=(table,))
+    return Section(anchor="imitation", title="A blend that imitates it", tables=(table,))
 
 
 def _use(lookup: Lookup, lot: Lot, page: str) -> Section | None:
@@ -122,13 +163,20 @@ def _use(lookup: Lookup, lot: Lot, page: str) -> Section | None:
     columns = (
         Column(title="Order"),
         Column(title="Verdict"),
-        Column(title="Share in the cheapest recipe", unit="%", kind="number"),
+        Column(title="Share in cheapest recipe", unit="%", kind="number"),
         Column(title="Lost without it"),
     )
-    table = Table(anchor="use-table", caption="Orders that use it", columns=columns, rows=tuple(rows))
+    table = Table(anchor="use-table", caption="Where it is used", columns=columns, rows=tuple(rows))
     sentences: tuple[str, ...] = ()
     if finding is not None and finding.stock_worth is not None:
         settings = lookup.campaign.settings
-        worth = f"{numbers.money(finding.stock_worth)} {settings.currency} per {settings.quantity_unit}"
-        sentences = (f"One unit more of it is worth {worth}.",)
+        plan = lookup.book.findings.plan
+        gain, unit = finding.stock_worth, settings.quantity_unit
+        if not gain:
+            sentences = ("More of it would add nothing to the plan.",)
+        elif plan is None or plan.measure == "value":
+            sentences = (f"One {unit} more of it would add {numbers.money(gain)} {settings.currency} to the plan.",)
+        else:
+            more = words.with_unit(numbers.significant(gain, 3), unit)
+            sentences = (f"One {unit} more of it would let {more} more be accepted in the plan.",)
     return Section(anchor="use", title="Where it is used", sentences=sentences, tables=(table,))

@@ -7,6 +7,7 @@ from fractions import Fraction
 
 from generator import numbers
 from generator.findings.records import LimitFinding, OrderFinding, Recipe
+from generator.findings.sentences import DIGITS
 from generator.report import words
 from generator.report.figures import strips
 from generator.report.figures.canvas import finished
@@ -14,7 +15,7 @@ from generator.report.lookup import Lookup, as_typed, order_of
 from generator.report.parts import Cell, Column, Fact, FigureView, Legend, Row, Section, Table, aligned, text_cell
 from generator.report.planes import Planes
 from generator.report.proofs import cost_bound_section, proof_section
-from generator.report.shares import amount_places, limit_cell, limit_key, lot_cell, recipe_table, values_table
+from generator.report.shares import limit_cell, limit_key, lot_cell, recipe_table, values_table
 from generator.report.trial import trial_section
 from generator.report.ways_out import room, ways_out, without_lot, worth
 from generator.report.wholes import Wholes
@@ -46,11 +47,15 @@ def order_facts(lookup: Lookup, finding: OrderFinding) -> tuple[Fact, ...]:
     if finding.room is not None and finding.room_unit == "sd":
         facts.append(Fact(name="Room", value=words.with_unit(numbers.significant(finding.room, 3), "sd")))
     if finding.verdict == "short" and finding.greatest_amount is not None:
-        greatest = numbers.text(finding.greatest_amount, amount_places(finding.greatest_amount))
-        facts.append(Fact(name="Greatest amount", value=words.with_unit(greatest, unit)))
+        facts.append(Fact(name="Greatest amount", value=words.with_unit(_greatest_text(finding), unit)))
     if not lookup.campaign.has_stock and not lookup.hides("stock"):
         facts.append(Fact(name="Stock", value="not checked"))
     return tuple(facts)
+
+
+def _greatest_text(finding: OrderFinding) -> str:
+    """The greatest amount with as many digits as the order's sentence gives it."""
+    return numbers.significant(finding.greatest_amount or 0, DIGITS)
 
 
 def amount_text(finding: OrderFinding, unit: str) -> str:
@@ -97,19 +102,20 @@ def _recipes(lookup: Lookup, finding: OrderFinding, page: str) -> tuple[Section,
 
 
 def _recipe(lookup: Lookup, finding: OrderFinding, name: str, recipe: Recipe, page: str) -> Section:
-    sentences = [words.RECIPE_MEANINGS[name]]
-    if recipe.remark:
-        sentences.append(recipe.remark)
+    # A remark says what could be had in place of what the recipe is meant to be.
+    sentences = [recipe.remark or words.RECIPE_MEANINGS[name]]
     if recipe.conformity.all is not None:
         together = numbers.text(Fraction(recipe.conformity.all) * 100, 1)
-        sentences.append(f"All limits hold together with a probability of {together} %. {words.ASSAY_ERROR}")
+        told = f"All limits hold together with a probability of {together} %."
+        is_first = name == next(other for other in finding.recipes if finding.recipes[other].conformity.all is not None)
+        sentences.append(f"{told} {words.ASSAY_ERROR}" if is_first else told)
     caption = words.RECIPE_WORDS[name]
     return Section(
         anchor=name,
         title=caption,
         sentences=tuple(sentences),
         tables=(
-            recipe_table(lookup, finding, recipe, f"{name}-recipe", f"{caption}: what goes in", page),
+            recipe_table(lookup, finding, recipe, f"{name}-recipe", "What goes in", page),
             *([_recipe_values(lookup, finding, recipe, name)] if finding.limits else []),
         ),
         layout="beside",
@@ -118,9 +124,7 @@ def _recipe(lookup: Lookup, finding: OrderFinding, name: str, recipe: Recipe, pa
 
 def _recipe_values(lookup: Lookup, finding: OrderFinding, recipe: Recipe, name: str) -> Table:
     """Limits and the blend's values, with the probability of each where it is known."""
-    table = values_table(
-        lookup, finding, recipe.values, f"{name}-values", f"{words.RECIPE_WORDS[name]}: what comes out", "Blend"
-    )
+    table = values_table(lookup, finding, recipe.values, f"{name}-values", "What comes out", "Blend")
     if not any(probability is not None for probability in recipe.conformity.each.values()):
         return table
     rows = []
@@ -137,22 +141,26 @@ def _greatest(lookup: Lookup, finding: OrderFinding, page: str) -> Section | Non
     if finding.verdict != "short" or not finding.greatest_recipe or finding.greatest_amount is None:
         return None
     unit = lookup.campaign.settings.quantity_unit
-    places = amount_places(finding.greatest_amount)
+    total = _greatest_text(finding)
+    places = numbers.decimals([total])
+    amounts = numbers.apportioned(
+        {name: Fraction(share) for name, share in finding.greatest_recipe.items()},
+        Fraction(round(Fraction(finding.greatest_amount) * 10**places), 10**places),
+        places,
+    )
     shares = {name: Fraction(share) for name, share in finding.greatest_recipe.items()}
     percent = numbers.percent_shares(shares, max(1, numbers.share_places(shares.values())))
     share_places = max(1, numbers.share_places(shares.values()))
     rows = []
-    for name, share in finding.greatest_recipe.items():
+    for name, amount in amounts.items():
         runs_out = "runs out" if name in finding.runs_out else ""
-        amount = numbers.text(share * finding.greatest_amount, places)
         cells = (
             lot_cell(lookup, name, page),
             text_cell(numbers.text(percent[name], share_places)),
-            text_cell(amount),
+            text_cell(numbers.text(amount, places)),
             text_cell(runs_out),
         )
         rows.append(Row(cells=cells))
-    total = numbers.text(finding.greatest_amount, places)
     rows.append(
         Row(
             cells=(text_cell("Blend"), text_cell(numbers.text(100, share_places)), text_cell(total), text_cell("")),
@@ -165,7 +173,7 @@ def _greatest(lookup: Lookup, finding: OrderFinding, page: str) -> Section | Non
         Column(title="Amount", unit=unit, kind="number"),
         Column(title="Stock"),
     )
-    table = Table(anchor="greatest-recipe", caption="The greatest amount", columns=columns, rows=tuple(rows))
+    table = Table(anchor="greatest-recipe", caption="Greatest amount", columns=columns, rows=tuple(rows))
     sentence = f"At most {words.with_unit(total, unit)} can be made within the limits from this stock."
     return Section(anchor="greatest", title="Greatest amount", sentences=(sentence,), tables=(table,))
 
@@ -287,7 +295,7 @@ def _left_out(lookup: Lookup, finding: OrderFinding, page: str) -> Section | Non
     rows = [Row(cells=(lot_cell(lookup, name, page), text_cell(reason))) for name, reason in finding.left_out.items()]
     table = Table(
         anchor="left-out-lots",
-        caption="Lots that this order can't use",
+        caption="Lots left out",
         columns=(Column(title="Lot"), Column(title="Reason")),
         rows=tuple(rows),
     )
@@ -332,7 +340,7 @@ def _assays(lookup: Lookup, finding: OrderFinding, page: str) -> Section | None:
     ]
     table = Table(
         anchor="assays-table",
-        caption="Assays as typed",
+        caption="As typed",
         columns=tuple(columns),
         rows=tuple(rows),
         note=f"Typed on basis: {words.listed(sorted({component.basis for component in components}))}.",

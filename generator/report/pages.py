@@ -5,7 +5,8 @@ Pure functions from records to bytes; addresses are paths below the output folde
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections import Counter
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 from markupsafe import Markup
@@ -15,7 +16,13 @@ from generator.findings.records import OrderFinding
 from generator.intake.records import Lot
 from generator.report import addresses, words
 from generator.report.batch_view import Card, batch_card, card_addresses, card_facts, card_lead
-from generator.report.campaign_view import campaign_sections, problems_section, record_sections, verdict_counts
+from generator.report.campaign_view import (
+    campaign_facts,
+    campaign_sections,
+    problems_section,
+    record_sections,
+    verdict_counts,
+)
 from generator.report.history_own import lot_history, order_history
 from generator.report.lookup import Lookup, lookup_of
 from generator.report.lot_view import lot_facts, lot_sections, lot_sentence
@@ -56,6 +63,8 @@ class Page:
     verdict: str = ""
     verdict_word: str = ""
     verdict_meaning: str = ""
+    counts: tuple[tuple[str, str, int], ...] = ()
+    counts_in_words: str = ""
     previous: Link | None = None
     following: Link | None = None
     facts: tuple[Fact, ...] = ()
@@ -145,17 +154,27 @@ def dressed(page: Page, theme: Theme) -> Page:
 
 def draw_index(entries: Iterable[IndexEntry], theme: Theme, version: str = __version__) -> bytes:
     """The index of all campaigns, in the order given."""
-    rows = tuple(_index_row(entry) for entry in entries)
+    listed = list(entries)
+    rows = tuple(_index_row(entry) for entry in listed)
+    totals = Counter[str]()
+    for entry in listed:
+        totals.update(entry.counts)
     page = Page(
         title="Campaigns",
-        lead=_index_lead(rows),
+        lead=_index_lead(rows, totals),
         style=addresses.relative(INDEX, theme.style_address),
         method=METHOD,
         crumbs=(),
         version=version,
         kind="index",
     )
-    return theme.render("index.html", page=dressed(page, theme), rows=rows).encode()
+    return theme.render(
+        "index.html",
+        page=dressed(page, theme),
+        rows=rows,
+        totals=words.told_counts(totals) if len(rows) > 1 else (),
+        totals_in_words=words.counts_in_words(totals),
+    ).encode()
 
 
 def draw_method(theme: Theme, version: str = __version__) -> bytes:
@@ -181,12 +200,16 @@ def assets(theme: Theme) -> dict[str, bytes]:
     return {**files, theme.logo_address: theme.logo.data} if theme.logo else files
 
 
-def _index_lead(rows: Sequence[IndexRow]) -> str:
+def _index_lead(rows: Sequence[IndexRow], totals: Mapping[str, int]) -> str:
     if not rows:
         return "There is no campaign yet: copy a folder with assays.csv and targets.csv into the campaigns folder."
     stopped = sum(1 for row in rows if row.is_stopped)
-    lead = words.plural(len(rows), "campaign")
-    return f"{lead}, {stopped} of them stopped by a problem." if stopped else f"{lead}."
+    told = f"{words.plural(len(rows), 'campaign')}."
+    if totals:
+        told += f" {words.made(totals)}"
+    if stopped:
+        told += f" {words.plural(stopped, 'campaign')} {'is' if stopped == 1 else 'are'} stopped by problems."
+    return told
 
 
 def _index_row(entry: IndexEntry) -> IndexRow:
@@ -194,7 +217,7 @@ def _index_row(entry: IndexEntry) -> IndexRow:
     return IndexRow(
         title=entry.title,
         href=addresses.relative(INDEX, f"{entry.slug}/{INDEX}"),
-        counts=tuple((v, words.VERDICT_WORDS[v], entry.counts[v]) for v in words.VERDICTS if entry.counts.get(v)),
+        counts=words.told_counts(entry.counts),
         in_words=words.counts_in_words(entry.counts) or "no answers",
         together=entry.together,
         recorded=words.moment(entry.recorded),
@@ -225,12 +248,15 @@ def _campaign_page(lookup: Lookup, planes: Planes, wholes: Wholes, theme: Theme)
     counts = verdict_counts(findings.orders)
     return Page(
         title=book.campaign.settings.title,
-        lead=words.summary(findings, counts, book.campaign.has_stock or lookup.hides("stock")),
+        lead=words.summary(findings, counts),
         style=addresses.relative(lookup.home, theme.style_address),
         method=addresses.relative(lookup.home, METHOD),
         crumbs=(Link(text="Campaigns", href=addresses.relative(lookup.home, INDEX)),),
         version=book.version,
         kind="campaign",
+        counts=words.told_counts(counts),
+        counts_in_words=words.counts_in_words(counts),
+        facts=campaign_facts(lookup),
         banner=_banner(book),
         sections=campaign_sections(lookup, planes, wholes),
         closing=record_sections(lookup),
@@ -258,7 +284,7 @@ def _order_page(
 
     return Page(
         title=f"Order {finding.order}",
-        lead=finding.sentence,
+        lead=words.beside_verdict(finding.sentence),
         style=addresses.relative(address, theme.style_address),
         method=addresses.relative(address, METHOD),
         crumbs=_crumbs(lookup, address),
@@ -306,11 +332,20 @@ def _plan_sheets(lookup: Lookup, theme: Theme) -> list[Sheet]:
     findings = [finding for finding in lookup.book.findings.orders if finding.order in cards]
     return [
         Sheet(address=address, template="plan.html", page=page),
-        *(_card_sheet(lookup, theme, finding, cards[finding.order]) for finding in findings),
+        *(_card_sheet(lookup, theme, findings, position) for position in range(len(findings))),
     ]
 
 
-def _card_sheet(lookup: Lookup, theme: Theme, finding: OrderFinding, address: str) -> Sheet:
+def _card_sheet(lookup: Lookup, theme: Theme, findings: Sequence[OrderFinding], position: int) -> Sheet:
+    finding, cards = findings[position], card_addresses(lookup)
+    address = cards[finding.order]
+
+    def neighbour(step: int) -> Link | None:
+        if not 0 <= position + step < len(findings):
+            return None
+        name = findings[position + step].order
+        return Link(text=f"Card {name}", href=addresses.relative(address, cards[name]))
+
     back = Link(text=f"Order {finding.order}", href=addresses.relative(address, lookup.order_addresses[finding.order]))
     page = Page(
         title=f"Batch card, order {finding.order}",
@@ -320,11 +355,13 @@ def _card_sheet(lookup: Lookup, theme: Theme, finding: OrderFinding, address: st
         crumbs=(*_crumbs(lookup, address), back),
         version=lookup.book.version,
         kind="batch",
+        previous=neighbour(-1),
+        following=neighbour(1),
         facts=card_facts(lookup, finding),
         banner=_banner(lookup.book),
         cautions=_cautions(lookup),
         revision=_revision(lookup.book),
-        card=batch_card(lookup, finding),
+        card=batch_card(lookup, finding, address),
     )
     return Sheet(address=address, template="batch.html", page=page)
 

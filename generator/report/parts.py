@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Iterable
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from typing import Literal
 
 FIGURE_SPACE = "\N{FIGURE SPACE}"
@@ -49,42 +49,54 @@ class Row:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Table:
-    """A table with a caption, an anchor and headers; ``note`` is a sentence below it."""
+    """A table with a caption, an anchor and headers; ``note`` is a sentence below it.
+
+    A table of few numbers and long text ``stacks``: on a narrow screen each row is a card.
+    """
 
     anchor: str
     caption: str
     columns: tuple[Column, ...]
     rows: tuple[Row, ...]
     note: str = ""
-    is_caption_shown: bool = True
+    stacks: bool = False
 
     @property
     def lines(self) -> list[Line]:
-        """The rows as a template lays them out: each with its header, and every cell with the classes it wears."""
-        kinds = [column.kind for column in self.columns]
+        """The rows as a template lays them out: each with its header, and every cell with the classes it wears.
+
+        With a cell stands the column that a card has to name beside it, if any.
+        """
         lines: list[Line] = []
         for row in self.rows:
-            dressed = [(cell, _dress(cell, kind)) for cell, kind in zip(row.cells, kinds, strict=False)]
-            lines.append((row, *dressed[0], dressed[1:]))
+            dressed = [
+                (cell, self._dress(cell, column), column if self._names(cell, column) else None)
+                for cell, column in zip(row.cells, self.columns, strict=False)
+            ]
+            lines.append((row, *dressed[0][:2], dressed[1:]))
         return lines
 
+    def _dress(self, cell: Cell, column: Column) -> str:
+        names = "s" if len(cell.text) < _SHORT else ""
+        if column.kind == "number":
+            names += " n"
+        if cell.tone:
+            names += f" {cell.tone}"
+        if cell.mark:
+            names += f" v-{cell.mark}"
+        if self.stacks and cell.text == "–":
+            names += " none"
+        return names.lstrip()
 
-#: A row, its first cell with its classes, and the other cells with theirs.
-Line = tuple[Row, Cell, str, list[tuple[Cell, str]]]
+    def _names(self, cell: Cell, column: Column) -> bool:
+        return self.stacks and column.kind == "number" and bool(cell.text)
+
+
+#: A row, its first cell with its classes, and the other cells with theirs and with the column that is named there.
+Line = tuple[Row, Cell, str, list[tuple[Cell, str, Column | None]]]
 
 #: A cell with less text than this is not broken into lines.
 _SHORT = 18
-
-
-def _dress(cell: Cell, kind: Kind) -> str:
-    names = "s" if len(cell.text) < _SHORT else ""
-    if kind == "number":
-        names += " n"
-    if cell.tone:
-        names += f" {cell.tone}"
-    if cell.mark:
-        names += f" v-{cell.mark}"
-    return names.lstrip()
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -108,27 +120,31 @@ class FigureView:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Fact:
-    """A name and a value, as in "Client: …"."""
+    """A name and a value, as in "Client: …"; ``href`` is where the value leads, ``tone`` as of a cell."""
 
     name: str
     value: str
+    href: str = ""
+    tone: str = ""
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Section:
-    """A part of a page: heading, sentences, tables, figures, and folded parts that show their heading only.
+    """A part of a page: heading, sentences, facts, tables, figures, and folded parts that show their heading only.
 
-    ``trial`` is the data of a trial blend as JSON that can stand in markup; its section is shown by a script.
+    ``points`` are sentences that stand as a list.  ``trial`` is the data of a trial blend as JSON that can
+    stand in markup; its section is shown by a script.
     """
 
     anchor: str
     title: str
     sentences: tuple[str, ...] = ()
+    points: tuple[str, ...] = ()
     tables: tuple[Table, ...] = ()
     figures: tuple[FigureView, ...] = ()
     folded: tuple[Section, ...] = ()
     layout: Literal["plain", "beside", "grid"] = "plain"
-    facts: tuple[Fact, ...] = field(default=())
+    facts: tuple[Fact, ...] = ()
     trial: str = ""
 
 

@@ -64,15 +64,27 @@ def plan_lead(lookup: Lookup, plan: Plan) -> str:
     return text
 
 
+def plan_value(lookup: Lookup) -> str:
+    """What the plan comes to, in a word or two: its value, else the amount accepted."""
+    plan = lookup.book.findings.plan
+    if plan is not None and plan.value is not None and plan.measure == "value":
+        return words.with_unit(_money(plan.value), lookup.campaign.settings.currency)
+    return _accepted(lookup, plan) if plan else ""
+
+
+def _accepted(lookup: Lookup, plan: Plan) -> str:
+    accepted = sum(planned.accepted for planned in plan.orders.values())
+    return words.with_unit(numbers.text(accepted, amount_places(accepted)), lookup.campaign.settings.quantity_unit)
+
+
 def plan_facts(lookup: Lookup, plan: Plan) -> tuple[Fact, ...]:
     """What can be said of the plan in a word or two."""
-    settings = lookup.campaign.settings
-    accepted = sum(planned.accepted for planned in plan.orders.values())
-    total = words.with_unit(numbers.text(accepted, amount_places(accepted)), settings.quantity_unit)
-    facts = [Fact(name="Accepted", value=total), Fact(name="Search", value=plan_words.certainty_short(plan))]
+    facts = [
+        Fact(name="Accepted", value=_accepted(lookup, plan)),
+        Fact(name="Search", value=plan_words.certainty_short(plan)),
+    ]
     if plan.value is not None and plan.measure == "value":
-        value = words.with_unit(_money(plan.value), settings.currency)
-        facts.insert(0, Fact(name="Value", value=value))
+        facts.insert(0, Fact(name="Value", value=plan_value(lookup)))
     facts.append(Fact(name="Lots that run out", value=str(len(plan.runs_out))))
     if not lookup.campaign.has_stock and not lookup.hides("stock"):
         facts.append(Fact(name="Stock", value="not checked"))
@@ -100,27 +112,19 @@ def order_in_plan(lookup: Lookup, finding: OrderFinding, page: str, cards: Mappi
         return ()
     settings = lookup.campaign.settings
     loser = next((item for item in plan.losers if item.order == finding.order), None)
+    # Why an order fails that fails alone stands on this page already.
+    is_told = loser is not None and loser.reason != "alone"
     sentences = (
-        plan_words.loser_sentences(loser, plan, settings.quantity_unit, settings.currency) if loser is not None else ()
+        plan_words.loser_sentences(loser, plan, settings.quantity_unit, settings.currency) if loser and is_told else ()
     )
-    places = _places(plan)
-    cells = [
-        Cell(text="All orders together", href=lookup.link(page, plan_address(lookup))),
-        _state_cell(planned),
-        text_cell(_amount(planned.accepted, places)),
-    ]
-    columns = [
-        Column(title="Plan"),
-        Column(title="Served"),
-        Column(title="Accepted", unit=settings.quantity_unit, kind="number"),
-    ]
+    facts = [Fact(name="Beside the other orders", value=f"{_STATES[planned.state]}", tone=_SIGNS[planned.state])]
+    if planned.accepted:
+        accepted = words.with_unit(_amount(planned.accepted, _places(plan)), settings.quantity_unit)
+        facts.append(Fact(name="Accepted", value=accepted))
     if finding.order in cards:
-        cells.append(Cell(text="Batch card", href=lookup.link(page, cards[finding.order])))
-        columns.append(Column(title="To weigh"))
-    table = Table(
-        anchor="in-plan-table", caption="In the plan", columns=tuple(columns), rows=(Row(cells=tuple(cells)),)
-    )
-    return (Section(anchor="in-plan", title="In the plan", sentences=sentences, tables=(table,)),)
+        facts.append(Fact(name="To weigh", value="Batch card", href=lookup.link(page, cards[finding.order])))
+    facts.append(Fact(name="All orders", value="The whole plan", href=lookup.link(page, plan_address(lookup))))
+    return (Section(anchor="in-plan", title="In the plan", sentences=sentences, facts=tuple(facts)),)
 
 
 def _order_cell(lookup: Lookup, name: str, page: str) -> Cell:
@@ -143,7 +147,13 @@ def _places(plan: Plan) -> int:
 
 def _money(value: float | None) -> str:
     """An amount of money; from 10 000 on its hundredths say nothing."""
-    return numbers.UNKNOWN if value is None else numbers.money(value, 2 if abs(value) < WHOLE_FROM else 0)
+    return _moneys([value])[0]
+
+
+def _moneys(values: Sequence[float | None]) -> list[str]:
+    """Amounts of money of one column: without hundredths where one of them is too great for them."""
+    places = 0 if any(value is not None and abs(value) >= WHOLE_FROM for value in values) else 2
+    return [numbers.UNKNOWN if value is None else numbers.money(value, places) for value in values]
 
 
 def _orders(lookup: Lookup, plan: Plan, page: str, cards: Mapping[str, str]) -> Section:
@@ -169,7 +179,8 @@ def _orders(lookup: Lookup, plan: Plan, page: str, cards: Mapping[str, str]) -> 
     if cards:
         columns.append(Column(title="Batch card"))
     rows, places = [], _places(plan)
-    for name, planned in plan.orders.items():
+    incomes, costs, gains = _money_columns(plan)
+    for position, (name, planned) in enumerate(plan.orders.items()):
         verdict = verdicts.get(name, "none")
         cells = [
             _order_cell(lookup, name, page),
@@ -180,25 +191,33 @@ def _orders(lookup: Lookup, plan: Plan, page: str, cards: Mapping[str, str]) -> 
             text_cell(_amount(planned.accepted, places)),
         ]
         if has_money:
-            cells.append(text_cell(_money(planned.income)))
+            cells.append(text_cell(incomes[position]))
         if has_cost:
-            cells.append(text_cell(_money(planned.cost)))
+            cells.append(text_cell(costs[position]))
         if has_money and has_cost:
-            gain = None if planned.income is None or planned.cost is None else planned.income - planned.cost
-            cells.append(text_cell(_money(gain)))
+            cells.append(text_cell(gains[position]))
         if cards:
             link = lookup.link(page, cards[name]) if name in cards else ""
             cells.append(Cell(text="card" if link else "", href=link))
         rows.append(Row(cells=tuple(cells)))
     table = Table(
         anchor="together-table",
-        caption="Orders, served together",
+        caption="Orders together",
         columns=tuple(columns),
         rows=tuple(rows),
         note="Alone: the verdict with all stock to itself. Together: what the plan gives it beside the others."
         + (" Income: price × accepted." if has_money else ""),
     )
     return Section(anchor="together", title="Orders together", tables=(table,))
+
+
+def _money_columns(plan: Plan) -> tuple[list[str], list[str], list[str]]:
+    """Income, cost and gain of every order, alike in their decimals."""
+    orders = plan.orders.values()
+    gains = [None if one.income is None or one.cost is None else one.income - one.cost for one in orders]
+    count = len(gains)
+    texts = _moneys([*(one.income for one in orders), *(one.cost for one in orders), *gains])
+    return texts[:count], texts[count : 2 * count], texts[2 * count :]
 
 
 def _losers(lookup: Lookup, plan: Plan, page: str) -> Section | None:
@@ -217,6 +236,7 @@ def _losers(lookup: Lookup, plan: Plan, page: str) -> Section | None:
         caption="Orders that are not served in full",
         columns=columns,
         rows=tuple(rows),
+        stacks=True,
         note="Each question keeps the plan as it is but for one thing: the other orders get what they got, "
         "from the lots that they use. Answered in floating point, to about seven digits.",
     )
@@ -252,9 +272,7 @@ def _amounts(lookup: Lookup, plan: Plan, page: str) -> Section | None:
         *(Column(title=name, kind="number") for name in served),
         Column(title="All orders", kind="number"),
     )
-    table = Table(
-        anchor="amounts-table", caption=f"Amounts by lot and order, {unit}", columns=columns, rows=tuple(rows)
-    )
+    table = Table(anchor="amounts-table", caption=f"By lot and order, {unit}", columns=columns, rows=tuple(rows))
     return Section(anchor="amounts", title="Amounts", tables=(table,))
 
 
@@ -333,7 +351,7 @@ def _leftover(lookup: Lookup, plan: Plan, page: str) -> Section | None:
     )
     table = Table(
         anchor="leftover-table",
-        caption="What the stock left can still make",
+        caption="What the rest can make",
         columns=columns,
         rows=tuple(rows),
         note="Each line alone: the greatest amount from the stock that the plan leaves, within the order's limits "
@@ -371,7 +389,7 @@ def _search(lookup: Lookup, plan: Plan) -> Section:
     )
     table = Table(
         anchor="stages-table",
-        caption="Objectives, one after another",
+        caption="What was sought, one after another",
         columns=columns,
         rows=tuple(rows),
         note="While a stage is searched, those before it are held within one millionth of their best; a choice of "

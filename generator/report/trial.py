@@ -77,6 +77,8 @@ def _starts(finding: OrderFinding) -> dict[str, Mapping[str, float]]:
         for name, recipe in finding.recipes.items()
         if name in ("cheapest", "assured", "roomiest")
     }
+    if finding.verdict == "short" and finding.greatest_recipe:
+        starts["Greatest amount"] = finding.greatest_recipe
     if finding.nearest is not None:
         starts["Nearest blend"] = finding.nearest.shares
     return starts

@@ -11,9 +11,11 @@ from generator.report import words
 from generator.report.figures import curve
 from generator.report.figures.canvas import finished
 from generator.report.lookup import Lookup
-from generator.report.parts import Cell, Column, FigureView, Row, Section, Table, text_cell
+from generator.report.parts import Cell, Column, FigureView, Row, Section, Table, aligned, text_cell
 from generator.report.shares import limit_cell, lot_cell, values_table
 
+#: With more lots than this the shares of the curve's recipes are told in words.
+_MOST_CURVE_LOTS = 6
 #: A longer list of prices is folded.
 _MOST_OPEN = 12
 _STEP = (
@@ -28,10 +30,9 @@ def ways_out(lookup: Lookup, finding: OrderFinding, page: str) -> Section | None
     sentences = []
     if finding.nearest is not None:
         tables += _nearest_tables(lookup, finding, page)
-        broken = [name for name, excess in finding.nearest.excess.items() if excess]
-        labels = words.listed(lookup.labels.get(name, name) for name in broken)
-        if broken:
-            sentences.append(f"The nearest blend breaks the limits least: it misses {labels}.")
+        missed = words.listed(_miss(lookup, name, excess) for name, excess in finding.nearest.excess.items() if excess)
+        if missed:
+            sentences.append(f"The nearest blend breaks the limits least: it misses {missed}.")
     if any(wanted.values is not None for wanted in finding.wanted_lot):
         tables.append(_wanted_table(lookup, finding))
     elif finding.wanted_lot:
@@ -41,6 +42,14 @@ def ways_out(lookup: Lookup, finding: OrderFinding, page: str) -> Section | None
     return Section(
         anchor="ways-out", title="Ways out", sentences=tuple(sentences), tables=tuple(tables), layout="beside"
     )
+
+
+def _miss(lookup: Lookup, name: str, excess: float) -> str:
+    """Words such as "K₂O by 1.8 %"."""
+    size = numbers.text(abs(excess), lookup.places.get(name, 2))
+    if not size.strip("0."):
+        size = numbers.significant(abs(excess), 1)
+    return f"{lookup.labels.get(name, name)} by {words.with_unit(size, lookup.units.get(name, ''))}"
 
 
 def _nearest_tables(lookup: Lookup, finding: OrderFinding, page: str) -> list[Table]:
@@ -85,9 +94,10 @@ def _wanted_table(lookup: Lookup, finding: OrderFinding) -> Table:
         rows.append(Row(cells=(share, *cells)))
     return Table(
         anchor="wanted-lot",
-        caption="Wanted lot: the composition that one further lot would need",
+        caption="Wanted lot",
         columns=tuple(columns),
         rows=tuple(rows),
+        note="The composition that one further lot would need, for the share that it would have of the order.",
     )
 
 
@@ -98,34 +108,35 @@ def room(lookup: Lookup, finding: OrderFinding) -> Section | None:
     settings = lookup.campaign.settings
     unit = "sd" if finding.room_unit == "sd" else "steps"
     money = f"{settings.currency} per {settings.quantity_unit}"
-    caption = "What more room costs: each corner of the line is a recipe."
+    caption = "What more room costs: each mark on the line is a recipe."
     svg = finished(
         curve.draw([(point.room, point.cost) for point in finding.curve], unit, money),
         "fig-curve",
         "Cost–room curve",
-        f"{caption} The table beside it has every corner.",
+        f"{caption} The table beside it has every one.",
     )
     figure = FigureView(anchor="curve", title="Cost–room curve", svg=svg, caption=caption)
-    rows = [
-        Row(
-            cells=(
-                text_cell(numbers.significant(point.room, 3)),
-                text_cell(numbers.money(point.cost)),
-                text_cell(_shares_in_words(point.shares)),
-            )
-        )
-        for point in finding.curve
-    ]
-    columns = (
-        Column(title="Room", unit=unit, kind="number"),
-        Column(title="Cost", unit=money, kind="number"),
-        Column(title="Shares"),
-    )
-    table = Table(anchor="curve-corners", caption="Corners of the curve", columns=columns, rows=tuple(rows))
+    table = _curve_table(finding, unit, money)
     sentences = () if finding.room_unit == "sd" else (_STEP,)
     return Section(
         anchor="room", title="Room and cost", sentences=sentences, figures=(figure,), tables=(table,), layout="beside"
     )
+
+
+def _curve_table(finding: OrderFinding, unit: str, money: str) -> Table:
+    """Every recipe of the curve: its shares lot by lot where few lots take part, else in words."""
+    lots = list(dict.fromkeys(lot for point in finding.curve for lot in point.shares))
+    columns = [Column(title="Room", unit=unit, kind="number"), Column(title="Cost", unit=money, kind="number")]
+    rooms = aligned(numbers.significant(point.room, 3) for point in finding.curve)
+    rows = []
+    is_wide = len(lots) > _MOST_CURVE_LOTS
+    columns += [Column(title="Shares")] if is_wide else [Column(title=lot, unit="%", kind="number") for lot in lots]
+    for room_text, point in zip(rooms, finding.curve, strict=True):
+        percent = numbers.percent_shares({name: Fraction(share) for name, share in point.shares.items()}, 1)
+        texts = [numbers.text(percent[lot], 1) if lot in percent else numbers.UNKNOWN for lot in lots]
+        shares = [_shares_in_words(point.shares)] if is_wide else texts
+        rows.append(Row(cells=tuple(map(text_cell, (room_text, numbers.money(point.cost), *shares)))))
+    return Table(anchor="curve-corners", caption="The recipes", columns=tuple(columns), rows=tuple(rows))
 
 
 def _shares_in_words(shares: Mapping[str, float]) -> str:
@@ -151,7 +162,7 @@ def without_lot(lookup: Lookup, finding: OrderFinding, page: str) -> Section | N
         per = f"{settings.currency} per {settings.quantity_unit}"
         columns.append(Column(title="Least cost", unit=per, kind="number"))
     table = Table(anchor="without", caption="If a lot were missing", columns=tuple(columns), rows=tuple(rows))
-    return Section(anchor="without-lot", title="Without this lot", tables=(table,))
+    return Section(anchor="without-lot", title="If a lot were missing", tables=(table,))
 
 
 def worth(lookup: Lookup, finding: OrderFinding, page: str) -> Section | None:
@@ -171,20 +182,26 @@ def worth(lookup: Lookup, finding: OrderFinding, page: str) -> Section | None:
             Table(anchor="worth-limits", caption="What loosening a limit saves", columns=columns, rows=tuple(rows))
         )
     folded = []
-    for prices, name, caption in (
-        (finding.stays_up_to, "stays-up-to", "Up to what price a used lot stays"),
-        (finding.enters_at, "enters-at", "At what price an unused lot would enter"),
+    for prices, name, caption, title in (
+        (finding.stays_up_to, "stays-up-to", "Lots in the recipe", "Stays up to"),
+        (finding.enters_at, "enters-at", "Lots not in it", "Would enter at"),
     ):
         if not prices:
             continue
-        table = _prices_table(lookup, prices, name, caption, money, page)
+        table = _prices_table(lookup, prices, name, (caption, title), money, page)
         if len(prices) > _MOST_OPEN:
             folded.append(Section(anchor=f"{name}-lots", title=caption, tables=(table,)))
         else:
             tables.append(table)
     if not tables and not folded:
         return None
-    return Section(anchor="worth", title="Worth", tables=tuple(tables), folded=tuple(folded), layout="beside")
+    return Section(
+        anchor="worth",
+        title="What limits and lots are worth",
+        tables=tuple(tables),
+        folded=tuple(folded),
+        layout="beside",
+    )
 
 
 def _worth_row(lookup: Lookup, limit: LimitFinding) -> Row:
@@ -199,8 +216,10 @@ def _worth_row(lookup: Lookup, limit: LimitFinding) -> Row:
 
 
 def _prices_table(
-    lookup: Lookup, prices: Mapping[str, float | None], anchor: str, caption: str, money: str, page: str
+    lookup: Lookup, prices: Mapping[str, float | None], anchor: str, titles: tuple[str, str], money: str, page: str
 ) -> Table:
+    """What each lot costs, and the price at which the cheapest recipe would change; ``titles``: caption, column."""
+    caption, title = titles
     rows = []
     for name, price in prices.items():
         own = lookup.lot(name).cost if name in lookup.positions else None
@@ -213,6 +232,6 @@ def _prices_table(
     columns = (
         Column(title="Lot"),
         Column(title="Costs now", unit=money, kind="number"),
-        Column(title="Price", unit=money, kind="number"),
+        Column(title=title, unit=money, kind="number"),
     )
     return Table(anchor=anchor, caption=caption, columns=columns, rows=tuple(rows))

@@ -80,17 +80,31 @@ def counts_in_words(counts: Mapping[str, int]) -> str:
     return listed(f"{counts[verdict]} {VERDICT_WORDS[verdict]}" for verdict in VERDICTS if counts.get(verdict))
 
 
-def summary(findings: Findings, counts: Mapping[str, int], is_stock_known: bool) -> str:
-    """What a campaign's answers come to, in a sentence or two."""
-    corners = sum(1 for lot in findings.lots if lot.role == "corner")
-    lots = plural(len(findings.lots), "lot")
-    if corners:
-        lots += f", {corners} of them {'a corner' if corners == 1 else 'corners'} of the hull"
+def told_counts(counts: Mapping[str, int]) -> tuple[tuple[str, str, int], ...]:
+    """Each verdict that occurs, with its word and how often, in the order in which verdicts stand everywhere."""
+    return tuple((verdict, VERDICT_WORDS[verdict], counts[verdict]) for verdict in VERDICTS if counts.get(verdict))
+
+
+def made(counts: Mapping[str, int]) -> str:
+    """Words such as "5 of 10 orders can be made, each taken alone."; ``counts`` by verdict, not all 0."""
+    total, able = sum(counts.values()), counts.get("makeable", 0) + counts.get("edge", 0)
+    if total == 1:
+        return f"The one order can{'' if able else 'not'} be made."
+    who = f"All {total}" if able == total else f"{able} of {total}" if able else f"None of {total}"
+    return f"{who} orders can be made, each taken alone."
+
+
+def summary(findings: Findings, counts: Mapping[str, int]) -> str:
+    """What a campaign's answers come to, in a sentence or two: alone, and together from one stock."""
     if not findings.orders:
-        return f"No order is open. {lots}."
-    alone = ", each taken alone" if len(findings.orders) > 1 else ""
-    stock = "" if is_stock_known else " Stock not checked."
-    return f"{plural(len(findings.orders), 'order')}{alone}: {counts_in_words(counts)}. {lots}.{stock}"
+        return "No order is open."
+    plan = findings.plan
+    if plan is None or len(findings.orders) < 2:
+        return made(counts)
+    states = [planned.state for planned in plan.orders.values()]
+    served, partial = len(states) - states.count("none"), states.count("part")
+    part = "" if not partial else ", in part" if partial == served else f", {partial} of them in part"
+    return f"{made(counts)} Together the plan serves {served or 'none'}{part}."
 
 
 def together(findings: Findings) -> str:
@@ -106,6 +120,22 @@ def together(findings: Findings) -> str:
     if partial:
         text += ", in part" if partial == served else f", {partial} of them in part"
     return text
+
+
+#: How a sentence begins that says its verdict first.
+_OPENINGS = ("Makeable: ", "Short: ", "Barred: ")
+
+
+def beside_verdict(sentence: str) -> str:
+    """An order's sentence as it stands beside its verdict, which it need not say again."""
+    for opening in _OPENINGS:
+        sentence = sentence.removeprefix(opening)
+    return capitalised(sentence)
+
+
+def capitalised(sentence: str) -> str:
+    """A sentence with a capital first letter, and the rest as it is."""
+    return sentence[:1].upper() + sentence[1:]
 
 
 def moment(recorded: str) -> str:

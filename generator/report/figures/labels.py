@@ -19,6 +19,8 @@ _GAPS = (5.0, 9.0, 14.0)
 _MARK = 5.0
 #: So much further from a label another point has to be than its own, in SVG units.
 _CLEARLY = 2.0
+#: So much stays free on both sides of a label, in SVG units.
+_APART = 4.0
 #: From the middle of a line of small text down to its base line.
 _BELOW_MIDDLE = 4.0
 
@@ -56,7 +58,7 @@ def place(
         free = (box for box in _candidates(x, y, text) if _is_free(box, taken, frame) and _is_own(box, (x, y), points))
         box = _clearest(free, lines)
         if box is not None:
-            taken.append(box)
+            taken.append((box[0] - _APART, box[1], box[2] + _APART, box[3]))
             placed.append(Placed(text, box[0], (box[1] + box[3]) / 2))
     return placed, len(points) - len(placed)
 
