@@ -57,9 +57,9 @@ def _use_sentence(lookup: Lookup, lot: Lot) -> str:
     if not used and not needed:
         return "No order's cheapest recipe takes it."
     text = f"In the cheapest recipe of {words.plural(used, 'order')}"
-    if not needed:
-        return f"{text}, and none is lost without it."
-    which = "which is" if used == needed == 1 else f"{needed} of them {'is' if needed == 1 else 'are'}"
+    which = f"{needed or 'none'} of them {'are' if needed > 1 else 'is'}"
+    if used == 1:
+        which = "which is" if needed else "which is not"
     return f"{text}, {which} lost without it."
 
 

@@ -105,8 +105,8 @@ def _recipe(lookup: Lookup, finding: OrderFinding, name: str, recipe: Recipe, pa
     # A remark says what could be had in place of what the recipe is meant to be.
     sentences = [recipe.remark or words.RECIPE_MEANINGS[name]]
     if recipe.conformity.all is not None:
-        together = numbers.text(Fraction(recipe.conformity.all) * 100, 1)
-        told = f"All limits hold together with a probability of {together} %."
+        together = words.with_unit(words.percent(recipe.conformity.all), "%")
+        told = f"All limits hold together with a probability of {together}."
         is_first = name == next(other for other in finding.recipes if finding.recipes[other].conformity.all is not None)
         sentences.append(f"{told} {words.ASSAY_ERROR}" if is_first else told)
     caption = words.RECIPE_WORDS[name]
@@ -130,7 +130,7 @@ def _recipe_values(lookup: Lookup, finding: OrderFinding, recipe: Recipe, name: 
     rows = []
     for row, limit in zip(table.rows, finding.limits, strict=True):
         probability = recipe.conformity.each.get(limit.on)
-        text = numbers.UNKNOWN if probability is None else numbers.text(Fraction(probability) * 100, 1)
+        text = numbers.UNKNOWN if probability is None else words.percent(probability)
         rows.append(Row(cells=(*row.cells, text_cell(text))))
     columns = (*table.columns, Column(title="Holds with", unit="%", kind="number"))
     return Table(anchor=table.anchor, caption=table.caption, columns=columns, rows=tuple(rows))

@@ -149,6 +149,15 @@ def moment(recorded: str) -> str:
     return when.astimezone(datetime.UTC).strftime("%Y-%m-%d %H:%M UTC")
 
 
+def percent(probability: Fraction | float) -> str:
+    """A probability as percent to one decimal; what is not quite certain or impossible is not rounded to be so."""
+    value = Fraction(probability) * 100
+    printed = numbers.text(value, 1)
+    if printed == "100.0" and value < 100:
+        return "> 99.9"
+    return "< 0.1" if printed == "0.0" and value > 0 else printed
+
+
 def with_unit(text: str, unit: str) -> str:
     """A number and its unit, never broken between lines."""
     return f"{text}\N{NO-BREAK SPACE}{unit}" if unit else text

@@ -201,6 +201,21 @@ def test_no_page_kind_breaks_a_rule_of_accessibility(
     assert found == []
 
 
+def test_rows_laid_out_as_cards_stay_a_table(browser: Any, trade: Path) -> None:
+    """On a narrow screen rows of text become cards, and a reader of the page aloud is still told a table."""
+    path = next((trade / "plain" / "internal").rglob("trade/index.html"))
+    counts = []
+    for width in (1280, 390):
+        with opened(browser, path, viewport={"width": width, "height": 800}) as page:
+            shown = page.evaluate("getComputedStyle(document.querySelector('#orders-table tbody tr')).display")
+            nodes = page.context.new_cdp_session(page).send("Accessibility.getFullAXTree")["nodes"]
+            roles = [node.get("role", {}).get("value") for node in nodes]
+            counts.append((shown, *(roles.count(role) for role in ("table", "row", "rowheader", "columnheader"))))
+    assert counts[0][0] == "table-row"
+    assert counts[1][0] == "flex"
+    assert counts[0][1:] == counts[1][1:]
+
+
 def test_everything_can_be_reached_by_keyboard(browser: Any, trade: Path) -> None:
     """The tab key visits every link and control in the order of the page, and each shows that it has the focus."""
     path = kinds(trade / "plain" / "internal")["order makeable"]

@@ -147,7 +147,7 @@ def test_an_order_and_a_lot_tell_their_own_past(output: dict[str, bytes]) -> Non
     """Order and lot pages list the revisions that touched them, the cause beside, and draw what moved."""
     order, lot = words(output, "spring/orders/1042.html"), words(output, "spring/lots/A.html")
     assert "Is now unreachable; it was makeable. Cause: lot A's K re-assayed from 20 to 12.5." in order
-    assert "Lot A's cost rose from 10 to 13 EUR per t." in lot
+    assert "Its cost rose from 10 to 13 EUR per t." in lot
     assert "Assay of K" in lot
     assert "one standard uncertainty" in lot
     assert "History" not in words(output, "spring/lots/B.html")

@@ -288,6 +288,28 @@ def test_an_index_of_two_hundred_campaigns_is_light(theme: Theme) -> None:
     assert len(draw_index(entries, theme)) < 300_000
 
 
+def test_the_index_sums_up_all_campaigns(theme: Theme) -> None:
+    """Before the list stands how many orders of all campaigns can be made, and a bar of their verdicts."""
+    entries = [replace(index_entry(make_book()), slug=f"campaign-{number}") for number in range(3)]
+    text = draw_index(entries, theme).decode()
+    assert "3 campaigns. 3 of 6 orders can be made, each taken alone." in text
+    assert text.index('aria-label="3 makeable and 3 unreachable"') < text.index("Spring blends")
+
+
+def test_a_lot_tells_what_it_is_good_for_and_what_counts(theme: Theme) -> None:
+    """Its page begins with the orders that take it, and shows the value that a reading below detection counts as."""
+    files = output(make_book(), theme)
+    assert "In the cheapest recipe of 1 order, which is lost without it." in words(files, "spring/lots/A.html")
+    assert "K₂O, % <5 2.5 as received" in words(files, "spring/lots/B.html")
+    assert "Counts as" not in words(files, "spring/lots/A.html")
+
+
+def test_an_order_page_says_its_verdict_once(theme: Theme) -> None:
+    """The verdict's word stands beside its sign, and the sentence goes on from there."""
+    text = words(output(make_book(), theme), "spring/orders/midway.html")
+    assert "makeable Cheapest 50.00 EUR/t from 2 lots." in text
+
+
 SCRIPT = """
 import hashlib
 from tests.report.fixtures import full_book, output

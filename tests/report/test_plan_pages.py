@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import csv
 import io
+import re
 from dataclasses import replace
 
 import pytest
@@ -93,6 +94,44 @@ def test_a_card_is_in_the_order_of_loading(files: dict[str, bytes]) -> None:
     assert "Signature" in page
     assert "superseded if a newer revision exists" in page
     assert files["trial/batches/dear.html"].decode().count('class="box"') == 2 + 4
+
+
+def test_an_order_page_leads_to_its_card_and_the_plan(files: dict[str, bytes]) -> None:
+    """What the plan gives an order stands on its page, and why a lost one is lost is not told twice."""
+    dear, far = words(files, "trial/orders/dear.html"), words(files, "trial/orders/far.html")
+    assert "Beside the other orders in full Accepted 100" in dear
+    assert "Beside the other orders not served All orders The whole plan" in far
+    assert "its own page tells why" not in far
+
+
+def test_cards_follow_each_other_and_lead_to_the_plan(files: dict[str, bytes]) -> None:
+    """From one card the next is one step away, and so is the plan that it has to agree with."""
+    links = PageReader(files["trial/batches/dear.html"].decode()).links
+    assert {"cheap.html", "../plan.html", "../orders/dear.html"} <= set(links)
+
+
+def test_a_card_says_what_of_the_plan_it_weighs(theme: Theme) -> None:
+    """Where whole weigh steps come to less than the plan gives, the card names both amounts."""
+    targets = "order,amount,accept,N\nx,9.7,part,>= 15\n"
+    files = output(book_of("lot,stock,N\nA,100,10\nB,100,40\n", targets, "[house]\nweigh_step = 1\n"), theme)
+    page = words(files, "trial/batches/x.html").replace("\N{NO-BREAK SPACE}", " ")
+    assert re.search(r"\d+ t in 1 batch, of the 9\.7\d* t that the plan gives it\.", page)
+
+
+def test_money_of_one_column_has_the_same_decimals(theme: Theme) -> None:
+    """A gain of hundreds beside one of ten thousands is printed without hundredths too."""
+    targets = "order,amount,price,N\nbig,1000,90,>= 20\nsmall,10,90.25,>= 20\n"
+    page = words(output(book_of("lot,stock,cost,N\nA,9000,10.5,20\n", targets, ""), theme), "trial/plan.html")
+    assert "79 500" in page
+    assert "798" in page
+    assert "797.50" not in page
+
+
+def test_a_hull_of_one_component_is_told_in_words(theme: Theme) -> None:
+    """Two inequalities on one number are a range: the page has no table of half-planes for it."""
+    page = words(output(book_of(), theme), "trial/index.html")
+    assert "N (as received basis) of a blend can be 0 to 30." in page
+    assert "The hull as inequalities" not in page
 
 
 def test_a_card_that_does_not_hold_says_so(theme: Theme) -> None:

@@ -50,6 +50,34 @@ def test_spans_in_words() -> None:
     assert words.span(None, 0) == "–"
 
 
+def test_what_is_not_certain_is_not_printed_as_certain() -> None:
+    """A probability short of 1 never reads 100.0 %, nor one above 0 as 0.0 %."""
+    assert [words.percent(p) for p in (1, 0.99996, 0.9994, 0.125, 0.00001, 0)] == [
+        "100.0", "> 99.9", "99.9", "12.5", "< 0.1", "0.0",
+    ]  # fmt: skip
+
+
+def test_a_sentence_beside_its_verdict_does_not_say_it_again() -> None:
+    """The verdict's word opens a sentence only where it is not what stands beside it."""
+    assert words.beside_verdict("Short: the stock makes at most 5 t.") == "The stock makes at most 5 t."
+    assert words.beside_verdict("Makeable, but on the edge: only A.") == "Makeable, but on the edge: only A."
+
+
+@pytest.mark.parametrize(
+    ("counts", "told"),
+    [
+        ({"makeable": 4, "edge": 1, "short": 5}, "5 of 10 orders can be made, each taken alone."),
+        ({"makeable": 2}, "All 2 orders can be made, each taken alone."),
+        ({"unreachable": 3}, "None of 3 orders can be made, each taken alone."),
+        ({"edge": 1}, "The one order can be made."),
+        ({"none": 1}, "The one order cannot be made."),
+    ],
+)
+def test_how_many_orders_can_be_made(counts: dict[str, int], told: str) -> None:
+    """Makeable and edge count as made, every other verdict does not."""
+    assert words.made(counts) == told
+
+
 def test_moments_are_shown_in_universal_time() -> None:
     """ISO text becomes date and minute; other text stays."""
     assert words.moment("2026-03-05T14:02:59Z") == "2026-03-05 14:02 UTC"
