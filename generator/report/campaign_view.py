@@ -121,20 +121,20 @@ def _changes(lookup: Lookup) -> Section | None:
     if not lookup.book.revisions:
         return None
     last = lookup.book.revisions[-1]
-    sentences = lookup.book.changes
-    if not sentences:
-        if len(lookup.book.revisions) == 1:
-            sentences = ("This is the first revision: there is none before it to compare with.",)
-        else:
+    told, changes = f"Revision {last.number}, recorded {words.moment(last.recorded)}.", lookup.book.changes
+    if not changes:
+        why = "This is the first revision: there is none before it to compare with."
+        if len(lookup.book.revisions) > 1:
             what = "Nothing that these pages show" if lookup.book.hidden else "No answer"
-            sentences = (f"{what} changed from revision {last.number - 1} to revision {last.number}.",)
-    rest = sentences[_MOST_CHANGES:]
+            why = f"{what} changed from revision {last.number - 1} to revision {last.number}."
+        return Section(anchor="changes", title="What changed last", sentences=(told, why))
+    rest = changes[_MOST_CHANGES:]
     more = Section(anchor="more-changes", title=words.plural(len(rest), "more change"), points=rest)
     return Section(
         anchor="changes",
         title="What changed last",
-        sentences=(f"Revision {last.number}, recorded {words.moment(last.recorded)}.",),
-        points=sentences[:_MOST_CHANGES],
+        sentences=(told,),
+        points=changes[:_MOST_CHANGES],
         folded=(more,) if rest else (),
     )
 
@@ -182,8 +182,8 @@ def _reach_sentence(lookup: Lookup, hull: HullFinding) -> str:
         for plane in map(_plainest, hull.facets or ())
         if name in plane.coefficients
     )
-    unit = lookup.units.get(name, "")
-    reach = words.with_unit(f"{numbers.significant(ends[0], 5)} to {numbers.significant(ends[-1], 5)}", unit)
+    places = lookup.places.get(name, 2)
+    reach = words.with_unit(words.span((ends[0], ends[-1]), places), lookup.units.get(name, ""))
     return f"{words.capitalised(lookup.labels.get(name, name))} ({hull.basis} basis) of a blend can be {reach}."
 
 
@@ -343,6 +343,15 @@ def _read(lookup: Lookup) -> Section | None:
         anchor="read-table", caption="Rows left out or read in a special way", columns=columns, rows=tuple(rows)
     )
     return Section(anchor="read", title="What was read", tables=(table,))
+
+
+def trouble_words(problems: Sequence[Problem]) -> str:
+    """What the problems of the input mean for every answer, in a sentence; empty where nothing is left out."""
+    count = sum(1 for problem in problems if problem.severity == "drops")
+    if not count:
+        return ""
+    them = "it leaves" if count == 1 else "they leave"
+    return f"{words.plural(count, 'problem')} in the input: {them} out lots or orders that these answers would need."
 
 
 def problems_section(problems: Sequence[Problem], anchor: str = "problems") -> Section | None:

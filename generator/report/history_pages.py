@@ -16,7 +16,8 @@ from generator.history.chronicle import Line, closed_groups, recent
 from generator.report import addresses, words
 from generator.report.history_trends import trend_figures
 from generator.report.history_view import history_index, revision_address, revision_sections
-from generator.report.pages import METHOD, Link, Page, dressed
+from generator.report.page_records import Link, Page
+from generator.report.pages import METHOD, dressed
 from generator.report.parts import Fact, Section
 from generator.report.themes import Theme
 from generator.report.views import CampaignPages

@@ -17,7 +17,8 @@ from posixpath import dirname, join, normpath
 from urllib.parse import unquote
 
 from generator.report import words
-from generator.report.pages import METHOD, Sheet, campaign_sheets, draw_method, rendered_sheet
+from generator.report.page_records import Sheet
+from generator.report.pages import METHOD, campaign_sheets, draw_method, rendered_sheet
 from generator.report.themes import Theme
 from generator.report.views import CampaignPages
 

@@ -15,12 +15,13 @@ from generator import __version__
 from generator.findings.records import OrderFinding
 from generator.intake.records import Lot
 from generator.report import addresses, words
-from generator.report.batch_view import Card, batch_card, card_addresses, card_facts, card_lead
+from generator.report.batch_view import batch_card, card_addresses, card_facts, card_lead
 from generator.report.campaign_view import (
     campaign_facts,
     campaign_sections,
     problems_section,
     record_sections,
+    trouble_words,
     verdict_counts,
 )
 from generator.report.history_own import lot_history, order_history
@@ -28,7 +29,8 @@ from generator.report.lookup import Lookup, lookup_of
 from generator.report.lot_view import lot_facts, lot_sections, lot_sentence
 from generator.report.notes import rendered
 from generator.report.order_view import order_facts, order_sections
-from generator.report.parts import Fact, Section
+from generator.report.page_records import Link, Page, Sheet
+from generator.report.parts import Section
 from generator.report.plan_view import order_in_plan, plan_address, plan_facts, plan_lead, plan_sections
 from generator.report.planes import Planes
 from generator.report.themes import Theme
@@ -39,56 +41,6 @@ INDEX = "index.html"
 METHOD = "method.html"
 #: The script that only pages with a trial blend load.
 _TRIAL = "trial"
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Link:
-    """A word and where it leads."""
-
-    text: str
-    href: str
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Page:
-    """What every template receives: where the page stands, its lead, its sections."""
-
-    title: str
-    lead: str
-    style: str
-    method: str
-    crumbs: tuple[Link, ...]
-    version: str
-    kind: str
-    verdict: str = ""
-    verdict_word: str = ""
-    verdict_meaning: str = ""
-    counts: tuple[tuple[str, str, int], ...] = ()
-    counts_in_words: str = ""
-    previous: Link | None = None
-    following: Link | None = None
-    facts: tuple[Fact, ...] = ()
-    banner: Section | None = None
-    sections: tuple[Section, ...] = ()
-    closing: tuple[Section, ...] = ()
-    notes: Markup | None = None
-    cautions: tuple[str, ...] = ()
-    revision: str = ""
-    data: str = ""
-    scripts: tuple[str, ...] = ()
-    logo: str = ""
-    logo_words: str = ""
-    edition: str = ""
-    card: Card | None = None
-
-
-@dataclass(frozen=True, slots=True, kw_only=True)
-class Sheet:
-    """A page with its address and the template that lays it out."""
-
-    address: str
-    template: str
-    page: Page
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -257,6 +209,7 @@ def _campaign_page(lookup: Lookup, planes: Planes, wholes: Wholes, theme: Theme)
         counts=words.told_counts(counts),
         counts_in_words=words.counts_in_words(counts),
         facts=campaign_facts(lookup),
+        trouble=_trouble(lookup, lookup.home),
         banner=_banner(book),
         sections=campaign_sections(lookup, planes, wholes),
         closing=record_sections(lookup),
@@ -296,6 +249,7 @@ def _order_page(
         previous=neighbour(-1),
         following=neighbour(1),
         facts=order_facts(lookup, finding),
+        trouble=_trouble(lookup, address),
         banner=_banner(lookup.book),
         sections=(
             *own[:1],
@@ -323,6 +277,7 @@ def _plan_sheets(lookup: Lookup, theme: Theme) -> list[Sheet]:
         version=lookup.book.version,
         kind="plan",
         facts=plan_facts(lookup, plan),
+        trouble=_trouble(lookup, address),
         banner=_banner(lookup.book),
         sections=plan_sections(lookup, plan, address, cards),
         cautions=_cautions(lookup),
@@ -402,6 +357,12 @@ def _crumbs(lookup: Lookup, address: str) -> tuple[Link, ...]:
 
 def _banner(book: CampaignPages) -> Section | None:
     return problems_section(book.banner_problems, "banner")
+
+
+def _trouble(lookup: Lookup, address: str) -> Link | None:
+    """What was left out of all answers, and where it is told; None under a banner, which tells it already."""
+    text = "" if lookup.book.banner_problems else trouble_words(lookup.campaign.problems)
+    return Link(text=text, href=f"{addresses.relative(address, lookup.home)}#problems") if text else None
 
 
 def _cautions(lookup: Lookup) -> tuple[str, ...]:

@@ -304,6 +304,22 @@ def test_a_lot_tells_what_it_is_good_for_and_what_counts(theme: Theme) -> None:
     assert "Counts as" not in words(files, "spring/lots/A.html")
 
 
+def test_what_was_left_out_is_told_on_the_first_screen(theme: Theme) -> None:
+    """Where a problem drops a lot, campaign and order pages say so before any table, and lead to the problem."""
+    book = make_book()
+    dropped = replace(book, campaign=replace(book.campaign, problems=(make_problem(severity="drops"),)))
+    files = output(dropped, theme)
+    check_pages(files)
+    for address, link in (
+        ("spring/index.html", "index.html#problems"),
+        ("spring/orders/midway.html", "../index.html#problems"),
+    ):
+        text = files[address].decode()
+        assert text.index("1 problem in the input: it leaves out") < text.index("<table")
+        assert link in PageReader(text).links
+    assert b"in the input" not in output(book, theme)["spring/index.html"]
+
+
 def test_an_order_page_says_its_verdict_once(theme: Theme) -> None:
     """The verdict's word stands beside its sign, and the sentence goes on from there."""
     text = words(output(make_book(), theme), "spring/orders/midway.html")
