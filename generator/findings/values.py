@@ -8,8 +8,10 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass
 from fractions import Fraction
+from functools import lru_cache
 
 from generator.findings.rules import OutsideDomain, Rule, rule_named
+from generator.findings.same import Same
 from generator.intake.records import Basis, Below, Campaign, Component, Lot, Measured
 from generator.problems import Problem
 
@@ -105,6 +107,12 @@ def _carrier(lot: Lot, basis: Basis | str, quantity_basis: Basis, wet_known: boo
 
 def typed_values(measured: Measured, below: Below) -> Value:
     """The mean of the readings in the component's own unit."""
+    return _typed_values(Same(measured), below)
+
+
+@lru_cache(maxsize=4096)
+def _typed_values(same: Same[Measured], below: Below) -> Value:
+    measured = same.value
     share = Fraction(1, len(measured.readings))
     stated = least = most = Fraction(0)
     for reading in measured.readings:

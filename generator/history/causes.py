@@ -39,7 +39,7 @@ _FOR_PLANS = 50
 NOT_PROVEN = "The plan was not proven best, so that no edit can be named for what it gives."
 
 #: What one replay takes, where a plain one takes 1 (measured).
-PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 8}
+PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 5}
 #: The kinds of changes that have a cause, in the turns in which it is searched for.
 _TURNS: tuple[tuple[str, ...], ...] = (("verdict",), ("cost", "amount", "room", "conformity"), ("recipe",))
 #: A plan takes about so many plain replays, and as many more for every node of its search.

@@ -15,7 +15,7 @@ from generator.history.systems import Subset
 
 PROGRAM = "program version"
 TOGETHER = "The edits can't be told apart here: made one by one, they leave no answer in between."
-COARSE = "Divided by file only: row by row, {} {} would have to be asked again."
+COARSE = "Divided by file only: row by row, {} more {} would be needed."
 
 #: Replays for one changed number: a division among about a hundred rows.
 MOST_FOR_A_NUMBER = 5000

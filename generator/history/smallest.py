@@ -25,7 +25,7 @@ MOST_FOR_A_CHANGE = 3300
 MOST_FOR_GROUPS = 200
 
 UNTOLD = "The edits alone do not account for this change."
-NOT_SPARED = "Some of these edits may not be needed: too many answers would have to be asked again to tell."
+NOT_SPARED = "Some of these edits may not be needed: to tell, too many more answers would be needed."
 
 
 class Answering(Asked, Protocol):
@@ -104,7 +104,7 @@ def set_cause(
 
 def not_looked_for(count: int, what: str = "answers") -> str:
     """What stands instead of a cause where even the least search is too much."""
-    return f"Not looked for: at least {count} {what} would have to be asked again."
+    return f"Not looked for: at least {count} more {what} would be needed."
 
 
 def _smallest(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import copy
 from collections import Counter
 from dataclasses import replace
 from fractions import Fraction
@@ -11,12 +12,20 @@ from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from generator.findings.answers import find
-from generator.history.causes import TOGETHER, Side, explained, verdict_cause
+from generator.findings.measures import measures_of
+from generator.findings.model import OrderModel, model_of
+from generator.findings.values import table_of
+from generator.history import searching
+from generator.history.causes import NOT_PROVEN, TOGETHER, Side, explained, verdict_cause
 from generator.history.compare import changes
 from generator.history.division import MOST_EXACT, divided
 from generator.history.edits import edits
 from generator.history.records import Cause, Change, Part
+from generator.history.relevance import Relevance
 from generator.history.replay import Replay
+from generator.history.searching import Allowance, side_by_side
+from generator.history.smallest import NOT_SPARED, Target, set_cause
+from generator.history.systems import Systems, ranks
 from tests.history.brute import Oracle, check_pair, told
 from tests.history.making import Tables, pair
 
@@ -147,7 +156,7 @@ def test_without_replays_left_nothing_is_claimed() -> None:
     sides = (Side(campaign=before, findings=find(before)), Side(campaign=after, findings=find(after)))
     found = changes(sides[0].findings, sides[1].findings)
     cause = only("verdict", explained(*sides, edits(before, after), found, most=0)).cause
-    assert cause == Cause(at_least=1, remark="Not looked for: at least 2 more answers would have to be asked again.")
+    assert cause == Cause(at_least=1, remark="Not looked for: at least 2 more answers would be needed.")
 
 
 def test_a_cost_is_divided_and_sums_up() -> None:
@@ -275,3 +284,232 @@ def test_a_part_is_what_it_says() -> None:
     """A cause with parts is told, an empty one is not."""
     assert Cause(parts=(Part(group="lot A", edits=(0,), amount=1.0),)).is_told
     assert not Cause(remark=TOGETHER).is_told
+
+
+@given(st.integers(0, 10**6), st.integers(0, 63))
+@settings(max_examples=25, deadline=None)
+def test_a_system_from_kept_columns_is_the_same_as_a_new_one(seed: int, mask: int) -> None:
+    """Whatever edits are made and were made before, the system laid together from columns is that of the campaign."""
+    old, new = pair(seed)
+    made = edits(old, new)
+    for order in new.orders:
+        relevance = Relevance.of(old, new, order.name, order.name)
+        systems = Systems(old, new, made, relevance.names, relevance.needs)
+        for subset in (
+            frozenset[int](),
+            frozenset(k for k in range(len(made)) if mask >> k & 1),
+            frozenset(range(len(made))),
+        ):
+            system = systems.of(subset)
+            campaign = system.campaign
+            anew = model_of(campaign, campaign.order(order.name), table_of(campaign), measures_of(campaign))
+            assert without_rules(system.model) == without_rules(anew if isinstance(anew, OrderModel) else None)
+
+
+def without_rules(model: OrderModel | None) -> OrderModel | None:
+    """The system but for its measures, whose blend rules are functions and equal nothing but themselves."""
+    return None if model is None else replace(model, measures={})
+
+
+def test_a_moisture_reaches_all_other_columns() -> None:
+    """The first moisture that any lot gets makes the others' unknown: no column is kept over that."""
+    old = plain()
+    old.toml = 'quantity_basis = "dry"\n[components.N]\nbasis = "as received"\n[components.K]\nbasis = "as received"\n'
+    new = copy.deepcopy(old)
+    new.lots["A"]["moisture"] = "5"
+    before, after = old.campaign(), new.campaign()
+    made = edits(before, after)
+    systems = Systems(before, after, made, ("1042", "1042"), frozenset("NK"))
+    models = [systems.of(frozenset(chosen)).model for chosen in ((), range(len(made)))]
+    for model, campaign in zip(models, (before, after), strict=True):
+        anew = model_of(campaign, campaign.order("1042"), table_of(campaign), measures_of(campaign))
+        assert isinstance(anew, OrderModel)
+        assert without_rules(model) == without_rules(anew)
+    assert [len(model.lots) for model in models if model] == [2, 1]
+
+
+def test_rows_stand_as_in_the_newer_file() -> None:
+    """Names of both lists keep the newer order; one that is gone stands behind the one it stood behind."""
+    assert sorted(ranks("abcd", "xbyd"), key=ranks("abcd", "xbyd").__getitem__) == list("axbcyd")
+    assert ranks("abc", "ac") == {"a": 0, "b": 1, "c": 2}
+    assert ranks("ab", "ba") == {"b": 0, "a": 1}
+    assert ranks("zab", "ab") == {"z": 0, "a": 1, "b": 2}
+
+
+@pytest.mark.parametrize("seed", [3, 29, 46])
+def test_waves_of_any_size_give_the_same_causes(seed: int, monkeypatch: pytest.MonkeyPatch) -> None:
+    """How many replays are solved side by side changes no cause."""
+    old, new = pair(seed)
+    findings = find(old), find(new)
+    many = told(old, new, *findings)
+    monkeypatch.setattr(searching, "WAVE", 3)
+    assert told(old, new, *findings) == many
+
+
+def test_what_may_be_asked() -> None:
+    """The reserve is for those alone who ask for it, when the rest is used up."""
+    allowance = Allowance(left=5, reserve=2)
+    assert not allowance.takes(6)
+    assert allowance.takes(4)
+    assert allowance.takes_reserve(2)
+    assert (allowance.left, allowance.reserve) == (0, 1)
+    assert not allowance.takes_reserve(2)
+
+
+def wide() -> tuple[Tables, Tables]:
+    """Six lots and an order that is lost only when the K of two certain lots falls, with other edits beside."""
+    names = "ABCDEF"
+    old = Tables(
+        lots={name: {"stock": "100", "cost": "10", "N": "20", "K": "20" if name in "CE" else "5"} for name in names},
+        orders={"1": {"amount": "10", "K": ">= 18"}},
+    )
+    new = copy.deepcopy(old)
+    for name in names:
+        new.lots[name] |= {"N": "21", "K": "6"}
+    new.orders["1"]["N"] = ">= 2"
+    return old, new
+
+
+def test_beyond_the_bound_files_and_rows_come_first() -> None:
+    """Where pairs can't be afforded, a set is found of which no edit can be spared, and no single one would do."""
+    old, new = (tables.campaign() for tables in wide())
+    made = edits(old, new)
+    replay = Replay(old, new, made, "1", "1")
+    count = len(replay.relevant("verdict"))
+    cause = verdict_cause(replay, "edge" if replay.verdict(()) == "edge" else "makeable", "unreachable", most=count)
+    assert cause.suffices == ()
+    assert cause.at_least == 2
+    assert cause.remark == ""
+    assert {made[position].name for position in cause.found} >= {"C", "E"}
+    assert replay.verdict(cause.found) == "unreachable"
+    for one in cause.found:
+        assert replay.verdict(set(cause.found) - {one}) != "unreachable"
+
+
+def test_a_search_that_runs_dry_keeps_what_it_has() -> None:
+    """Where even halving is cut short, a set that does is named, and that some of it may not be needed."""
+    old, new = (tables.campaign() for tables in wide())
+    made = edits(old, new)
+    replay = Replay(old, new, made, "1", "1")
+    every = replay.relevant("verdict")
+    target = Target(
+        replay=replay, question="verdict", old=replay.verdict(()), new="unreachable", alike=lambda a, b: a == b
+    )
+    (cause,) = side_by_side([set_cause(target, made, every, Allowance(0, len(every) + 2))])
+    assert cause.remark == NOT_SPARED
+    assert replay.verdict(cause.found) == "unreachable"
+    assert cause.restores == ()
+
+
+def test_a_number_of_many_rows_is_divided_by_file() -> None:
+    """Where a division among rows can't be afforded, lots and orders have a part each, and the sum is the change."""
+    new = plain()
+    new.lots["A"]["cost"] = "12"
+    new.lots["B"]["cost"] = "26"
+    new.orders["1042"]["N"] = ">= 21"
+    before, after = plain().campaign(), new.campaign()
+    sides = Side(campaign=before, findings=find(before)), Side(campaign=after, findings=find(after))
+    made, found = edits(before, after), changes(sides[0].findings, sides[1].findings)
+    told_cost = only("cost", explained(*sides, made, [change for change in found if change.kind == "cost"], most=7))
+    assert told_cost.cause is not None
+    assert told_cost.cause.remark == "Divided by file only: row by row, 8 more answers would be needed."
+    assert {part.group for part in told_cost.cause.parts} == {"lots", "orders"}
+    total = sum(part.amount for part in told_cost.cause.parts)
+    assert total == pytest.approx(told_cost.new - told_cost.old)  # type: ignore[operator]
+
+
+def test_a_cost_that_is_not_known_any_more() -> None:
+    """A cost that came or went has the edit for its cause that took it or gave it."""
+    new = plain()
+    new.lots["A"] |= {"cost": "", "N": "11"}
+    clauses, found = story(plain(), new)
+    cause = only("cost", found).cause
+    assert cause is not None
+    assert [clauses[position] for (position,) in cause.suffices] == [
+        "lot A's cost no longer given (it was 10\N{NO-BREAK SPACE}EUR per t)"
+    ]
+    assert cause.restores == cause.suffices[0]
+
+
+def test_a_bound_that_is_gone() -> None:
+    """An amount that has no bound any more has the stocks for its cause that bounded it."""
+    new = plain()
+    new.lots["A"]["stock"] = "unlimited"
+    new.lots["B"] |= {"stock": "unlimited", "cost": "21"}
+    clauses, found = story(plain(), new)
+    cause = only("amount", found).cause
+    assert cause is not None
+    assert cause.at_least == 2
+    assert all("stock" in clauses[position] for position in cause.suffices[0])
+
+
+def test_a_recipe_is_laid_to_the_dearer_lot() -> None:
+    """A recipe that moved is laid to the edit that moves it; one that only makes it dearer is not named."""
+    old = plain()
+    old.lots["C"] = {"stock": "100", "cost": "16", "N": "20", "K": "12.5"}
+    new = copy.deepcopy(old)
+    new.lots["C"]["cost"] = "12"
+    new.lots["A"]["cost"] = "10.5"
+    clauses, found = story(old, new)
+    cause = only("recipe", found).cause
+    assert cause is not None
+    assert [clauses[position] for (position,) in cause.suffices] == [
+        "lot C's cost fell from 16 to 12\N{NO-BREAK SPACE}EUR per t"
+    ]
+
+
+def contested() -> Tables:
+    """Two orders that want the same lot, of which there is enough for both."""
+    return Tables(
+        lots={
+            "A": {"stock": "100", "cost": "10", "N": "10"},
+            "B": {"stock": "100", "cost": "12", "N": "10"},
+        },
+        orders={
+            "1": {"amount": "80", "priority": "1", "N": ">= 10"},
+            "2": {"amount": "90", "priority": "2", "N": ">= 10"},
+        },
+    )
+
+
+def test_what_the_plan_gives_is_laid_to_the_stock() -> None:
+    """An order that the plan drops names the stock that fell; an edit that the plan doesn't feel is not named."""
+    new = contested()
+    new.lots["B"]["stock"] = "50"
+    new.lots["A"]["cost"] = "11"
+    clauses, found = story(contested(), new)
+    change = only("accepted", found)
+    assert change.cause is not None
+    assert [clauses[position] for (position,) in change.cause.suffices] == [
+        "lot B's stock fell from 100 to 50\N{NO-BREAK SPACE}t"
+    ]
+    assert change.cause.restores == change.cause.suffices[0]
+    value = only("plan", found)
+    assert value.cause is not None
+    assert {part.group: pytest.approx(part.amount) for part in value.cause.parts} == {"lot B": -90.0}
+
+
+def test_a_plan_that_was_not_proven_has_no_cause() -> None:
+    """Where the search for a plan was cut short, no edit is named for what it gives."""
+    new = contested()
+    new.lots["B"]["stock"] = "50"
+    before, after = contested().campaign(), new.campaign()
+    answers = find(before), find(after)
+    assert answers[1].plan is not None
+    cut = replace(answers[1], plan=replace(answers[1].plan, status="within gap", gap=0.1))
+    sides = Side(campaign=before, findings=answers[0]), Side(campaign=after, findings=cut)
+    change = only("accepted", explained(*sides, edits(before, after), changes(answers[0], cut)))
+    assert change.cause == Cause(remark=NOT_PROVEN)
+
+
+def test_plans_that_are_too_many_are_counted() -> None:
+    """Where plans can't be afforded, the page says how many would have to be made."""
+    new = contested()
+    new.lots["B"]["stock"] = "50"
+    new.lots["A"]["cost"] = "11"
+    before, after = contested().campaign(), new.campaign()
+    sides = Side(campaign=before, findings=find(before)), Side(campaign=after, findings=find(after))
+    found = explained(*sides, edits(before, after), changes(sides[0].findings, sides[1].findings), most=1)
+    cause = only("accepted", found).cause
+    assert cause is not None
+    assert cause.remark == "Not looked for: at least 2 more plans would be needed."

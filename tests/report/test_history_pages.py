@@ -17,6 +17,7 @@ from generator.history.records import Cause, Change, Comparison, Edit, LotPoint,
 from generator.intake.campaign import read_campaign
 from generator.report.figures import trends
 from generator.report.history_pages import HistoryFiles, Shelf, draw_history
+from generator.report.history_view import changes_section
 from generator.report.manifest import Published
 from generator.report.pages import assets, draw_campaign, draw_index, draw_method
 from generator.report.publish import Publication
@@ -26,6 +27,9 @@ from tests.history.making import Tables
 from tests.report.checks import PageReader, check_pages
 from tests.sample import TARGETS, light_pages, make_job, put_campaign, run, text_of
 
+EDITS = tuple(
+    Edit(kind="lot", name=name, field="cost", old="1", new="2", clause=f"lot {name} is dearer") for name in "AB"
+)
 MOMENT = datetime(2026, 3, 2, 12, tzinfo=UTC)
 HOSTILE = """<b onclick="x()">&"'</script>{{ 7*7 }} $x$"""
 
@@ -130,7 +134,53 @@ def test_a_revision_tells_edits_changes_and_causes(output: dict[str, bytes]) -> 
 
 def test_a_cost_is_told_with_its_parts(output: dict[str, bytes]) -> None:
     """The page of the revision that made a recipe dearer says by how much each edit did."""
-    assert "+1.5 from lot A's cost rose from 10 to 13 EUR per t." in words(output, "spring/history/0002.html")
+    assert "+1.50 EUR per t from lot A's cost rose from 10 to 13 EUR per t." in words(
+        output, "spring/history/0002.html"
+    )
+
+
+def changed(*changes: Change) -> str:
+    """The text of the section of these changes."""
+    comparison = Comparison(number=1, recorded="2026-03-01T12:00:00Z", title="", edits=EDITS, changes=changes)
+    (table,) = changes_section(comparison, "changes", "Changes").tables
+    texts = [[cell.text + (f" / {cell.detail}" if cell.detail else "") for cell in row.cells] for row in table.rows]
+    return "\n".join([" | ".join(column.title for column in table.columns), *map(" | ".join, texts)])
+
+
+def test_every_kind_of_cause_in_words() -> None:
+    """Numbers have their parts with units, recipes and plans the edits that did it, and what is not known is said."""
+    parts = (Part(group="lot A", edits=(0,), amount=0.031), Part(group="lots", edits=(0, 1), amount=-0.01, error=0.004))
+    chance = Change(
+        kind="conformity",
+        subject="1",
+        old=0.9,
+        new=0.921,
+        sentence="Order 1: the cheapest recipe holds all limits with 92.1 %; it was 90.0 %.",
+        cause=Cause(parts=parts, remark="Divided by file only."),
+        unit="percentage points",
+        places=1,
+    )
+    recipe = Change(kind="recipe", subject="1", old=0.1, new=0.3, sentence="Order 1: the cheapest recipe moved.")
+    alone = replace(recipe, cause=Cause(suffices=((1,),), at_least=1, restores=(1,)))
+    found = replace(recipe, cause=Cause(found=(0, 1), at_least=2, remark="Some of these edits may not be needed."))
+    plan = Change(kind="plan", subject="", old=1.0, new=2.0, sentence="The plan: its value rose to 2 EUR from 1 EUR.")
+    unknown = replace(plan, cause=Cause(remark="Not looked for: at least 9 more plans would be needed."))
+    assert changed(chance, alone, found, unknown).splitlines() == [
+        "Of | What changed | Cause",
+        "Order 1 | The cheapest recipe holds all limits with 92.1 %; it was 90.0 %. | "
+        "+3.1 percentage points from lot A is dearer; "
+        "−1.0 percentage points (sampled, ± 0.4) from 2 edits of lots. / Divided by file only.",
+        "Order 1 | The cheapest recipe moved. | Lot B is dearer. / Undoing it brings the old recipe back.",
+        "Order 1 | The cheapest recipe moved. | 2 edits together: lot A is dearer together with lot B is dearer "
+        "(no single one does). / Some of these edits may not be needed.",
+        "Plan | Its value rose to 2 EUR from 1 EUR. | Not looked for: at least 9 more plans would be needed.",
+    ]
+
+
+def test_without_any_cause_there_is_no_column_for_it() -> None:
+    """A table of changes that have no cause has no empty column."""
+    role = Change(kind="role", subject="A", old="inner", new="corner", sentence="Lot A is now a corner lot.")
+    assert changed(role) == "Of | What changed\nLot A | Is now a corner lot."
 
 
 def test_the_timeline_has_every_headline(output: dict[str, bytes], book: CampaignPages) -> None:
