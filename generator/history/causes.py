@@ -24,7 +24,7 @@ from generator.history.records import Cause, Change, Edit, Part
 from generator.history.relevance import Question
 from generator.history.replay import Replay
 from generator.history.searching import Allowance, Searching, side_by_side
-from generator.history.smallest import UNTOLD, Target, grouped, set_cause
+from generator.history.smallest import UNTOLD, Target, grouped, not_looked_for, set_cause
 from generator.intake.records import Campaign
 
 __all__ = ["MOST_IN_ALL", "PROGRAM", "TOGETHER", "UNTOLD", "Side", "explained", "grouped"]
@@ -42,8 +42,10 @@ NOT_PROVEN = "The plan was not proven best, so that no edit can be named for wha
 PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 5}
 #: The kinds of changes that have a cause, in the turns in which it is searched for.
 _TURNS: tuple[tuple[str, ...], ...] = (("verdict",), ("cost", "amount", "room", "conformity"), ("recipe",))
+#: House rules are kept by branching: with them a replay takes about so many times as long (measured).
+_WITH_RULES = 12
 #: A plan takes about so many plain replays, and as many more for every node of its search.
-_PLAN_PRICE = 60
+_PLAN_PRICE = 100
 #: What stands for a number that isn't there.
 _INSTEAD: Mapping[str, str] = {"cost": NOT_KNOWN, "amount": NO_BOUND}
 
@@ -126,6 +128,10 @@ class _Work:
             self._replays[order] = Replay(self._old.campaign, self._new.campaign, self._edits, order, was)
         return self._replays[order]
 
+    def _price(self, question: Question) -> int:
+        has_rules = any(_has_rules(side.campaign) for side in (self._old, self._new))
+        return PRICES[question] * (_WITH_RULES if has_rules else 1)
+
     def _number(self, replay: Replay, change: Change, question: Question) -> Searching[Cause]:
         assert isinstance(change.old, float)
         assert isinstance(change.new, float)
@@ -135,7 +141,7 @@ class _Work:
         if self._same_program and len(groups) == 1 and question != "conformity":
             ((group, positions),) = groups.items()
             return Cause(parts=(Part(group=group, edits=positions, amount=change.new - change.old),))
-        number = Number(replay=replay, question=question, old=change.old, new=change.new, price=PRICES[question])
+        number = Number(replay=replay, question=question, old=change.old, new=change.new, price=self._price(question))
         return (yield from number_cause(number, self._edits, every, self._allowance, same_program=self._same_program))
 
     def _word(self, replay: Replay, change: Change, question: Question) -> Searching[Cause]:
@@ -149,7 +155,7 @@ class _Work:
             old=_recorded(change.kind, change.old),
             new=_recorded(change.kind, change.new),
             alike=_is_same_word,
-            price=PRICES[question],
+            price=self._price(question),
             same_program=self._same_program,
         )
         return (yield from set_cause(target, self._edits, every, self._allowance))
@@ -164,7 +170,7 @@ class _Work:
             old=old,
             new=new,
             alike=self._is_same_recipe,
-            price=PRICES["recipe"],
+            price=self._price("recipe"),
             same_program=self._same_program,
         )
         return (yield from set_cause(target, self._edits, replay.relevant("recipe"), self._allowance))
@@ -205,19 +211,8 @@ class _Plans:
         if any(plan is None or plan.status != "proven" for plan in self._plans):
             return Cause(remark=NOT_PROVEN)
         every = self._replay.relevant()
-        nodes = max(plan.nodes for plan in self._plans if plan is not None)
-        price = _PLAN_PRICE * (1 + nodes)
         if change.kind == "plan":
-            groups = grouped(self._edits, every)
-            if self._same_program and len(groups) == 1:
-                ((group, positions),) = groups.items()
-                return Cause(parts=(Part(group=group, edits=positions, amount=change.new - change.old),))
-            number = Number(
-                replay=self._replay, question="value", old=change.old, new=change.new, price=price, what="plans"
-            )
-            return (
-                yield from number_cause(number, self._edits, every, self._allowance, same_program=self._same_program)
-            )
+            return (yield from self._value(change.old, change.new, every))
         if self._same_program and len(every) == 1:
             return Cause(suffices=(every,), at_least=1, restores=every)
         target = Target(
@@ -226,11 +221,26 @@ class _Plans:
             old={change.subject: Fraction(change.old)},
             new={change.subject: Fraction(change.new)},
             alike=_gives_alike(change),
-            price=price,
+            price=self._price,
             what="plans",
             same_program=self._same_program,
         )
+        if target.fresh(frozenset([one]) for one in every) > self._allowance.left:
+            # Not even the two plans at both ends are made where single edits can't be tried.
+            return Cause(remark=not_looked_for(len(every), "plans"))
         return (yield from set_cause(target, self._edits, every, self._allowance))
+
+    def _value(self, old: float, new: float, every: Sequence[int]) -> Searching[Cause]:
+        groups = grouped(self._edits, every)
+        if self._same_program and len(groups) == 1:
+            ((group, positions),) = groups.items()
+            return Cause(parts=(Part(group=group, edits=positions, amount=new - old),))
+        number = Number(replay=self._replay, question="value", old=old, new=new, price=self._price, what="plans")
+        return (yield from number_cause(number, self._edits, every, self._allowance, same_program=self._same_program))
+
+    @property
+    def _price(self) -> int:
+        return _PLAN_PRICE * (1 + max(plan.nodes for plan in self._plans if plan is not None))
 
 
 def _gives_alike(change: Change) -> Callable[[Answer, Answer], bool]:
@@ -256,6 +266,17 @@ def verdict_cause(replay: Replay, old: object, new: object, most: int = MOST_IN_
         [set_cause(target, replay.edits, replay.relevant("verdict"), Allowance(most, MOST_IN_ALL), most)]
     )
     return cause
+
+
+def _has_rules(campaign: Campaign) -> bool:
+    """Whether any house rule is set, for all orders or for a lot."""
+    house = campaign.house
+    return bool(
+        house.keep_apart
+        or house.max_lots is not None
+        or house.least_if_used
+        or any(lot.least_if_used for lot in campaign.lots)
+    )
 
 
 def _recorded(kind: str, value: object) -> Answer:

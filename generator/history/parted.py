@@ -87,8 +87,11 @@ def _affordable(
     """The groups among which the number is divided, the finest that can be afforded; and what to say of it."""
     groups = grouped(edits, every)
     needed = most_asked_by(len(groups))
-    if needed <= MOST_FOR_A_NUMBER and allowance.takes(number.price * needed):
-        return groups, ""
+    if needed <= MOST_FOR_A_NUMBER:
+        unions = (_union(list(groups.values()), players) for players in asked_by(len(groups)))
+        needed = sum(not number.replay.knows(number.question, union) for union in unions)
+        if allowance.takes(number.price * needed):
+            return groups, ""
     files = filed(edits, every)
     if len(files) < len(groups) and allowance.takes_reserve(number.price * most_asked_by(len(files))):
         return files, COARSE.format(needed, number.what)

@@ -15,8 +15,8 @@ from generator.findings.ask import Asking, ask_possible
 from generator.findings.conformity import DECIMALS, conformities_of, uncertain_rows
 from generator.findings.house import UndecidedError
 from generator.findings.model import OrderModel
-from generator.findings.orders import MET, ask_vanishing
-from generator.findings.programs import ZERO, share_program, share_rows
+from generator.findings.orders import LOST, ask_vanishing
+from generator.findings.programs import ZERO, capped_upper, share_program, share_rows
 from generator.findings.recipes import ask_first_shares, ask_least_cost, named_shares
 from generator.findings.records import Verdict
 from generator.findings.room import ask_room, scales_of
@@ -59,20 +59,30 @@ def ask_bare_verdict(model: OrderModel) -> Asking[Verdict]:
     """As ``findings.verdicts.judge``, also where that is undecided, without its proofs."""
     if not model.rules.names():
         return (yield from ask_verdict(model))
-    if (verdict := (yield from _ask_lost(model))) is not None:
-        return verdict
-    greatest = yield from ask_greatest_amount(_without_amount(model))
-    face = yield from ask_face(model)
-    if greatest and greatest.amount is not None and model.amount is not None and greatest.amount < model.amount:
-        return "short"
-    return "edge" if face else "makeable"
+    unmet = yield from _ask_unmet(model)
+    if unmet is not None:
+        return unmet
+    return "edge" if (yield from ask_face(model)) else "makeable"
 
 
-def _ask_lost(model: OrderModel) -> Asking[Verdict | None]:
-    """``unreachable`` or ``barred``; None where a blend within limits and rules exists."""
+def _ask_unmet(model: OrderModel) -> Asking[Verdict | None]:
+    """``unreachable``, ``barred`` or ``short``; None where the order is met."""
     if not (yield from ask_possible(share_program(model, share_rows(model), (ZERO,) * len(model.lots)))):
         return "unreachable"
-    return "barred" if model.rules.names() and not (yield from ask_allowed(model)) else None
+    if not model.rules.names():
+        capped = replace(model, upper=capped_upper(model, model.amount))
+        return None if (yield from ask_allowed(capped)) else "short"
+    greatest = yield from ask_greatest_amount(_without_amount(model))
+    # Without any stock there is no greatest amount; with some, none at all means that the rules allow no blend.
+    if (greatest is None and not (yield from ask_allowed(model))) or (greatest is not None and greatest.amount == 0):
+        return "barred"
+    is_short = (
+        greatest is not None
+        and greatest.amount is not None
+        and model.amount is not None
+        and greatest.amount < model.amount
+    )
+    return "short" if is_short else None
 
 
 def _without_amount(model: OrderModel) -> OrderModel:
@@ -83,7 +93,7 @@ def _without_amount(model: OrderModel) -> OrderModel:
 def _ask_cost(_system: System, model: OrderModel) -> Asking[Answer]:
     """The cheapest recipe's cost; ``NOT_KNOWN`` where a lot of unknown cost is needed."""
     if all(cost is None for cost in model.cost):
-        return NOT_KNOWN if (yield from ask_bare_verdict(model)) in MET else None
+        return NOT_KNOWN if (yield from _ask_unmet(model)) is None else None
     least = yield from ask_least_cost(model)
     if least is None:
         return None
@@ -92,15 +102,15 @@ def _ask_cost(_system: System, model: OrderModel) -> Asking[Answer]:
 
 def _ask_amount(_system: System, model: OrderModel) -> Asking[Answer]:
     """The greatest amount, 0 where the order is lost; ``NO_BOUND`` where it has none."""
-    if (yield from _ask_lost(model)) is not None:
-        return ZERO
     greatest = yield from ask_greatest_amount(_without_amount(model))
-    return NO_BOUND if greatest is None or greatest.amount is None else greatest.amount
+    if greatest is None:
+        return ZERO if (yield from _ask_unmet(model)) in LOST else NO_BOUND
+    return NO_BOUND if greatest.amount is None else greatest.amount
 
 
 def _ask_room(system: System, model: OrderModel) -> Asking[Answer]:
     scales = scales_of(model, {component.name: component for component in system.campaign.components})
-    is_met = (yield from ask_bare_verdict(model)) in MET
+    is_met = (yield from _ask_unmet(model)) is None
     room = yield from ask_room(model, scales, in_amount=is_met)
     return None if room is None else room.t
 

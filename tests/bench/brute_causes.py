@@ -12,10 +12,12 @@ from collections import Counter
 
 from tests.bench import one_thread  # noqa: F401  # isort: skip  (numpy reads the number of threads when it is imported)
 from tests.history.brute import check_pair
-from tests.history.making import pair
+from tests.history.making import pair, ruled_pair
 
 #: Every so many pairs the plan's causes are checked as well: each subset makes a whole plan.
 WITH_PLANS = 5
+#: Every so many pairs have house rules.
+WITH_RULES = 4
 
 
 def main(pairs: int, first: int = 0) -> None:
@@ -24,7 +26,8 @@ def main(pairs: int, first: int = 0) -> None:
     kinds: Counter[str] = Counter()
     undivided = 0
     for seed in range(first, first + pairs):
-        counted = check_pair(*pair(seed), with_plans=seed % WITH_PLANS == 0)
+        made = ruled_pair(seed) if seed % WITH_RULES == 1 else pair(seed)
+        counted = check_pair(*made, with_plans=seed % WITH_PLANS == 0)
         kinds.update(counted.kinds)
         undivided += counted.undivided
     print(f"{pairs} pairs in {time.process_time() - start:.0f} s, all as brute force finds:")

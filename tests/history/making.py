@@ -64,6 +64,14 @@ def pair(seed: int) -> tuple[Campaign, Campaign]:
     return old.campaign(), edited(old, seed + 1, 1 + seed % 6).campaign()
 
 
+def ruled_pair(seed: int) -> tuple[Campaign, Campaign]:
+    """Likewise, with house rules: few lots in a recipe, a least share of a used one, two lots kept apart."""
+    old = tables(seed)
+    rules = ("max_lots = 2", "least_if_used = 20", 'keep_apart = [["A", "B"]]', "max_lots = 3\nleast_if_used = 10")
+    old.toml += f"[house]\n{rules[seed % len(rules)]}\n"
+    return old.campaign(), edited(old, seed + 1, 1 + seed % 5).campaign()
+
+
 def _lot(chance: random.Random, components: Sequence[str]) -> Row:
     row = {"stock": str(chance.choice([0, 20, 60, 200])), "cost": str(chance.randint(5, 40))}
     return row | {name: str(chance.randint(0, 40)) for name in components}

@@ -27,7 +27,7 @@ from generator.history.searching import Allowance, side_by_side
 from generator.history.smallest import NOT_SPARED, Target, set_cause
 from generator.history.systems import Systems, ranks
 from tests.history.brute import Oracle, check_pair, told
-from tests.history.making import Tables, pair
+from tests.history.making import Tables, pair, ruled_pair
 
 F = Fraction
 
@@ -63,6 +63,13 @@ def test_causes_are_those_of_brute_force() -> None:
     assert kinds["recipe"] > 3
     assert kinds["amount"] > 3
     assert kinds["conformity"] > 2
+
+
+def test_causes_within_house_rules_are_those_of_brute_force() -> None:
+    """Where recipes have rules to keep, causes agree with trying every subset as well."""
+    kinds = sum((check_pair(*ruled_pair(seed)).kinds for seed in (8, 9, 15, 29)), Counter[str]())
+    assert kinds["verdict"] > 1
+    assert kinds.total() > 6
 
 
 @given(st.integers(0, 10**6))
