@@ -39,11 +39,11 @@ _FOR_PLANS = 50
 NOT_PROVEN = "The plan was not proven best, so that no edit can be named for what it gives."
 
 #: What one replay takes, where a plain one takes 1 (measured).
-PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 5}
+PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 20}
 #: The kinds of changes that have a cause, in the turns in which it is searched for.
 _TURNS: tuple[tuple[str, ...], ...] = (("verdict",), ("cost", "amount", "room", "conformity"), ("recipe",))
 #: House rules are kept by branching: with them a replay takes about so many times as long (measured).
-_WITH_RULES = 12
+_WITH_RULES = 30
 #: A plan takes about so many plain replays, and as many more for every node of its search.
 _PLAN_PRICE = 100
 #: What stands for a number that isn't there.
