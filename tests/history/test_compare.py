@@ -228,3 +228,61 @@ def test_lost_verdicts_come_first() -> None:
     after = make_findings(make_order("1"), make_order("2", verdict="unreachable"))
     found = changes(before, after)
     assert [(change.subject, is_lost(change)) for change in found] == [("2", True), ("1", False)]
+
+
+@pytest.mark.parametrize(
+    "old, new, told",
+    [
+        (42.4953, 41.3861, "fell to 41.39 EUR per t from 42.50 EUR per t"),
+        (0.0123, 0.0148, "rose to 0.015 EUR per t from 0.012 EUR per t"),
+        (0.5, 0.56, "rose to 0.56 EUR per t from 0.50 EUR per t"),
+        (
+            12345.0,
+            12345.5,
+            "rose to 12\N{NARROW NO-BREAK SPACE}345.50 EUR per t from 12\N{NARROW NO-BREAK SPACE}345.00",
+        ),
+    ],
+)
+def test_costs_have_no_false_digits(old: float, new: float, told: str) -> None:
+    """A cost is told to hundredths as pages print it, a very small one to as many places as it takes."""
+    before, after = (make_findings(make_order(recipes={"cheapest": make_recipe(cost)})) for cost in (old, new))
+    (change,) = changes(before, after)
+    assert told in change.sentence
+    assert (change.unit, change.places) == ("EUR per t", 3 if old < 0.1 else 2)
+
+
+@pytest.mark.parametrize(
+    "old, new, unit, told",
+    [
+        (21.0, 20.9, "scale", "fell to 20.9 scale steps from 21.0 scale steps"),
+        (1.0, 0.998, "scale", "fell to 0.998 scale steps from 1.000 scale steps"),
+        (-2.84, 1.25, "sd", "rose to 1.25 sd from −2.84 sd"),
+        (123.4, 123.3, "sd", ""),
+    ],
+)
+def test_rooms_are_told_in_one_number_of_places(old: float, new: float, unit: str, told: str) -> None:
+    """Both rooms have the places of the greater one to three digits, more only where pages tell them apart."""
+    before, after = (make_findings(make_order(room=room, room_unit=unit)) for room in (old, new))
+    found = sentences(before, after)
+    assert [told in sentence for sentence in found] == ([True] if told else [])
+
+
+def test_the_value_of_the_plan_in_words() -> None:
+    """What a plan is worth, or accepts in all, is told where both plans measure the same."""
+
+    def plan(value: float | None, measure: str = "value") -> Plan:
+        return Plan(value=value, measure=measure, orders={}, left={}, runs_out=(), status="proven", gap=0.0)
+
+    def found(old: Plan, new: Plan) -> list[str]:
+        return sentences(make_findings(plan=old), make_findings(plan=new))
+
+    assert found(plan(812.5), plan(900.0)) == ["The plan: its value rose to 900.00 EUR from 812.50 EUR."]
+    space = "\N{NARROW NO-BREAK SPACE}"
+    assert found(plan(20000.25), plan(19000.0)) == [
+        f"The plan: its value fell to 19{space}000 EUR from 20{space}000 EUR."
+    ]
+    assert found(plan(80.0, "amount"), plan(50.0, "amount")) == [
+        "The plan: the amount accepted in all fell to 50.00 t from 80.00 t."
+    ]
+    assert found(plan(80.0, "amount"), plan(50.0)) == []
+    assert found(plan(None), plan(50.0)) == []
