@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
+from math import lcm
 
 import numpy as np
 
@@ -20,7 +21,7 @@ from generator.geometry.sparse import best_in_turn
 Amounts = tuple[dict[int, Fraction], ...]
 #: A block and one of its lots, by its own position.
 Pair = tuple[int, int]
-_Row = tuple[Mapping[Pair, Fraction], Bound, Bound]
+_Row = tuple[Mapping[int, Fraction], Bound, Bound]
 
 #: A part this small of an order's most is taken for none, or for rounding.
 NOTHING = 1e-9
@@ -64,11 +65,12 @@ def settle(model: PlanModel, choice: Choice) -> Settled | None:
     Everything holds exactly: limits, shares, rules, amounts and stock.
     """
     columns = [(k, i) for k, lots in enumerate(choice.lots) if choice.accepted[k] for i in sorted(lots)]
+    place = _places(model, columns)
     rows: list[_Row] = []
     for k, block in enumerate(model.blocks):
         if choice.accepted[k]:
-            rows += _block_rows(block, k, choice.lots[k]) + _least_rows(block, k, choice.lots[k])
-            rows += _total_row(block, k, choice.lots[k], block.low)
+            own = place[k]
+            rows += _block_rows(block, own) + _least_rows(block, own) + _total_row(block, own, block.low)
     rows += _stock_rows(model, columns)
     if not columns:
         if any(low is not None and low > 0 for _, low, _ in rows):
@@ -98,10 +100,9 @@ def relax(model: PlanModel, accepted: Sequence[bool] | None = None) -> Relaxed |
     if not columns:
         return None
     rows: list[_Row] = []
-    for k, block in enumerate(model.blocks):
+    for k, (block, own) in enumerate(zip(model.blocks, _places(model, columns), strict=True)):
         if accepted is None or accepted[k]:
-            lots = frozenset(range(len(block.model.lots)))
-            rows += _block_rows(block, k, lots) + _total_row(block, k, lots, block.low if accepted else ZERO)
+            rows += _block_rows(block, own) + _total_row(block, own, block.low if accepted else ZERO)
     rows += _stock_rows(model, columns)
 
     def accepts(x: Floats) -> bool:
@@ -171,38 +172,45 @@ def stage_value(stage: Stage, amounts: Amounts) -> Fraction:
     return sum((stage.costs[k][i] * x for k, own in enumerate(amounts) for i, x in own.items()), ZERO)
 
 
-def _block_rows(block: Block, k: int, lots: frozenset[int]) -> list[_Row]:
+def _places(model: PlanModel, columns: Sequence[Pair]) -> list[dict[int, int]]:
+    """The columns of each block by its lots."""
+    places: list[dict[int, int]] = [{} for _ in model.blocks]
+    for j, (k, i) in enumerate(columns):
+        places[k][i] = j
+    return places
+
+
+def _block_rows(block: Block, place: Mapping[int, int]) -> list[_Row]:
     """Limits and share bounds over the chosen lots."""
-    chosen = sorted(lots)
-    return [({(k, i): terms[i] for i in chosen if terms[i]}, low, high) for terms, low, high in block.rows]
+    return [({j: terms[i] for i, j in place.items()}, low, high) for terms, low, high in block.rows]
 
 
-def _least_rows(block: Block, k: int, lots: frozenset[int]) -> list[_Row]:
+def _least_rows(block: Block, place: Mapping[int, int]) -> list[_Row]:
     """The least shares of the chosen lots, all of them used."""
-    leasts = [(i, least) for i in sorted(lots) if (least := block.model.rules.least[i])]
-    return [({(k, j): least - (ONE if j == i else ZERO) for j in lots}, None, ZERO) for i, least in leasts]
+    leasts = [(own, least) for i, own in place.items() if (least := block.model.rules.least[i])]
+    return [({j: least - (ONE if j == own else ZERO) for j in place.values()}, None, ZERO) for own, least in leasts]
 
 
-def _total_row(block: Block, k: int, lots: frozenset[int], low: Fraction) -> list[_Row]:
+def _total_row(block: Block, place: Mapping[int, int], low: Fraction) -> list[_Row]:
     if low <= 0 and block.high is None:
         return []
-    return [({(k, i): ONE for i in sorted(lots)}, low if low > 0 else None, block.high)]
+    return [(dict.fromkeys(place.values(), ONE), low if low > 0 else None, block.high)]
 
 
 def _stock_rows(model: PlanModel, columns: Sequence[Pair]) -> list[_Row]:
-    users: dict[int, dict[Pair, Fraction]] = {}
-    for k, i in columns:
-        users.setdefault(model.blocks[k].model.lots[i], {})[k, i] = ONE
+    users: dict[int, dict[int, Fraction]] = {}
+    for j, (k, i) in enumerate(columns):
+        users.setdefault(model.blocks[k].model.lots[i], {})[j] = ONE
     return [(own, None, model.stock[lot]) for lot, own in users.items() if lot in model.stock]
 
 
 def _sparse(columns: Sequence[Pair], rows: Sequence[_Row]) -> Sparse:
     """The rows in whole numbers; a row without entries stays, for it may be one that can't hold."""
-    place = {pair: j for j, pair in enumerate(columns)}
     whole, lows, highs = [], [], []
     for terms, low, high in rows:
-        scale = common_denominator((*terms.values(), low, high))
-        whole.append({place[pair]: a.numerator * (scale // a.denominator) for pair, a in terms.items() if a})
+        ratios = [(j, *a.as_integer_ratio()) for j, a in terms.items()]
+        scale = lcm(*{below for _, _, below in ratios}, common_denominator((low, high)))
+        whole.append({j: above * (scale // below) for j, above, below in ratios if above})
         lows.append(None if low is None else low.numerator * (scale // low.denominator))
         highs.append(None if high is None else high.numerator * (scale // high.denominator))
     return Sparse(width=len(columns), rows=tuple(whole), low=tuple(lows), high=tuple(highs))
@@ -210,7 +218,7 @@ def _sparse(columns: Sequence[Pair], rows: Sequence[_Row]) -> Sparse:
 
 def _dense(columns: Sequence[Pair], rows: Sequence[_Row]) -> Program:
     return Program(
-        rows=tuple(tuple(terms.get(pair, ZERO) for pair in columns) for terms, _, _ in rows),
+        rows=tuple(tuple(terms.get(j, ZERO) for j in range(len(columns))) for terms, _, _ in rows),
         row_low=tuple(low for _, low, _ in rows),
         row_high=tuple(high for _, _, high in rows),
         lower=(ZERO,) * len(columns),

@@ -6,7 +6,7 @@ the numbers in the claim prove it; a claim of the wrong shape proves nothing.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from fractions import Fraction
 from math import lcm
 
@@ -28,33 +28,41 @@ def proves_optimum(program: Program, optimum: Optimum) -> bool:
     return _is_feasible(program, x) and _least(program, program.cost, optimum.multipliers) == value
 
 
-def proves_best(
-    program: Sparse, cost: Mapping[int, int], x: Mapping[int, Fraction], multipliers: Mapping[int, Fraction]
-) -> bool:
-    """Whether ``x`` (by column, absent for 0) is feasible and no feasible point costs less.
+def proven_prices(
+    program: Sparse,
+    cost: Mapping[int, int],
+    x: Mapping[int, Fraction],
+    multipliers: Mapping[int, Fraction],
+    free: Collection[int] | None = None,
+) -> dict[int, int] | None:
+    """The reduced costs by column, all times one positive number, if ``x`` is feasible and none costs less; else None.
 
-    By complementary slackness: all reduced costs are ≥ 0, those of used columns 0, and a row with a
-    multiplier (by row, absent for 0) is at its low bound if that is > 0, at its high one if it is < 0.
+    ``x`` by column and ``multipliers`` by row, absent for 0.  By complementary slackness: all reduced costs are
+    ≥ 0, those of used columns 0, and a row with a multiplier is at its low bound if that is > 0, at its high one
+    if it is < 0.  With ``free`` columns, all others are held at 0.
     """
+    columns = range(program.width) if free is None else free
     below = lcm(*{value.denominator for value in x.values()})
     scaled = {j: value.numerator * (below // value.denominator) for j, value in x.items()}
-    if min(scaled.values(), default=0) < 0 or not all(0 <= j < program.width for j in scaled):
-        return False
+    if min(scaled.values(), default=0) < 0 or not all(j in columns and 0 <= j < program.width for j in scaled):
+        return None
     shared = lcm(*{weight.denominator for weight in multipliers.values()})
     weights = {k: weight.numerator * (shared // weight.denominator) for k, weight in multipliers.items() if weight}
-    reduced = [cost.get(j, 0) * shared for j in range(program.width)]
+    prices = {j: cost.get(j, 0) * shared for j in columns}
     for k, (row, low, high) in enumerate(zip(program.rows, program.low, program.high, strict=True)):
         total = sum(a * scaled[j] for j, a in row.items() if j in scaled)
         if (low is not None and total < low * below) or (high is not None and total > high * below):
-            return False
+            return None
         weight = weights.pop(k, 0)
         bound = low if weight > 0 else high
         if weight:
             if bound is None or total != bound * below:
-                return False
+                return None
             for j, a in row.items():
-                reduced[j] -= weight * a
-    return not weights and all(d == 0 or (d > 0 and not scaled.get(j)) for j, d in enumerate(reduced))
+                if j in prices:
+                    prices[j] -= weight * a
+    is_proven = not weights and all(price == 0 or (price > 0 and not scaled.get(j)) for j, price in prices.items())
+    return prices if is_proven else None
 
 
 def proves_infeasible(program: Program, infeasible: Infeasible) -> bool:

@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from generator.geometry.checks import proves_best
+from generator.geometry.checks import proven_prices
 from generator.geometry.elimination import cleared
 from generator.geometry.lifted import proves_regular, solve_lines
 from generator.geometry.mixed import Floats, linear_on
@@ -71,6 +71,17 @@ class _Proposal:
 
 
 @dataclass(frozen=True, slots=True)
+class _Caps:
+    """For each column the most that one row lets it come to (inf: no row does), a power of two as a unit for it,
+    and the row with the column's entry in it."""
+
+    tops: Floats
+    units: Floats
+    rows: Indices
+    entries: Floats
+
+
+@dataclass(frozen=True, slots=True)
 class _Vertex:
     """A best point for one cost and its multipliers (by row), and the columns and rows of its basis."""
 
@@ -93,15 +104,19 @@ def best_in_turn(
     free = frozenset(range(program.width))
     vertex: _Vertex | None = None
     face, is_only = program, False
+    matrix = _matrix(program)
+    if matrix is None or not program.width:
+        return None
     for given in costs:
         cost = dict(zip(given, cleared(list(given.values()))[0], strict=True))
         own = {j: c for j, c in cost.items() if c and j in free}
         if not own and vertex is not None:
             continue
-        vertex = _vertex(face, own, free, accepts)
-        if vertex is None:
+        best = _vertex(face, matrix, own, free, accepts)
+        if best is None:
             return None
-        face, free = _face(face, own, free, vertex)
+        vertex, free = best
+        face = _face(face, vertex)
         is_only = _is_one_point(face, free, vertex)
         if is_only:
             break
@@ -116,48 +131,51 @@ def best_in_turn(
 
 
 def _vertex(
-    program: Sparse, cost: Mapping[int, int], free: frozenset[int], accepts: Callable[[Floats], bool]
-) -> _Vertex | None:
-    """The best point over the ``free`` columns, checked."""
-    proposal = _proposed(program, cost, sorted(free), accepts)
+    program: Sparse, matrix: Any, cost: Mapping[int, int], free: frozenset[int], accepts: Callable[[Floats], bool]
+) -> tuple[_Vertex, frozenset[int]] | None:
+    """The best point over the ``free`` columns, checked, and which of them have no price."""
+    proposal = _proposed(program, matrix, cost, sorted(free), accepts)
     if proposal is None:
         return None
     idle = _idle(proposal)
     for without in [idle, frozenset[int]()] if idle else [idle]:
         basis = _basis(proposal, without)
-        vertex = basis and _on_basis(program, cost, proposal, basis, without)
-        if vertex and _proves(program, cost, proposal.order, vertex):
-            return vertex
+        vertex = None if basis is None else _on_basis(program, cost, proposal, basis, without)
+        if vertex is None:
+            continue
+        prices = proven_prices(program, cost, vertex.x, vertex.multipliers, free)
+        if prices is not None:
+            return vertex, frozenset(j for j, price in prices.items() if not price)
     return None
 
 
-def _proves(program: Sparse, cost: Mapping[int, int], order: Sequence[int], vertex: _Vertex) -> bool:
-    place = {j: position for position, j in enumerate(order)}
-    rows = tuple({place[j]: a for j, a in row.items() if j in place} for row in program.rows)
-    within = Sparse(width=len(order), rows=rows, low=program.low, high=program.high)
-    own = {place[j]: c for j, c in cost.items()}
-    return proves_best(within, own, {place[j]: v for j, v in vertex.x.items()}, vertex.multipliers)
+def _matrix(program: Sparse) -> Any | None:
+    """The rows as floats in compressed rows; None where a number is too large."""
+    from scipy.sparse import csr_array
+
+    starts = np.cumsum([0, *map(len, program.rows)])
+    try:
+        values = np.fromiter((a for row in program.rows for a in row.values()), dtype=np.float64, count=starts[-1])
+    except OverflowError:
+        return None
+    columns = np.fromiter((j for row in program.rows for j in row), dtype=np.int32, count=starts[-1])
+    return csr_array((values, columns, starts), shape=(len(program.rows), program.width))
 
 
 def _proposed(
-    program: Sparse, cost: Mapping[int, int], order: list[int], accepts: Callable[[Floats], bool]
+    program: Sparse, matrix: Any, cost: Mapping[int, int], order: list[int], accepts: Callable[[Floats], bool]
 ) -> _Proposal | None:
-    from scipy.sparse import csr_array
-
-    place = {j: position for position, j in enumerate(order)}
-    entries = [[(place[j], a) for j, a in row.items() if j in place] for row in program.rows]
-    starts = np.cumsum([0, *map(len, entries)])
+    if len(order) < program.width:
+        matrix = matrix[:, order].tocsr()
     try:
-        values = np.array([float(a) for row in entries for _, a in row])
         low = np.array([-inf if bound is None else float(bound) for bound in program.low])
         high = np.array([inf if bound is None else float(bound) for bound in program.high])
         costs = np.array([float(cost.get(j, 0)) for j in order])
     except OverflowError:
         return None
-    columns = np.array([j for row in entries for j, _ in row], dtype=np.int32)
-    matrix = csr_array((values, columns, starts), shape=(len(entries), len(order)))
     size = float(np.abs(costs).max(initial=0.0))
-    caps, unit, capping = _caps(matrix, high)
+    capping = _caps(matrix, high)
+    caps, unit = capping.tops, capping.units
     scaled = matrix.copy()
     scaled.data = scaled.data * unit[scaled.indices]
     found = linear_on(scaled, low, high, costs * unit / (size or 1.0), caps / unit)
@@ -169,10 +187,12 @@ def _proposed(
     if not accepts(whole):
         return None
     y = found.multipliers * (size or 1.0)
-    prices = costs - matrix.T @ y
     # A multiplier of a cap is one of the row that the cap comes from.
-    for j in np.flatnonzero((prices < -NO_PRICE * size) & np.isfinite(caps)):
-        y[capping[j]] = min(y[capping[j]], y[capping[j]] + prices[j] / matrix[capping[j], j])
+    prices = costs - matrix.T @ y
+    capped = np.flatnonzero((prices < -NO_PRICE * size) & np.isfinite(caps))
+    more = np.zeros(len(y))
+    np.minimum.at(more, capping.rows[capped], prices[capped] / capping.entries[capped])
+    y += more
     total, terms = matrix @ x, abs(matrix) @ x
     near = AT_BOUND * np.maximum(terms, 1e-300)
     with np.errstate(invalid="ignore"):
@@ -186,19 +206,22 @@ def _proposed(
     return _Proposal(order, used, bounds, matrix, y, costs)
 
 
-def _caps(matrix: Any, high: Floats) -> tuple[Floats, Floats, Indices]:
-    """What rows that only add up let each column come to (inf: anything), a power of two for a unit, and the row."""
+def _caps(matrix: Any, high: Floats) -> _Caps:
+    """What rows that only add up let each column come to."""
     lines = np.repeat(np.arange(matrix.shape[0]), np.diff(matrix.indptr))
     adds = np.isfinite(high)
     adds[lines[matrix.data < 0]] = False
     inside = np.flatnonzero(adds[lines] & (matrix.data > 0))
     tops = high[lines[inside]] / matrix.data[inside]
-    caps, capping = np.full(matrix.shape[1], inf), np.zeros(matrix.shape[1], dtype=np.int64)
     # The least comes last, and stays.
-    turn = inside[np.argsort(-tops, kind="stable")]
-    caps[matrix.indices[turn]], capping[matrix.indices[turn]] = -np.sort(-tops, kind="stable"), lines[turn]
-    unit = np.where(np.isfinite(caps) & (caps > 0), np.ldexp(1.0, np.frexp(caps)[1]), 1.0)
-    return np.maximum(caps, 0.0), unit, capping
+    turn = np.argsort(-tops, kind="stable")
+    chosen = np.full(matrix.shape[1], -1)
+    chosen[matrix.indices[inside[turn]]] = turn
+    has_cap = chosen >= 0
+    caps = np.where(has_cap, np.maximum(tops[chosen], 0.0), inf) if len(tops) else np.full(len(chosen), inf)
+    where = np.where(has_cap, inside[chosen], 0) if len(tops) else np.zeros(len(chosen), dtype=np.int64)
+    unit = np.where(np.isfinite(caps) & (caps > 0), np.ldexp(1.0, np.frexp(np.where(has_cap, caps, 1.0))[1]), 1.0)
+    return _Caps(caps, unit, lines[where], matrix.data[where])
 
 
 def _idle(proposal: _Proposal) -> frozenset[int]:
@@ -291,23 +314,15 @@ def _chosen_apart(
     return {k: Fraction(float(weight)) for k, weight in zip(lines, weights, strict=True) if weight}
 
 
-def _face(
-    program: Sparse, cost: Mapping[int, int], free: frozenset[int], vertex: _Vertex
-) -> tuple[Sparse, frozenset[int]]:
-    """All points as good as the vertex: rows with a multiplier held where they are, columns with a price at 0."""
-    weights, shared = cleared(list(vertex.multipliers.values()))
-    prices = {j: cost.get(j, 0) * shared for j in free}
+def _face(program: Sparse, vertex: _Vertex) -> Sparse:
+    """The rows of all points as good as the vertex: those with a multiplier are held where they are."""
     low, high = list(program.low), list(program.high)
-    for k, weight in zip(vertex.multipliers, weights, strict=True):
-        for j, a in program.rows[k].items():
-            if j in prices:
-                prices[j] -= weight * a
+    for k, weight in vertex.multipliers.items():
         if weight > 0:
             high[k] = low[k]
         else:
             low[k] = high[k]
-    left = frozenset(j for j, price in prices.items() if not price)
-    return Sparse(width=program.width, rows=program.rows, low=tuple(low), high=tuple(high)), left
+    return Sparse(width=program.width, rows=program.rows, low=tuple(low), high=tuple(high))
 
 
 def _is_one_point(face: Sparse, free: frozenset[int], vertex: _Vertex) -> bool:

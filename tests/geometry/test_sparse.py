@@ -7,7 +7,7 @@ from fractions import Fraction
 
 import pytest
 
-from generator.geometry.checks import proves_best
+from generator.geometry.checks import proven_prices
 from generator.geometry.decide import decide
 from generator.geometry.elimination import determinant, solve_square
 from generator.geometry.lifted import proves_regular, solve_lines
@@ -111,7 +111,7 @@ def dense(
     )
 
 
-@pytest.mark.parametrize("seed", range(60))
+@pytest.mark.parametrize("seed", range(30))
 def test_best_in_turn_against_the_dense_solver(seed: int) -> None:
     """Each cost in turn is as low as the dense exact solver makes it; where it gives no answer, that is allowed."""
     rng = random.Random(seed)
@@ -174,12 +174,12 @@ def test_the_checker_sees_through_wrong_claims() -> None:
     program = Sparse(width=2, rows=({0: 1, 1: 1}, {0: 1}), low=(None, None), high=(6, 4))
     cost = {0: -3, 1: -2}
     x, y = {0: Fraction(4), 1: Fraction(2)}, {0: Fraction(-2), 1: Fraction(-1)}
-    assert proves_best(program, cost, x, y)
-    assert not proves_best(program, cost, {0: Fraction(5), 1: Fraction(1)}, y)
-    assert not proves_best(program, cost, {0: Fraction(4), 1: Fraction(1)}, y)
-    assert not proves_best(program, cost, {1: Fraction(6)}, y)
-    assert not proves_best(program, cost, x, {0: Fraction(-2)})
-    assert not proves_best(program, cost, x, {0: Fraction(-3)})
-    assert not proves_best(program, cost, {0: Fraction(4), 1: Fraction(2), 7: Fraction(1)}, y)
-    assert not proves_best(program, cost, x, {**y, 5: Fraction(1)})
-    assert not proves_best(program, cost, {0: Fraction(7), 1: Fraction(-1)}, y)
+    assert proven_prices(program, cost, x, y) == {0: 0, 1: 0}
+    assert proven_prices(program, cost, {0: Fraction(5), 1: Fraction(1)}, y) is None
+    assert proven_prices(program, cost, {0: Fraction(4), 1: Fraction(1)}, y) is None
+    assert proven_prices(program, cost, {1: Fraction(6)}, y) is None
+    assert proven_prices(program, cost, x, {0: Fraction(-2)}) is None
+    assert proven_prices(program, cost, x, {0: Fraction(-3)}) is None
+    assert proven_prices(program, cost, {0: Fraction(4), 1: Fraction(2), 7: Fraction(1)}, y) is None
+    assert proven_prices(program, cost, x, {**y, 5: Fraction(1)}) is None
+    assert proven_prices(program, cost, {0: Fraction(7), 1: Fraction(-1)}, y) is None
