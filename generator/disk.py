@@ -34,6 +34,9 @@ RETRY_PAUSES = (0.02, 0.04, 0.08, 0.16, 0.32, 0.64, 1.0, 1.0, 1.0, 1.0)
 _HELD_BY_OTHERS = frozenset({errno.EACCES, errno.EPERM, errno.EBUSY})
 _WINDOWS_HELD = frozenset({5, 32, 33})
 
+# Not blocking: a pipe of that name would have to be waited for before anything can be asked of it.
+_READING = os.O_RDONLY | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0)
+
 
 #: Maps the name of a directory entry to its canonical name; None: not wanted.
 Wanted = Callable[[str], str | None]
@@ -141,22 +144,21 @@ def read_folder(
 
 def read_file(path: Path | str, *, at_most: int | None = None) -> bytes:
     """Read a regular file, at most ``at_most`` bytes; OSError if it is none or can't be read."""
-    # Not blocking: a pipe of that name would have to be waited for before anything can be asked of it.
-    descriptor = os.open(path, os.O_RDONLY | getattr(os, "O_NONBLOCK", 0) | getattr(os, "O_BINARY", 0))
+    descriptor = os.open(path, _READING)
     try:
         status = os.fstat(descriptor)
         if not stat.S_ISREG(status.st_mode):
             raise OSError(errno.EINVAL, "it is not a file")
         left = sys.maxsize if at_most is None else at_most
-        pieces = []
         # One byte more than there should be: less than asked for is the end, so most files are read in one go.
-        while left > 0:
-            asked = min(left, max(status.st_size, 1 << 12) + 1)
-            piece = os.read(descriptor, asked)
+        asked = min(left, max(status.st_size, 1 << 12) + 1)
+        piece = os.read(descriptor, asked)
+        if len(piece) < asked:
+            return piece
+        pieces = [piece]
+        while piece and (left := left - len(piece)) > 0:
+            piece = os.read(descriptor, min(left, asked))
             pieces.append(piece)
-            left -= len(piece)
-            if len(piece) < asked:
-                break
         return b"".join(pieces)
     finally:
         os.close(descriptor)

@@ -84,8 +84,9 @@ def read_inputs(folder: Folder, *, is_just_found: bool = False) -> Inputs:
     """Read a campaign's files, and the site.toml that applies to it; one just found is not listed again."""
     listing = folder.listing if is_just_found else None
     own = disk.read_folder(folder.path, input_name, at_most=MOST_BYTES, listing=listing)
-    files = {name: data for name, data in own.files.items() if name != SITE}
-    unreadable = {name: why for name, why in own.unreadable.items() if name != SITE}
+    files, unreadable = dict(own.files), dict(own.unreadable)
+    has_site = files.pop(SITE, None) is not None
+    unreadable.pop(SITE, None)
     if folder.site is not None:
         try:
             files[SITE] = disk.read_file(folder.site, at_most=MOST_BYTES)
@@ -93,10 +94,10 @@ def read_inputs(folder: Folder, *, is_just_found: bool = False) -> Inputs:
             unreadable[SITE] = disk.reason(error)
     problems = [_unreadable(folder.name if name == "." else name, why) for name, why in unreadable.items()]
     problems += [_shadowed(name) for name in own.shadowed]
-    if SITE in own.files:
+    if has_site:
         problems.append(_misplaced_site())
     return Inputs(
-        files=dict(sorted(files.items())),
+        files=dict(sorted(files.items())) if folder.site is not None else files,
         problems=tuple(problems),
         unreadable=frozenset(unreadable),
     )

@@ -194,8 +194,10 @@ class Run:
     def _fingerprint(self, folder: Folder, inputs: Inputs, theme: str) -> str:
         """Digest everything that a campaign's pages are made of."""
         digest = hashlib.sha256(self._common(self._job.theme or theme))
-        around = [folder.name, folder.slug, [asdict(problem) for problem in inputs.problems]]
-        digest.update(canonical_json([*around, head_key(self._history_path(folder))]))
+        around = f"{folder.name}\0{folder.slug}\0{head_key(self._history_path(folder))}\0"
+        digest.update(around.encode("utf-8", "surrogatepass"))
+        if inputs.problems:
+            digest.update(canonical_json([asdict(problem) for problem in inputs.problems]))
         for name, data in inputs.files.items():
             digest.update(f"\n{name} {len(data)}\n".encode())
             digest.update(data)

@@ -20,7 +20,7 @@ STAMPS_NAME = ".hullbook-stamps.json"
 FORMAT = "hullbook-stamps-2"
 
 #: When a folder's entries changed last, its number on the disk, and a digest of its files' sizes and moments.
-Look = tuple[int, int, str]
+Look = tuple[str, str, str]
 
 
 class Presence:
@@ -31,15 +31,15 @@ class Presence:
         self._thorough = thorough
         self._before = _read(output)
         self._now: dict[str, str] = {}
-        self._folders: dict[str, tuple[int, int]] = {}
+        self._folders: dict[str, tuple[str, str]] = {}
 
     def holds(self, campaign: str, files: Mapping[str, str]) -> bool:
         """Whether every file of a campaign, digests by address, is there with its content."""
-        before = _looks(self._before.get(campaign, ""))
-        # The program writes its own records into the top folder all the time: its stamp tells nothing.
-        if before and not self._thorough and self._stand(before):
-            self._now[campaign] = self._before[campaign]
+        text = self._before.get(campaign, "")
+        if text and not self._thorough and self._stand(text):
+            self._now[campaign] = text
             return True
+        before = _looks(text)
         looks = {}
         for name, own in _by_folder(files).items():
             look = self._look(name, own)
@@ -73,21 +73,23 @@ class Presence:
         except WriteError:
             return
 
-    def _stand(self, looks: Mapping[str, Look]) -> bool:
-        """Whether the folders are as they were."""
-        for name, (changed, number, _) in looks.items():
-            if not name or self._folder(name) != (changed, number):
+    def _stand(self, looks: str) -> bool:
+        """Whether the folders of these looks are as they were; a thousand campaigns are asked in a blink."""
+        for line in looks.split("\n"):
+            parts = line.split(" ", 3)
+            # The program writes its own records into the top folder all the time: its stamp tells nothing.
+            if len(parts) < 4 or not parts[3] or self._folder(parts[3]) != (parts[0], parts[1]):
                 return False
         return True
 
-    def _folder(self, name: str) -> tuple[int, int] | None:
+    def _folder(self, name: str) -> tuple[str, str] | None:
         found = self._folders.get(name)
         if found is None:
             try:
                 status = os.stat(f"{self._output}/{name}")  # noqa: PTH116 - ten thousand folders in a blink
             except OSError:
                 return None
-            found = self._folders[name] = (status.st_mtime_ns, status.st_ino) if name else (0, 0)
+            found = self._folders[name] = (str(status.st_mtime_ns), str(status.st_ino)) if name else ("0", "0")
         return found
 
     def _look(self, name: str, own: Iterable[str]) -> Look | None:
@@ -130,7 +132,7 @@ def _looks(text: str) -> dict[str, Look]:
     try:
         for line in text.split("\n") if text else ():
             moment, number, digest, name = line.split(" ", 3)
-            looks[name] = (int(moment), int(number), digest)
+            looks[name] = (moment, number, digest)
     except ValueError:
         return {}
     return looks
