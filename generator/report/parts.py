@@ -77,9 +77,8 @@ class Table:
         return lines
 
     def _dress(self, cell: Cell, column: Column) -> str:
-        names = "s" if len(cell.text) < _SHORT else ""
-        if column.kind == "number":
-            names += " n"
+        # Numbers are never broken anyway, and a page has thousands of them.
+        names = "n" if column.kind == "number" else "s" if len(cell.text) < _SHORT else ""
         if cell.tone:
             names += f" {cell.tone}"
         if cell.mark:

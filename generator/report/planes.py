@@ -82,6 +82,7 @@ class Planes:
             blend=_pair(across, up, recipe.values if recipe else None),
             nearest=_pair(across, up, finding.nearest.values if finding.nearest else None),
             separation=self._separation(finding, across, up),
+            lots=frozenset(recipe.shares if recipe else finding.nearest.shares if finding.nearest else ()),
         )
         return self._figure("hull", across, up, overlay, finding.order)
 

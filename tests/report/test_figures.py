@@ -147,6 +147,17 @@ def test_no_name_covers_the_blend_of_the_order() -> None:
     assert left > x + 6 or left + canvas.width_of("SWEEP-26A") < x - 6 or abs(middle - 4 - y) > 12
 
 
+def test_lots_of_the_blend_are_named_first() -> None:
+    """Where there is no room for every name, those of the lots in the recipe are there."""
+    points = [LotPoint(name=f"L{n}", x=n % 8, y=n // 8, is_corner=False, lots=(f"L{n}",)) for n in range(64)]
+    axis = Axis(label="N", unit="%", ends=(-1.0, 8.0))
+    base = draw_base(points, axis, axis)
+    used = {"L27", "L36", "L44"}
+    text, left_over = lot_names(base, Overlay(lots=frozenset(used)))
+    assert left_over > 0
+    assert used <= set(re.findall(r">(L\d+)<", text))
+
+
 def test_long_names_are_cut_to_their_room() -> None:
     """Text that is too long for its place ends in an ellipsis; wide characters count as such."""
     assert canvas.fitted("K₂O, %", 200) == "K₂O, %"

@@ -80,6 +80,7 @@
       return !row.classList.contains("total");
     });
     if (rows.length >= LEAST_SORTED) sorter(table, rows);
-    if (rows.length >= LEAST_FILTERED) filter(table, rows);
+    // Beside another table or a figure a field would push the two out of line.
+    if (rows.length >= LEAST_FILTERED && !table.closest(".beside")) filter(table, rows);
   });
 })();

@@ -38,13 +38,14 @@ class Separation:
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Overlay:
-    """What one order adds to the plane; None where it doesn't apply."""
+    """What one order adds to the plane; None where it doesn't apply.  ``lots`` are those of its blend."""
 
     x_window: Bounds = (None, None)
     y_window: Bounds = (None, None)
     blend: Pair | None = None
     nearest: Pair | None = None
     separation: Separation | None = None
+    lots: frozenset[str] = frozenset()
 
 
 @dataclass(frozen=True, slots=True)
@@ -69,7 +70,9 @@ def draw_base(points: Sequence[LotPoint], x_axis: Axis, y_axis: Axis) -> Base:
 
 
 def lot_names(base: Base, overlay: Overlay) -> tuple[str, int]:
-    """Names beside the lots as SVG to draw last, the outline's first, then corners; and how many found no room.
+    """Names beside the lots as SVG to draw last, and how many found no room.
+
+    Those in the order's blend come first, then the outline's, then corners.
 
     No name covers the order's blend, and where there is a choice none crosses the hull's edge, the window or
     the separating line.
@@ -81,7 +84,11 @@ def lot_names(base: Base, overlay: Overlay) -> tuple[str, int]:
         return frame.x(place[0]), bottom - frame.y(place[1])
 
     outline = shadow([(point.x, point.y) for point in points])
-    first = sorted(points, key=lambda point: ((point.x, point.y) not in outline, not point.is_corner))
+
+    def rank(point: LotPoint) -> tuple[bool, bool, bool]:
+        return overlay.lots.isdisjoint(point.lots), (point.x, point.y) not in outline, not point.is_corner
+
+    first = sorted(points, key=rank)
     marks = [at(place) for place in (overlay.blend, overlay.nearest) if place is not None]
     placed, left_over = labels.place(
         [at((point.x, point.y)) for point in first],
