@@ -193,6 +193,14 @@ def test_the_timeline_has_every_headline(output: dict[str, bytes], book: Campaig
     assert "Cost of the cheapest recipe" in page
 
 
+def test_timeline_and_method_have_a_list_to_jump_by(output: dict[str, bytes]) -> None:
+    """Every part of the two long pages without facts can be reached from their first screen."""
+    for address in ("spring/history/index.html", "method.html"):
+        page = PageReader(output[address].decode())
+        sections = {f"#{values['id']}" for tag, values in page.tags if tag == "section" and "id" in values}
+        assert sections <= set(page.links), address
+
+
 def test_an_order_and_a_lot_tell_their_own_past(output: dict[str, bytes]) -> None:
     """Order and lot pages list the revisions that touched them, the cause beside, and draw what moved."""
     order, lot = words(output, "spring/orders/1042.html"), words(output, "spring/lots/A.html")
