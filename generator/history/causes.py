@@ -38,11 +38,12 @@ _RESERVE = 20
 _FOR_PLANS = 50
 NOT_PROVEN = "The plan was not proven best, so that no edit can be named for what it gives."
 
-#: What one replay takes, where a plain one takes 1 (measured).
-PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 20}
+#: The solving that one replay takes, where a plain one takes 1, and what it takes besides (measured).
+PRICES: Mapping[Question, int] = {"verdict": 1, "cost": 1, "amount": 1, "recipe": 1, "room": 2, "conformity": 1}
+_BESIDES: Mapping[Question, int] = {"conformity": 19}
 #: The kinds of changes that have a cause, in the turns in which it is searched for.
 _TURNS: tuple[tuple[str, ...], ...] = (("verdict",), ("cost", "amount", "room", "conformity"), ("recipe",))
-#: House rules are kept by branching: with them a replay takes about so many times as long (measured).
+#: House rules are kept by branching: with them solving takes about so many times as long (measured).
 _WITH_RULES = 30
 #: A plan takes about so many plain replays, and as many more for every node of its search.
 _PLAN_PRICE = 100
@@ -130,7 +131,7 @@ class _Work:
 
     def _price(self, question: Question) -> int:
         has_rules = any(_has_rules(side.campaign) for side in (self._old, self._new))
-        return PRICES[question] * (_WITH_RULES if has_rules else 1)
+        return PRICES[question] * (_WITH_RULES if has_rules else 1) + _BESIDES.get(question, 0)
 
     def _number(self, replay: Replay, change: Change, question: Question) -> Searching[Cause]:
         assert isinstance(change.old, float)
