@@ -29,12 +29,12 @@ from generator.intake.records import Campaign
 
 __all__ = ["MOST_IN_ALL", "PROGRAM", "TOGETHER", "UNTOLD", "Side", "explained", "grouped"]
 
-#: Replays for all changes of one revision: about half a minute at worst (measured).
+#: Replays for all changes of one revision: about half a minute at 2.5 ms each (tests/bench/bench_causes.py).
 MOST_IN_ALL = 12_000
 #: Of these so many in a hundred are kept for changes whose cause can't be searched for to the end.
 _RESERVE = 20
 
-#: Of the plan's replays so many in a hundred as of all others: some ten seconds at worst (measured).
+#: Of the plan's replays so many in a hundred as of all others: some fifteen seconds at worst.
 _FOR_PLANS = 50
 NOT_PROVEN = "The plan was not proven best, so that no edit can be named for what it gives."
 

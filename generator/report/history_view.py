@@ -7,7 +7,7 @@ from collections.abc import Sequence
 from generator import numbers
 from generator.history.chronicle import Line
 from generator.history.headlines import cause_text, clause_of, part_size, part_words
-from generator.history.records import Cause, Change, Comparison, Edit, Outline
+from generator.history.records import Cause, Change, Comparison, Edit, Outline, Part
 from generator.report import words
 from generator.report.figures import trends
 from generator.report.figures.canvas import finished
@@ -15,6 +15,8 @@ from generator.report.parts import Cell, Column, FigureView, Legend, Row, Sectio
 
 #: Rows of one table at most, so that no page grows without end; what is left out is counted.
 MOST_ROWS = 150
+#: Parts of one changed number at most; smaller ones are told together.
+MOST_PARTS = 8
 #: What a change is of, where it is not of an order.
 _KINDS = {"lot gone": "Lot", "lot new": "Lot", "role": "Lot", "hull": "Hull", "volume": "Hull", "plan": "Plan"}
 
@@ -122,7 +124,11 @@ def _cause_cell(change: Change, edits: Sequence[Edit]) -> Cell:
     if cause is None:
         return text_cell("")
     if cause.parts:
-        texts = [_part_text(cause, position, change, edits) for position in range(len(cause.parts))]
+        shown = len(cause.parts) if len(cause.parts) <= MOST_PARTS else MOST_PARTS - 1
+        texts = [_part_text(part, change, edits) for part in cause.parts[:shown]]
+        if shown < len(cause.parts):
+            rest = sum(part.amount for part in cause.parts[shown:])
+            texts.append(f"{part_size(change, rest)} from {len(cause.parts) - shown} smaller parts")
         return text_cell("; ".join(texts) + ".", detail=cause.remark)
     why = cause_text(change, edits)
     if not why:
@@ -131,8 +137,7 @@ def _cause_cell(change: Change, edits: Sequence[Edit]) -> Cell:
     return text_cell(f"{why[:1].upper()}{why[1:]}.", detail=" ".join(text for text in told if text))
 
 
-def _part_text(cause: Cause, position: int, change: Change, edits: Sequence[Edit]) -> str:
-    part = cause.parts[position]
+def _part_text(part: Part, change: Change, edits: Sequence[Edit]) -> str:
     percent = 100 if change.kind == "conformity" else 1
     error = "" if part.error is None else f" (sampled, ± {numbers.significant(part.error * percent, 1)})"
     return f"{part_size(change, part.amount)}{error} from {part_words(part, edits, change.subject)}"

@@ -17,7 +17,7 @@ from generator.history.records import Cause, Change, Comparison, Edit, LotPoint,
 from generator.intake.campaign import read_campaign
 from generator.report.figures import trends
 from generator.report.history_pages import HistoryFiles, Shelf, draw_history
-from generator.report.history_view import changes_section
+from generator.report.history_view import MOST_PARTS, changes_section
 from generator.report.manifest import Published
 from generator.report.pages import assets, draw_campaign, draw_index, draw_method
 from generator.report.publish import Publication
@@ -175,6 +175,15 @@ def test_every_kind_of_cause_in_words() -> None:
         "(no single one does). / Some of these edits may not be needed.",
         "Plan | Its value rose to 2 EUR from 1 EUR. | Not looked for: at least 9 more plans would be needed.",
     ]
+
+
+def test_many_parts_are_told_by_the_greatest() -> None:
+    """Of a number that very many rows changed the greatest parts are told, and the sum of the others."""
+    parts = tuple(Part(group="lot A", edits=(0,), amount=float(amount)) for amount in range(20, 0, -1))
+    change = Change(kind="cost", subject="1", old=0.0, new=210.0, sentence="", unit="EUR per t", places=2)
+    cell = changed(replace(change, cause=Cause(parts=parts))).splitlines()[-1]
+    assert cell.count("from lot A is dearer") == MOST_PARTS - 1
+    assert cell.endswith("+91.00 EUR per t from 13 smaller parts.")
 
 
 def test_without_any_cause_there_is_no_column_for_it() -> None:
