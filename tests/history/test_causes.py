@@ -67,7 +67,7 @@ def test_causes_are_those_of_brute_force() -> None:
 
 def test_causes_within_house_rules_are_those_of_brute_force() -> None:
     """Where recipes have rules to keep, causes agree with trying every subset as well."""
-    kinds = sum((check_pair(*ruled_pair(seed)).kinds for seed in (8, 9, 15, 29)), Counter[str]())
+    kinds = sum((check_pair(*ruled_pair(seed)).kinds for seed in (2, 4, 9, 29)), Counter[str]())
     assert kinds["verdict"] > 1
     assert kinds.total() > 6
 
