@@ -6,43 +6,31 @@ they use.  The questions are answered in floating point, to about seven digits.
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from collections.abc import Mapping, Sequence
 from fractions import Fraction
 from math import inf
 
+from generator.findings.kept import (
+    NOISE,
+    REACHED,
+    Kept,
+    kept_of,
+    most_beside,
+    overdrawn,
+    reaches,
+    stock_of,
+)
 from generator.findings.plan_exact import Settled
 from generator.findings.plan_model import PlanModel
-from generator.findings.plan_parts import Part, part_of, rows_over
+from generator.findings.plan_parts import rows_over
 from generator.findings.programs import ZERO
 from generator.findings.records import Loser, Verdict
-from generator.geometry.mixed import Mixed, SparseRow, linear, search
+from generator.geometry.mixed import Mixed, SparseRow, linear
 
-#: An amount counts as reached within this part of itself.
-REACHED = 1e-6
 #: Orders named that could give way, those that give up least first.
 MOST_INSTEAD = 3
-#: Nodes for one question about one order, and seconds as the last guard.
-NODES, SECONDS = 50, 20.0
 #: Where only house rules are in the way: lots and orders that are looked at.
 MOST_SUSPECTS = 6
-#: Gains below this part of the plan's value are noise of the floating point.
-NOISE = 1e-9
-
-
-@dataclass(frozen=True, slots=True)
-class _Kept:
-    """The program of the plan kept as it is, and one order free: its columns come first.
-
-    ``totals`` are the rows that hold the other orders at what they got.
-    """
-
-    part: Part
-    columns: Mapping[int, Mapping[int, int]]
-    rows: tuple[SparseRow, ...]
-    totals: Mapping[int, int]
-    stock: Mapping[int, SparseRow]
-    upper: tuple[float, ...]
 
 
 def losers_of(model: PlanModel, settled: Settled, alone: Mapping[str, Verdict | None]) -> list[Loser]:
@@ -64,15 +52,14 @@ def losers_of(model: PlanModel, settled: Settled, alone: Mapping[str, Verdict | 
 
 def _loser(model: PlanModel, settled: Settled, k: int, wanted: Fraction, verdict: Verdict | None) -> Loser:
     name = model.blocks[k].order.name
-    kept = _kept(model, settled, k)
-    if _reaches(kept, wanted, frozenset()):
+    kept = kept_of(model, settled, k)
+    if reaches(kept, wanted):
         return Loser(order=name, alone=verdict, reason="price")
-    limited = list(kept.stock)
     suspects, others = _in_the_way(model, settled, kept, wanted)
-    single = [lot for lot in suspects if _reaches(kept, wanted, frozenset([lot]))]
+    single = [lot for lot in suspects if reaches(kept, wanted, frozenset([lot]))]
     together: list[int] = []
-    if not single and _reaches(kept, wanted, frozenset(limited)):
-        together = _fewest(kept, wanted, limited)
+    if not single:
+        together = _fewest(kept, wanted, overdrawn(kept, wanted))
     instead = _instead(model, settled, k, wanted, others)
     return Loser(
         order=name,
@@ -84,7 +71,7 @@ def _loser(model: PlanModel, settled: Settled, k: int, wanted: Fraction, verdict
     )
 
 
-def _in_the_way(model: PlanModel, settled: Settled, kept: _Kept, wanted: Fraction) -> tuple[list[int], list[int]]:
+def _in_the_way(model: PlanModel, settled: Settled, kept: Kept, wanted: Fraction) -> tuple[list[int], list[int]]:
     """The lots and the other orders of which one alone may keep the open order from ``wanted``.
 
     With whole numbers waived, a row without a multiplier keeps nothing: its multipliers prove the greatest
@@ -105,7 +92,7 @@ def _in_the_way(model: PlanModel, settled: Settled, kept: _Kept, wanted: Fractio
     )
 
 
-def _scarce(model: PlanModel, settled: Settled, kept: _Kept) -> tuple[list[int], list[int]]:
+def _scarce(model: PlanModel, settled: Settled, kept: Kept) -> tuple[list[int], list[int]]:
     used = _used(model, settled)
     lots = [lot for lot in kept.stock if used.get(lot) == model.stock[lot]]
     takes = {
@@ -126,60 +113,12 @@ def _used(model: PlanModel, settled: Settled) -> dict[int, Fraction]:
     return used
 
 
-def _kept(model: PlanModel, settled: Settled, free: int, loose: int | None = None) -> _Kept:
-    """The plan with block ``free`` open and block ``loose`` allowed to take less; all others as they are."""
-    part = part_of(model.blocks[free], caps_by_stock=False)
-    rows = list(part.rows)
-    upper = list(part.upper)
-    columns: dict[int, dict[int, int]] = {free: {i: i for i in range(part.n)}}
-    totals: dict[int, int] = {}
-    for j, own in enumerate(settled.amounts):
-        if j == free or not own:
-            continue
-        place = {i: len(upper) + position for position, i in enumerate(sorted(own))}
-        columns[j] = place
-        upper += [inf] * len(place)
-        rows += rows_over(model.blocks[j], place)
-        accepted = float(sum(own.values(), ZERO)) / float(model.blocks[j].most)
-        total = dict.fromkeys(place.values(), 1.0)
-        totals[j] = len(rows)
-        rows.append(SparseRow(total, 0.0 if j == loose else accepted * (1 - NOISE), accepted))
-    return _Kept(part, columns, tuple(rows), totals, _stock(model, columns), tuple(upper))
-
-
-def _stock(model: PlanModel, columns: Mapping[int, Mapping[int, int]]) -> dict[int, SparseRow]:
-    """The stock row of every lot that some column draws on, as a share of its stock."""
-    terms: dict[int, dict[int, float]] = {}
-    for j, place in columns.items():
-        block = model.blocks[j]
-        for i, column in place.items():
-            stock = model.stock.get(block.model.lots[i])
-            if stock is not None and stock > 0:
-                terms.setdefault(block.model.lots[i], {})[column] = float(block.most / stock)
-    return {lot: SparseRow(own, -inf, 1.0 + NOISE) for lot, own in sorted(terms.items())}
-
-
-def _reaches(kept: _Kept, wanted: Fraction, freed: frozenset[int]) -> bool:
-    """Whether the open order can have ``wanted`` with the stock of ``freed`` lots unlimited."""
-    rows = [*kept.rows, *(row for lot, row in kept.stock.items() if lot not in freed)]
-    target = _least_total(kept, wanted)
-    program = Mixed(cost=[0.0] * len(kept.upper), upper=kept.upper, rows=[*rows, target], whole=kept.part.whole)
-    # Rules waived first: what is out of reach then needs no search.
-    if linear(program).x is None:
-        return False
-    return not kept.part.whole or search(program, nodes=NODES, seconds=SECONDS).x is not None
-
-
-def _least_total(kept: _Kept, wanted: Fraction) -> SparseRow:
-    return SparseRow(dict.fromkeys(range(kept.part.n), 1.0), float(wanted) / kept.part.scale * (1 - REACHED), inf)
-
-
-def _fewest(kept: _Kept, wanted: Fraction, lots: Iterable[int]) -> list[int]:
+def _fewest(kept: Kept, wanted: Fraction, lots: Sequence[int]) -> list[int]:
     """Of lots that do together, a choice of which none can be spared: those last in the file go first."""
     needed = list(lots)
     for lot in reversed(list(needed)):
         rest = [other for other in needed if other != lot]
-        if rest and _reaches(kept, wanted, frozenset(rest)):
+        if rest and reaches(kept, wanted, frozenset(rest)):
             needed = rest
     return needed
 
@@ -191,24 +130,15 @@ def _instead(
     found = []
     for j in sorted(others):
         accepted = sum(settled.amounts[j].values(), ZERO)
-        kept = _kept(model, settled, k, loose=j)
+        kept = kept_of(model, settled, k, loose=j)
         total = kept.columns[j].values()
-        cost = [0.0] * len(kept.upper)
-        for column in total:
-            cost[column] = -1.0
-        rows = [*kept.rows, *kept.stock.values(), _least_total(kept, wanted)]
-        upper = list(kept.upper)
         if model.blocks[j].low > 0:
-            for column in total:
-                upper[column] = 0.0
-        program = Mixed(cost=cost, upper=upper, rows=rows, whole=kept.part.whole)
-        waived = linear(program)
-        if waived.x is None:
+            if reaches(kept, wanted, closed=total):
+                found.append((float(accepted), j))
             continue
-        best = search(program, nodes=NODES, seconds=SECONDS) if kept.part.whole else waived
-        if best.x is not None:
-            cut = float(accepted) + best.value * float(model.blocks[j].most)
-            found.append((max(0.0, cut) if model.blocks[j].low <= 0 else float(accepted), j))
+        most = most_beside(kept, wanted, total)
+        if most is not None:
+            found.append((max(0.0, float(accepted) - most * float(model.blocks[j].most)), j))
     return [(j, cut) for cut, j in sorted(found)[:MOST_INSTEAD]]
 
 
@@ -241,7 +171,7 @@ def _classes(model: PlanModel, settled: Settled, lot: int | None) -> float:
         rows += rows_over(block, columns[k])
         total = dict.fromkeys(columns[k].values(), 1.0)
         rows.append(SparseRow(total, float(block.low / block.most), float((block.high or block.most) / block.most)))
-    stock = _stock(model, columns)
+    stock = stock_of(model, columns)
     if lot is not None:
         stock[lot] = SparseRow(stock[lot].terms, -inf, 1.0 + float(1 / model.stock[lot]))
     rows += stock.values()

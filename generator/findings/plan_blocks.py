@@ -61,7 +61,7 @@ class Pool:
     def __post_init__(self) -> None:
         """Make the parts, the problems and the first answers."""
         self.parts = tuple(part_of(block) for block in self.model.blocks)
-        self.problems = tuple(map(_problem, self.model.blocks, self.parts))
+        self.problems = tuple(map(choosing_of, self.model.blocks, self.parts))
         self.answers = [[answer_of(np.zeros(part.n))] for part in self.parts]
 
     def know(self, amounts: Amounts) -> None:
@@ -141,7 +141,7 @@ def desk_of(pool: Pool, stage: Stage, held: Sequence[tuple[Stage, float]], close
     )
 
 
-def _problem(block: Block, part: Part) -> Choosing:
+def choosing_of(block: Block, part: Part) -> Choosing:
     """An order's limits and rules over shares; cost is set when it is asked.
 
     In units of the order's most: where it must be that much, its caps by stock hold for shares too; else

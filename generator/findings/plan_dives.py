@@ -97,7 +97,7 @@ def plan_stage(
     programs = first.nodes
     # Earlier classes keep their levels at least with the sets that they had.
     kept = {k: before.lots[k] for k in desk.blocks if before.lots[k]}
-    starts = [_dive(desk, kept, first.mixture)]
+    starts = [_dive(desk, kept, first.mixture)] if held or not _is_whole(desk) else []
     starts.append(_dive(desk, {}, first.mixture) if held else _one_by_one(desk, first.mixture))
     best = min(starts, key=lambda start: start.value)
     programs += sum(start.nodes for start in starts)
@@ -122,6 +122,11 @@ def plan_stage(
     accepted = [block.low <= 0 or bool(sets.get(k)) for k, block in enumerate(pool.model.blocks)]
     chosen = [sets.get(k, frozenset()) for k in range(len(accepted))]
     return Planned(Choice(tuple(accepted), tuple(chosen)), first.bound * size, searched + programs // PER_NODE)
+
+
+def _is_whole(desk: Desk) -> bool:
+    """Whether most orders are accepted whole or not at all: a dive then ends with many left out that would fit."""
+    return 2 * sum(desk.pool.model.blocks[k].low > 0 for k in desk.blocks) > len(desk.blocks)
 
 
 def _set_free(desk: Desk, sets: Sets, turn: int) -> set[int]:

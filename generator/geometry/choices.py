@@ -23,8 +23,9 @@ Floats = NDArray[np.float64]
 
 #: A share below this is taken for none.
 NOTHING = 1e-9
-#: Open branches of one problem that are solved together.
+#: Open branches of one problem that are solved together: so many, and more where there are few problems.
 ABREAST = 4
+TOGETHER = 48
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -75,11 +76,11 @@ class _Work:
     lost: float = inf
     count: int = 0
 
-    def next(self) -> list[_Branch]:
+    def next(self, abreast: int) -> list[_Branch]:
         """The most promising branches; those that can't gain ``slack`` are closed."""
         if self.heap and self.heap[0].bound >= self.value - self.slack:
             self.heap.clear()
-        return [heapq.heappop(self.heap) for _ in range(min(ABREAST, len(self.heap)))]
+        return [heapq.heappop(self.heap) for _ in range(min(abreast, len(self.heap)))]
 
     def chosen(self) -> Chosen:
         """What was found; a branch closed without being searched out counts at its bound."""
@@ -105,9 +106,11 @@ def choose_many(
         _Work(problem, value, slack, [_Branch(-inf, 0, np.zeros(problem.cap.size), problem.cap.copy(), frozenset())])
         for problem, value in zip(problems, known, strict=True)
     ]
-    spent = 0
+    spent, open_works = 0, len(works)
     while spent < nodes:
-        batch = [(work, branch) for work in works for branch in work.next()]
+        abreast = max(ABREAST, TOGETHER // max(1, open_works))
+        batch = [(work, branch) for work in works for branch in work.next(abreast)]
+        open_works = len({id(work) for work, _ in batch})
         if not batch:
             break
         spent += len(batch)
