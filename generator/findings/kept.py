@@ -1,7 +1,7 @@
 """The plan kept as it is but for one order, which asks for its amount: can it have it?
 
-The other orders get what they got, from the lots that they use, in whatever recipes.  A recipe in
-what they leave as they are is looked for first; else a search decides.  All of it is floating point, to about seven digits.
+The other orders get what they got, from the lots that they use, in whatever recipes.  A recipe in what they leave as
+they are is looked for first; else a search decides.  All of it is floating point, to about seven digits.
 """
 
 from __future__ import annotations
