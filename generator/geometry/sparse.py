@@ -208,6 +208,9 @@ def _proposed(
 
 def _caps(matrix: Any, high: Floats) -> _Caps:
     """What rows that only add up let each column come to."""
+    if not len(matrix.data):
+        width = matrix.shape[1]
+        return _Caps(np.full(width, inf), np.ones(width), np.zeros(width, dtype=np.int64), np.ones(width))
     lines = np.repeat(np.arange(matrix.shape[0]), np.diff(matrix.indptr))
     adds = np.isfinite(high)
     adds[lines[matrix.data < 0]] = False

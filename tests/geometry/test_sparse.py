@@ -169,6 +169,17 @@ def test_a_refused_proposal_is_no_answer() -> None:
     assert (found.x, found.is_only) == ({0: Fraction(5)}, True)
 
 
+def test_programs_without_entries() -> None:
+    """Without rows, or with empty ones, the point 0 is found where it is a best one, else nothing is found."""
+    without = Sparse(width=2, rows=(), low=(), high=())
+    found = best_in_turn(without, [{0: Fraction(1), 1: Fraction(2)}])
+    assert found is not None
+    assert (dict(found.x), found.is_only) == ({}, True)
+    assert best_in_turn(without, [{0: Fraction(-1)}]) is None
+    assert best_in_turn(Sparse(width=1, rows=({},), low=(1,), high=(None,)), [{0: Fraction(1)}]) is None
+    assert best_in_turn(Sparse(width=0, rows=(), low=(), high=()), [{}]) is None
+
+
 def test_the_checker_sees_through_wrong_claims() -> None:
     """A point that is not feasible, or that its multipliers do not prove best, is refused."""
     program = Sparse(width=2, rows=({0: 1, 1: 1}, {0: 1}), low=(None, None), high=(6, 4))
