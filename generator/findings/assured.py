@@ -2,22 +2,24 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import replace
+from collections.abc import Callable, Mapping, Sequence
+from dataclasses import dataclass, replace
 from fractions import Fraction
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Generic, TypeVar
 
 from generator.findings.ask import Asking, ask_nothing
 from generator.findings.conformity import UncertainRow, is_mirror
-from generator.findings.house import Offer, ask_best_within
+from generator.findings.house import Branch, Found, Offer, ask_best_within, split
 from generator.findings.measures import Measure
 from generator.findings.model import OrderModel
+from generator.findings.narrowing import Guide, ask_open_boxes
 from generator.findings.programs import ONE, ZERO, capped_upper, share_program, share_rows
 from generator.findings.recipes import Best, named_shares, recipe_of
 from generator.findings.records import Recipe
 from generator.findings.uncertainty import RowError
 from generator.findings.values import Table
 from generator.geometry.chance import Chance
+from generator.geometry.choice import Box
 from generator.geometry.program import Program, Vector
 from generator.numbers import significant
 
@@ -26,6 +28,10 @@ if TYPE_CHECKING:
 
 #: Where a lot's cost is unknown it counts as so many times the dearest known one: used last.
 UNKNOWN_COST = 100
+#: Sets of lots tried before all branches are gone through one by one.
+MOST_TRIED = 60
+
+T = TypeVar("T")
 
 
 def ask_assured(
@@ -44,12 +50,15 @@ def ask_assured(
     if not rows:
         return None
     chances = _chances(model, rows, float(confidence))
-    held = yield from ask_best_within(
-        model, lambda branch: ask_nothing(_held(branch, rows, chances, float(confidence), cheapest))
-    )
+
+    def hold(branch: OrderModel) -> Tried[Vector]:
+        return _held(branch, rows, chances, float(confidence), cheapest)
+
+    held = yield from _ask_tried_within(model, _sided_program(model, rows, chances), hold)
     if held is not None:
         return recipe_of(model, table, measures, named_shares(model, held.answer))
-    found = yield from ask_best_within(model, lambda branch: ask_nothing(_surest(branch, rows, chances)))
+    at_all = replace(_sided_program(model, rows, chances), cost=(ZERO,) * len(model.lots))
+    found = yield from _ask_tried_within(model, at_all, lambda branch: _surest(branch, rows, chances))
     if found is None:
         return None
     best = found.answer
@@ -60,24 +69,89 @@ def ask_assured(
     return recipe_of(model, table, measures, named_shares(model, best.x), remark=remark)
 
 
+@dataclass(frozen=True, slots=True)
+class Tried(Generic[T]):
+    """What one branch offers, and rows ≤ 0 that no better answer on any branch breaks."""
+
+    offer: Offer[T] | None
+    tangents: tuple[Vector, ...]
+
+
+def _ask_tried_within(
+    model: OrderModel, program: Program, attempt: Callable[[OrderModel], Tried[T]]
+) -> Asking[Found[T] | None]:
+    """The best that an attempt finds within the house rules; None if there is none.
+
+    Outer approximation (Duran and Grossmann 1986): the lots that are best by the tangents known so far are tried,
+    which gives further tangents, until the best ones by them have been tried already.  ``program``: what the
+    chances ask on their means, with the cost; without any cost, whatever meets the tangents is tried.
+    """
+    first = attempt(model)
+    if first.offer is None:
+        return None
+    root = Branch(model)
+    if not split(root, model.rules, first.offer.shares):
+        return Found(first.offer.answer, root)
+    aims = (program.cost,) if any(program.cost) else ()
+    tangents = dict.fromkeys(first.tangents)
+    tried: dict[Box, bool] = {}
+    best: tuple[Offer[T], Branch] | None = None
+    for _ in range(MOST_TRIED):
+        boxes = yield from ask_open_boxes(Guide(_with_rows(program, tuple(tangents)), aims), model.rules, None)
+        if boxes is None:
+            break
+        untried = [box for box in boxes if box not in tried]
+        if not untried:
+            # All that may be best by the tangents has been tried; without an aim that tells of nothing else.
+            if not boxes or (aims and all(tried[box] for box in boxes)):
+                return None if best is None else Found(best[0].answer, best[1])
+            break
+        for box in untried:
+            branch = root.within(box, model.rules)
+            outcome = attempt(branch.model)
+            tangents |= dict.fromkeys(outcome.tangents)
+            offer = outcome.offer
+            tried[box] = offer is not None and not split(branch, model.rules, offer.shares)
+            if offer is not None and tried[box] and (best is None or offer.key < best[0].key):
+                best = offer, branch
+    return (yield from ask_best_within(model, lambda branch: ask_nothing(attempt(branch).offer)))
+
+
+def _with_rows(program: Program, rows: Sequence[Vector]) -> Program:
+    """The program with further rows ≤ 0."""
+    return replace(
+        program,
+        rows=(*program.rows, *rows),
+        row_low=(*program.row_low, *((None,) * len(rows))),
+        row_high=(*program.row_high, *((ZERO,) * len(rows))),
+    )
+
+
+def _sided_program(model: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance]) -> Program:
+    """Least cost over what all chances ask on their means."""
+    return _with_rows(_certain_program(model, rows), [side for chance in chances for side in chance.sides])
+
+
 def _held(
     branch: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance], confidence: float, cheapest: Best
-) -> Offer[Vector] | None:
+) -> Tried[Vector]:
     from generator.geometry.cone import assured as least_cost
 
     is_known = branch is cheapest.branch and all(cost is not None for cost in branch.cost)
     plain = cheapest.staged.x if is_known else None
     held = least_cost(_certain_program(branch, rows), chances, confidence, plain=plain)
     if held.x is None or held.value is None:
-        return None
-    return Offer(held.x, (held.value,), held.x)
+        return Tried(None, held.tangents)
+    return Tried(Offer(held.x, (held.value,), held.x), held.tangents)
 
 
-def _surest(branch: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance]) -> Offer[Surest] | None:
+def _surest(branch: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance]) -> Tried[Surest]:
     from generator.geometry.cone import surest
 
     best = surest(_certain_program(branch, rows), chances)
-    return None if best is None else Offer(best.x, (Fraction(-best.probability),), best)
+    if best is None:
+        return Tried(None, ())
+    return Tried(Offer(best.x, (Fraction(-best.probability),), best), best.tangents)
 
 
 def _certain_program(model: OrderModel, rows: Sequence[UncertainRow]) -> Program:

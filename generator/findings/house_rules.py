@@ -28,6 +28,10 @@ class Apart:
         """The rule as pages name it."""
         return f"keep_apart: {self.first} from {self.second}"
 
+    def sides(self) -> tuple[tuple[frozenset[int], str], tuple[frozenset[int], str]]:
+        """The lots of each pattern, and the pattern."""
+        return (self.first_lots, self.first), (self.second_lots, self.second)
+
 
 @dataclass(frozen=True, slots=True)
 class Rules:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from fractions import Fraction
+from typing import TypeVar
 
 from generator.findings.ask import Asking, answered, ask_all_best, ask_nothing, both, together
 from generator.findings.assured import ask_assured
@@ -15,7 +16,6 @@ from generator.findings.model import OrderModel, model_of, without_lot
 from generator.findings.programs import ONE, ZERO, amount_rows, share_bound_rows
 from generator.findings.ranges import ask_limit_findings
 from generator.findings.recipes import (
-    Best,
     LeastCost,
     ask_cheapest,
     ask_closest,
@@ -39,6 +39,8 @@ from generator.problems import Problem
 
 MET = ("makeable", "edge")
 LOST = ("unreachable", "barred")
+
+T = TypeVar("T")
 
 
 @dataclass(frozen=True, slots=True)
@@ -67,14 +69,26 @@ def ask_order(desk: Desk, order: Order) -> Asking[Reported]:
     problem = yield from ask_vanishing(model)
     if problem is not None:
         return Reported(_without_verdict(order, problem), (problem,))
+    undecided: list[str] = []
     try:
-        return Reported((yield from _ask_answers(desk, model)))
-    except UndecidedError as undecided:
-        problem = _undecided(order, undecided)
+        finding = yield from _ask_answers(desk, model, undecided)
+    except UndecidedError as error:
+        problem = _undecided(order, error)
         return Reported(_without_verdict(order, problem), (problem,))
+    return Reported(finding, tuple(_left_out(order, part) for part in dict.fromkeys(undecided)))
 
 
-def _ask_answers(desk: Desk, model: OrderModel) -> Asking[OrderFinding]:
+def _ask_unless_undecided(part: str, undecided: list[str], asking: Asking[T]) -> Asking[T | None]:
+    """A part of the answer that the others can do without: None, and noted, where the house rules leave too many
+    branches to decide it."""
+    try:
+        return (yield from asking)
+    except UndecidedError:
+        undecided.append(part)
+        return None
+
+
+def _ask_answers(desk: Desk, model: OrderModel, undecided: list[str]) -> Asking[OrderFinding]:
     judgement, limits = yield from both(ask_judgement(model), ask_limit_findings(model))
     greatest = judgement.greatest
     finding = replace(
@@ -88,12 +102,13 @@ def _ask_answers(desk: Desk, model: OrderModel) -> Asking[OrderFinding]:
     )
     scales = scales_of(model, {component.name: component for component in desk.campaign.components})
     if judgement.verdict in MET:
-        finding = yield from _ask_met(desk, model, finding, scales)
+        finding = yield from _ask_met(desk, model, finding, scales, undecided)
     else:
-        room = yield from ask_room(model, scales, in_amount=False)
+        asking = ask_room(model, scales, in_amount=False)
+        room = yield from _ask_unless_undecided("the room", undecided, asking)
         finding = _with_room(finding, scales, room)
     if judgement.verdict in LOST:
-        finding = yield from _ask_ways_out(desk, model, finding, scales)
+        finding = yield from _ask_ways_out(desk, model, finding, scales, undecided)
     if judgement.verdict == "barred":
         finding = yield from _ask_barred(desk, model, finding)
     finding = replace(finding, proof=_proof(judgement, finding.recipes.get("cheapest")))
@@ -105,23 +120,41 @@ def _with_room(finding: OrderFinding, scales: Scales, room: Room | None) -> Orde
     return replace(finding, room=None if room is None else float(room.t), room_unit=scales.unit if room else None)
 
 
-def _ask_met(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales) -> Asking[OrderFinding]:
+def _ask_met(
+    desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales, undecided: list[str]
+) -> Asking[OrderFinding]:
     """The recipes of an order that is met, what room costs, and what changes are worth."""
+
+    def ask_part(part: str, asking: Asking[T]) -> Asking[T | None]:
+        return _ask_unless_undecided(part, undecided, asking)
+
     (cheapest, best), (room, closest) = yield from both(
         ask_cheapest(model, desk.table, desk.measures),
-        both(ask_room(model, scales, in_amount=True), ask_closest(model, desk.table, desk.measures)),
+        both(
+            ask_part("the room", ask_room(model, scales, in_amount=True)),
+            ask_part("the closest recipe", ask_closest(model, desk.table, desk.measures)),
+        ),
     )
     (roomiest, fewest), without = yield from both(
         both(
-            ask_nothing(None) if room is None else ask_roomiest(model, desk.table, desk.measures, scales, room),
+            ask_nothing(None)
+            if room is None
+            else ask_part("the roomiest recipe", ask_roomiest(model, desk.table, desk.measures, scales, room)),
             ask_fewest(model, desk.table, desk.measures, cheapest),
         ),
         _ask_without_each(model, tuple(cheapest.exact)),
     )
-    recipes = {"cheapest": cheapest, "roomiest": roomiest, "closest": closest, "fewest": fewest}
+    recipes: dict[str, Recipe | None] = {
+        "cheapest": cheapest,
+        "roomiest": roomiest,
+        "closest": closest,
+        "fewest": fewest,
+    }
     uncertain = uncertain_rows(model, desk.table, desk.uncertainty)
     confidence = desk.campaign.settings.confidence
-    recipes["assured"] = yield from ask_assured(model, desk.table, desk.measures, uncertain, confidence, best)
+    recipes["assured"] = yield from ask_part(
+        "the assured recipe", ask_assured(model, desk.table, desk.measures, uncertain, confidence, best)
+    )
     there = {name: recipe for name, recipe in recipes.items() if recipe is not None}
     conformities = conformities_of(model, uncertain, [recipe.exact for recipe in there.values()])
     finding = replace(
@@ -137,33 +170,22 @@ def _ask_met(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scale
     if not has_all_costs(model):
         return finding
     costs_without = {name: cost for name, (_, cost) in without.items()}
-    return (yield from _ask_worth(model, finding, best, scales, room, costs_without))
-
-
-def _ask_worth(
-    model: OrderModel,
-    finding: OrderFinding,
-    best: Best,
-    scales: Scales,
-    room: Room | None,
-    costs_without: Mapping[str, Fraction | None],
-) -> Asking[OrderFinding]:
-    """Prices, what limits are worth and the curve; with house rules these are the winning branch's."""
     recipe = finding.recipes["cheapest"]
     (enters, stays), (worth, curve) = yield from both(
         ask_lot_prices(best.branch, recipe, costs_without, best.staged.stages[0]),
         both(
             ask_worths(best.branch, recipe, scales.by_row, best.staged.stages[0]),
-            _ask_curve(model, scales, recipe, room),
+            ask_part("the curve", _ask_curve(model, scales, recipe, room)),
         ),
     )
+    # With house rules prices and worths are the winning branch's.
     limits = tuple(
         replace(limit, worth=float(worth[limit.on].saving), worth_holds=worth[limit.on].holds)
         if limit.on in worth
         else limit
         for limit in finding.limits
     )
-    return replace(finding, enters_at=enters, stays_up_to=stays, limits=limits, curve=curve)
+    return replace(finding, enters_at=enters, stays_up_to=stays, limits=limits, curve=curve or ())
 
 
 def _ask_barred(desk: Desk, model: OrderModel, finding: OrderFinding) -> Asking[OrderFinding]:
@@ -192,6 +214,17 @@ def _undecided(order: Order, undecided: UndecidedError) -> Problem:
         message=f"the house rules leave too many ways to decide this order ({undecided})",
         remedy="raise max_lots, lower least_if_used, or name the order's lots",
         severity="drops",
+    )
+
+
+def _left_out(order: Order, part: str) -> Problem:
+    return Problem(
+        file=order.place.file,
+        row=order.place.row,
+        found=order.name,
+        message=f"the house rules leave too many ways to decide {part} of this order, which is left out",
+        remedy="raise max_lots, or name the order's lots",
+        severity="note",
     )
 
 
@@ -232,9 +265,13 @@ def _ask_without(model: OrderModel, name: str) -> Asking[Without]:
     return ("edge" if (yield from ask_face(rest)) else "makeable"), least.cost
 
 
-def _ask_ways_out(desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales) -> Asking[OrderFinding]:
+def _ask_ways_out(
+    desk: Desk, model: OrderModel, finding: OrderFinding, scales: Scales, undecided: list[str]
+) -> Asking[OrderFinding]:
     nearest, wanted = yield from both(
-        ask_nearest_blend(model, desk.table, desk.measures, scales),
+        _ask_unless_undecided(
+            "the nearest blend", undecided, ask_nearest_blend(model, desk.table, desk.measures, scales)
+        ),
         ask_wanted_lots(desk.campaign, model, desk.table, desk.measures),
     )
     return replace(finding, nearest=nearest, wanted_lot=wanted)

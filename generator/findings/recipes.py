@@ -17,6 +17,7 @@ from generator.findings.fewest import fewest_lots
 from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import Measure, blend_value
 from generator.findings.model import OrderModel
+from generator.findings.narrowing import Guide
 from generator.findings.programs import (
     ONE,
     ZERO,
@@ -68,7 +69,7 @@ def ask_cheapest(model: OrderModel, table: Table, measures: Mapping[str, Measure
 
     ValueError if no shares meet the limits and the house rules in that amount.
     """
-    best = yield from ask_first_shares(model)
+    best = yield from ask_first_shares(model, on_widest=True)
     if all(cost is None for cost in model.cost):
         return recipe_of(model, table, measures, named_shares(model, best.staged.x)), best
     has_bound = best.is_whole and all(cost is not None for cost in model.cost)
@@ -76,14 +77,16 @@ def ask_cheapest(model: OrderModel, table: Table, measures: Mapping[str, Measure
     return recipe_of(model, table, measures, named_shares(model, best.staged.x), bound), best
 
 
-def ask_first_shares(model: OrderModel, *, to_publish: bool = True) -> Asking[Best]:
+def ask_first_shares(model: OrderModel, *, to_publish: bool = True, on_widest: bool = False) -> Asking[Best]:
     """The shares of the recipe that stands first: the cheapest, the closest where no cost at all is known.
 
-    ValueError if no shares meet the limits and the house rules in the amount; ``to_publish`` as in ``ask``.
+    ValueError if no shares meet the limits and the house rules in the amount; ``to_publish`` as in ``ask``,
+    ``on_widest`` as in ``house``.
     """
     if all(cost is None for cost in model.cost):
         return (yield from _ask_closest_shares(model, to_publish=to_publish))
-    return (yield from ask_cheapest_shares(model, to_publish=to_publish))
+    costs = _costs_in_turn(model)
+    return (yield from ask_best_shares(model, costs, to_publish=to_publish, on_widest=on_widest))
 
 
 def ask_cheapest_shares(model: OrderModel, rows: Rows | None = None, *, to_publish: bool = True) -> Asking[Best]:
@@ -115,7 +118,8 @@ def ask_least_cost(model: OrderModel) -> Asking[LeastCost | None]:
         best = yield from ask_best(program)
         return Offer(best.x, (best.value,), best.value) if isinstance(best, Point) else None
 
-    found = yield from ask_best_within(model, ask)
+    program = share_program(model, share_rows(model), costs, upper=capped_upper(model, model.amount))
+    found = yield from ask_best_within(model, ask, guide=Guide(program, (costs,)))
     return None if found is None else LeastCost(found.answer)
 
 
@@ -224,12 +228,13 @@ def ask_best_shares(
     to_publish: bool = True,
     extra: Sequence[tuple[Vector, Bound, Bound]] = (),
     width: int | None = None,
+    on_widest: bool = False,
 ) -> Asking[Best]:
     """Shares in the order's amount, within the house rules, best by each objective in turn.
 
     Ties by file order.  ``width`` columns in all: those beyond the lots are ≥ 0 and stand in ``extra``
-    rows only; ``rows`` stand for the model's own.  ValueError if no shares meet the limits and rules in
-    that amount.
+    rows only; ``rows`` stand for the model's own; ``on_widest`` as in ``house``.  ValueError if no shares
+    meet the limits and rules in that amount.
     """
     n = len(model.lots)
     more = (width or n) - n
@@ -246,10 +251,21 @@ def ask_best_shares(
         key = (*(_dot(objective, staged.x) for objective in (*objectives, positions)), *reversed(staged.x[:n]))
         return Offer(staged.x[:n], key, staged)
 
-    found = yield from ask_best_within(model, ask)
+    aims = (*(tuple(objective) for objective in objectives), positions)
+    upper = (*capped_upper(model, model.amount), *_reach(extra, n, n + more))
+    guide = Guide(share_program(model, rows, (ZERO,) * (n + more), upper=upper, extra=extra), aims)
+    found = yield from ask_best_within(model, ask, guide=guide, on_widest=on_widest)
     if found is None:
         raise ValueError(f"no shares meet the limits of order {model.order.name} in its amount")
     return Best(found.answer, found.branch.model, not found.branch.path)
+
+
+def _reach(extra: Sequence[tuple[Vector, Bound, Bound]], n: int, width: int) -> list[Fraction]:
+    """A bound on each column beyond the n lots that no shares need more of: the most that they make of its rows."""
+    return [
+        max((max(abs(a) for a in row[:n]) / abs(row[column]) for row, _, _ in extra if row[column]), default=ZERO)
+        for column in range(n, width)
+    ]
 
 
 @lru_cache(maxsize=16)

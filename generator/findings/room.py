@@ -16,10 +16,11 @@ from generator.findings.ask import Asking, answered, ask_best
 from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import own_value
 from generator.findings.model import OrderModel, Row
+from generator.findings.narrowing import Guide
 from generator.findings.programs import ONE, ZERO, Rows, capped_upper, level_rows, share_program, share_rows
 from generator.findings.rules import OutsideDomain
 from generator.geometry.asked import Point
-from generator.geometry.program import Bound, Vector
+from generator.geometry.program import Bound, Program, Vector
 from generator.intake.records import Component
 
 #: Dinkelbach's steps stop when t grows by less than this: far below what any page shows.
@@ -100,41 +101,30 @@ def ask_room(model: OrderModel, scales: Scales, *, in_amount: bool) -> Asking[Ro
     if all(row.side == "exact" for row in model.rows):
         return None
 
-    def ask(branch: OrderModel) -> Asking[Offer[Room] | None]:
-        room = yield from _ask_room_on(branch, scales, in_amount=in_amount)
-        return None if room is None else Offer(room.shares, (-room.t,), room)
-
-    found = yield from ask_best_within(model, ask)
-    if found is None:
+    if is_linear(model):
+        room = yield from _ask_step(model, model, scales, in_amount=in_amount)
+    else:
+        room = yield from _ask_dinkelbach(model, scales, in_amount=in_amount)
+    if room is None:
         return None
     # Another branch of the rules may have as much room.
-    return replace(found.answer, is_only=False) if model.rules.names() else found.answer
+    return replace(room, is_only=False) if model.rules.names() else room
 
 
 room_of = answered(ask_room)
 
 
-def _ask_room_on(model: OrderModel, scales: Scales, *, in_amount: bool) -> Asking[Room | None]:
-    """The greatest t on one branch of the house rules."""
-    upper = capped_upper(model, model.amount) if in_amount else model.upper
-    if is_linear(model):
-        return (yield from _ask_step(model, model, scales, upper))
-    exact_only = replace(model, rows=tuple(row for row in model.rows if row.side == "exact"))
-    start = yield from ask_best(share_program(model, share_rows(exact_only), (ZERO,) * len(model.lots), upper=upper))
-    if not isinstance(start, Point):
+def _ask_dinkelbach(model: OrderModel, scales: Scales, *, in_amount: bool) -> Asking[Room | None]:
+    best = yield from _ask_any_room(model, scales, in_amount=in_amount)
+    if best is None:
         return None
-    best = allowed(model, scales, start.x)
-    return None if best is None else (yield from _ask_dinkelbach(model, scales, upper, Room(best, start.x)))
-
-
-def _ask_dinkelbach(model: OrderModel, scales: Scales, upper: tuple[Bound, ...], best: Room) -> Asking[Room]:
     for _ in range(MOST_STEPS):
         # Floor to a coarse grid: the next program's numbers stay short, and t still stands.
         at = _floored(best.t)
         moved = tightened(model, scales, at)
         if moved is None:
             return best
-        step = yield from _ask_step(model, moved, scales, upper)
+        step = yield from _ask_step(model, moved, scales, in_amount=in_amount)
         reached = None if step is None else allowed(model, scales, step.shares)
         if step is None or reached is None or reached <= best.t:
             return best
@@ -143,6 +133,23 @@ def _ask_dinkelbach(model: OrderModel, scales: Scales, upper: tuple[Bound, ...],
         if gained < STEP:
             break
     return best
+
+
+def _ask_any_room(model: OrderModel, scales: Scales, *, in_amount: bool) -> Asking[Room | None]:
+    """The room of any shares that keep the exact limits and the house rules; None where there are none."""
+    exact_only = replace(model, rows=tuple(row for row in model.rows if row.side == "exact"))
+
+    def program(branch: OrderModel) -> Program:
+        upper = capped_upper(branch, branch.amount) if in_amount else branch.upper
+        return share_program(branch, share_rows(exact_only), (ZERO,) * len(branch.lots), upper=upper)
+
+    def ask(branch: OrderModel) -> Asking[Offer[Vector] | None]:
+        point = yield from ask_best(program(branch))
+        return Offer(point.x, (), point.x) if isinstance(point, Point) else None
+
+    found = yield from ask_best_within(model, ask, guide=Guide(program(model), ()))
+    t = None if found is None else allowed(model, scales, found.answer)
+    return None if found is None or t is None else Room(t, found.answer)
 
 
 def _floored(t: Fraction) -> Fraction:
@@ -169,8 +176,9 @@ def is_linear(model: OrderModel) -> bool:
     )
 
 
-def _ask_step(model: OrderModel, moved: OrderModel, scales: Scales, upper: tuple[Bound, ...]) -> Asking[Room | None]:
-    """The greatest μ with terms·x + μ·weight ≤ 0 over the rows of ``moved``; with equal carriers, t itself.
+def _ask_step(model: OrderModel, moved: OrderModel, scales: Scales, *, in_amount: bool) -> Asking[Room | None]:
+    """The greatest μ with terms·x + μ·weight ≤ 0 over the rows of ``moved``, within the house rules; with equal
+    carriers that is t itself.
 
     μ is the last column, free.
     """
@@ -178,19 +186,32 @@ def _ask_step(model: OrderModel, moved: OrderModel, scales: Scales, upper: tuple
         (row.on, row.side): weight_of_scale(model, row, scale)
         for row, scale in zip(model.rows, scales.by_row, strict=True)
     }
-    n = len(model.lots)
     extra: list[tuple[Vector, Bound, Bound]] = []
     for row in moved.rows:
-        weight = weight_of[row.on, row.side]
         if row.side == "exact":
             extra.append(((*row.terms, ZERO), ZERO, ZERO))
         else:
-            extra.append(((*row.terms, weight), None, ZERO))
-    bare = replace(model, rows=())
-    cost = (*((ZERO,) * n), -ONE)
-    program = share_program(bare, share_rows(bare), cost, upper=(*upper, None), extra=extra)
-    best = yield from ask_best(replace(program, lower=(*model.lower, None)))
-    return Room(-best.value, best.x[:n], best.is_only) if isinstance(best, Point) else None
+            extra.append(((*row.terms, weight_of[row.on, row.side]), None, ZERO))
+    cost = (*((ZERO,) * len(model.lots)), -ONE)
+
+    def program(branch: OrderModel, low: Bound, top: Bound) -> Program:
+        upper = capped_upper(branch, branch.amount) if in_amount else branch.upper
+        bare = replace(branch, rows=())
+        step = share_program(bare, share_rows(bare), cost, upper=(*upper, top), extra=extra)
+        return replace(step, lower=(*branch.lower, low))
+
+    def ask(branch: OrderModel) -> Asking[Offer[Room] | None]:
+        best = yield from ask_best(program(branch, None, None))
+        if not isinstance(best, Point):
+            return None
+        room = Room(-best.value, best.x[: len(model.lots)], best.is_only)
+        return Offer(room.shares, (best.value,), room)
+
+    # Every blend's μ lies between the least and the greatest that one lot alone has by some row.
+    alone = [-term / row[-1] for row, _, _ in extra if row[-1] for term in row[:-1]]
+    guide = Guide(program(model, min(alone), max(alone)), (cost,)) if alone else None
+    found = yield from ask_best_within(model, ask, guide=guide)
+    return None if found is None else found.answer
 
 
 def weight_of_scale(model: OrderModel, row: Row, scale: Fraction) -> Fraction:

@@ -15,6 +15,7 @@ from generator.findings.ask import Asking, answered, ask_answer, ask_best, ask_p
 from generator.findings.house import Branch as HouseBranch
 from generator.findings.house import Offer, ask_best_within, ask_closed_branches
 from generator.findings.model import OrderModel, Row
+from generator.findings.narrowing import Guide
 from generator.findings.programs import (
     ONE,
     ZERO,
@@ -95,7 +96,11 @@ def ask_allowed(model: OrderModel) -> Asking[bool]:
     """Whether some shares within the limits keep the house rules."""
     if not model.rules.names():
         return (yield from ask_possible(share_program(model, share_rows(model), (ZERO,) * len(model.lots))))
-    return (yield from ask_best_within(model, _ask_any_shares)) is not None
+    return (yield from ask_best_within(model, _ask_any_shares, guide=_any_guide(model))) is not None
+
+
+def _any_guide(model: OrderModel) -> Guide:
+    return Guide(share_program(model, share_rows(model), (ZERO,) * len(model.lots)), ())
 
 
 def _ask_any_shares(branch: OrderModel) -> Asking[Offer[None] | None]:
@@ -105,7 +110,7 @@ def _ask_any_shares(branch: OrderModel) -> Asking[Offer[None] | None]:
 
 def _ask_branch_proof(model: OrderModel) -> Asking[BranchProof]:
     """One blocking proof for each branch of the house rules, which together leave none open."""
-    closed = yield from ask_closed_branches(model, _ask_any_shares)
+    closed = yield from ask_closed_branches(model, _ask_any_shares, _any_guide(model))
     return BranchProof(branches=tuple((yield from together([_ask_closed(branch) for branch in closed]))))
 
 
@@ -169,31 +174,36 @@ def ask_greatest_amount(model: OrderModel) -> Asking[Greatest | None]:
     """
     if all(stock is None for stock in model.stock):
         return None
-    found = yield from ask_best_within(model, _ask_greatest_on)
+    guide = Guide(_greatest_program(model), ((-ONE,) * len(model.lots),), place=1, in_amounts=True)
+    found = yield from ask_best_within(model, _ask_greatest_on, guide=guide)
     if found is None:
         return Greatest(amount=ZERO, shares={}, runs_out=(), cap=None)
     # With house rules the cap of one branch says nothing about the others.
     return found.answer if not found.branch.path else replace(found.answer, cap=None)
 
 
-def _ask_greatest_on(model: OrderModel) -> Asking[Offer[Greatest] | None]:
-    rows = amount_rows(model)
-    bound_rows = share_bound_rows(model)
+def _greatest_program(model: OrderModel) -> Program:
+    """The most of all lots together, over amounts."""
+    entries, bounds = amount_rows(model).entries, share_bound_rows(model)
     n = len(model.lots)
-    program = Program(
-        rows=(*(entry.terms for entry in rows.entries), *(terms for _, terms in bound_rows)),
-        row_low=(*(entry.low for entry in rows.entries), *(None for _ in bound_rows)),
-        row_high=(*(entry.high for entry in rows.entries), *(ZERO for _ in bound_rows)),
+    return Program(
+        rows=(*(entry.terms for entry in entries), *(terms for _, terms in bounds)),
+        row_low=(*(entry.low for entry in entries), *(None for _ in bounds)),
+        row_high=(*(entry.high for entry in entries), *(ZERO for _ in bounds)),
         lower=(ZERO,) * n,
         upper=model.stock,
         cost=(-ONE,) * n,
     )
+
+
+def _ask_greatest_on(model: OrderModel) -> Asking[Offer[Greatest] | None]:
+    program = _greatest_program(model)
     best = yield from ask_best(program)
     if isinstance(best, Unbounded):
         shares = _shares(model, best.ray)
         found = Greatest(amount=None, shares=shares, runs_out=(), cap=None)
         # Without bound comes before any amount.
-        return Offer([shares.get(name, ZERO) for name in model.names], (ZERO, ZERO), found)
+        return Offer([shares.get(name, ZERO) for name in model.names], (ZERO,), found)
     assert best is not None, "nothing at all is always within homogeneous limits"
     amount, x = -best.value, best.x
     if amount == 0:
@@ -202,7 +212,7 @@ def _ask_greatest_on(model: OrderModel) -> Asking[Offer[Greatest] | None]:
     if model.amount is not None and amount < model.amount:
         answer = yield from ask_answer(program)
         assert isinstance(answer, Optimum), "the amount is bounded"
-        cap, x = _cap(model, rows, bound_rows, answer), answer.x
+        cap, x = _cap(model, answer), answer.x
     shares = _shares(model, x)
     runs_out = tuple(
         name
@@ -218,8 +228,9 @@ def _shares(model: OrderModel, amounts: Vector) -> dict[str, Fraction]:
     return {name: x / total for name, x in zip(model.names, amounts, strict=True) if x}
 
 
-def _cap(model: OrderModel, rows: Rows, bound_rows: Sequence[tuple[Row, Vector]], answer: Optimum) -> Cap:
+def _cap(model: OrderModel, answer: Optimum) -> Cap:
     """For every lot Σ y·row + w ≥ 1 with w the weight of its stock, and Σ w·stock = the amount."""
+    rows, bound_rows = amount_rows(model), share_bound_rows(model)
     every = (*model.rows, *(row for row, _ in bound_rows))
     weights = rows.weights(answer.multipliers)
     for k, y in enumerate(answer.multipliers[len(rows.entries) :]):

@@ -51,23 +51,27 @@ class Assured:
 
     ``status`` "solved": ``x`` is exactly feasible and costs ``value``, and nothing costs less than
     ``least`` (proven).  "impossible": proven (``least``, ``x`` None).  "undecided": neither a point nor a
-    proof within the rounds allowed: the chances can at best just hold.
+    proof within the rounds allowed: the chances can at best just hold.  ``tangents``: rows ≤ 0 met on the way, which
+    every x ≥ 0 keeps at which all chances hold.
     """
 
     status: Literal["solved", "impossible", "undecided"]
     x: Vector | None = None
     value: Fraction | None = None
     least: Fraction | None = None
+    tangents: tuple[Vector, ...] = ()
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
 class Surest:
     """The greatest probability that all chances can have at once: ``x`` has ``probability`` for each, and
-    more than ``at_most`` is impossible."""
+    more than ``at_most`` is impossible.  ``tangents``: rows ≤ 0 that every x ≥ 0 keeps at which all have more than
+    ``probability`` by the precision asked for."""
 
     x: Vector
     probability: float
     at_most: float
+    tangents: tuple[Vector, ...] = ()
 
 
 def assured(
@@ -94,9 +98,11 @@ def assured(
     if _all_hold(chances, plain, wanted):
         value = _value(linear, plain)
         return Assured(status="solved", x=plain, value=value, least=value)
-    inner = _Search(linear, chances).inside(wanted, patience=_PATIENCE)
+    search = _Search(linear, chances)
+    inner = search.inside(wanted, patience=_PATIENCE)
     if not inner:
-        return Assured(status="undecided" if inner is None else "impossible")
+        tangents = search.relaxation.further(len(linear.cost))
+        return Assured(status="undecided" if inner is None else "impossible", tangents=tangents)
     return _between(linear, chances, wanted, inner, gap)
 
 
@@ -125,7 +131,12 @@ def surest(program: Program, chances: Sequence[Chance], precision: float = 1e-6)
         else:
             at_most = wanted
             break
-    return Surest(x=best, probability=min(probability(chance, best) for chance in chances), at_most=at_most)
+    return Surest(
+        x=best,
+        probability=min(probability(chance, best) for chance in chances),
+        at_most=at_most,
+        tangents=search.relaxation.further(len(linear.cost)),
+    )
 
 
 def _common(chances: Sequence[Chance], x: Vector) -> float:
@@ -193,6 +204,16 @@ class _Relaxation:
             return None
         self.start = Start(solved.basic, solved.at_upper)
         return np.asarray(solved.x[0], dtype=np.float64)
+
+    def further(self, n: int) -> tuple[Vector, ...]:
+        """The rows that were added and bind, their first n terms."""
+        m, width = self.stack.shape
+        loose = set() if self.start is None else set(self.start.basic[0].tolist())
+        return tuple(
+            tuple(Fraction(float(term)) for term in self.stack.rows[k, :n])
+            for k in range(self.own, m)
+            if width + k not in loose
+        )
 
     def least(self) -> float:
         """A proven lower bound of the value: +inf where there is provably no feasible point."""
@@ -291,7 +312,13 @@ def _between(linear: Program, chances: Sequence[Chance], wanted: float, inner: V
     least = relaxation.least()
     best = _pulled_in(linear, chances, images, wanted, outside, (inner, edge))
     value = _value(linear, best)
-    return Assured(status="solved", x=best, value=value, least=Fraction(least) if math.isfinite(least) else None)
+    return Assured(
+        status="solved",
+        x=best,
+        value=value,
+        least=Fraction(least) if math.isfinite(least) else None,
+        tangents=relaxation.further(len(linear.cost)),
+    )
 
 
 def _pulled_in(
