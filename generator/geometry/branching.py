@@ -208,7 +208,7 @@ class _Layout:
             high[:, m] = (choice.most - (marks == IN).sum(axis=1)) * self.count_scale
         lower, upper = np.tile(self.low, (count, 1)), np.tile(self.high, (count, 1))
         upper[:, :n][marks == OUT] = 0.0
-        lower[:, :n] = np.where(marks == IN, self.least, np.where(marks == OUT, 0.0, lower[:, :n]))
+        lower[:, :n] = np.where(marks == IN, self.least, lower[:, :n])
         if self.slots:
             self._relate(choice, marks, rows, low)
         return Stack(
@@ -280,7 +280,8 @@ def program_of(choice: Choice, box: Box) -> Program:
     upper: list[Bound] = list(program.upper)
     rows: list[Vector] = []
     for j in sorted(box.out):
-        lower[j] = upper[j] = Fraction(0)
+        # a column that must be used can't be out: its bounds then cross
+        upper[j] = Fraction(0)
     for j in sorted(box.inside):
         part = choice.least[j]
         if part and choice.is_relative:

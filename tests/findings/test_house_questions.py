@@ -9,7 +9,7 @@ from itertools import combinations
 
 import pytest
 
-from generator.findings import narrowing
+from generator.findings import house, narrowing
 from generator.findings.records import Findings, OrderFinding
 from tests.findings import oracle
 from tests.findings.making import answers
@@ -22,7 +22,7 @@ HAIR = Fraction(1, 10**9)
 
 @dataclass(frozen=True)
 class Ruled:
-    """Lots on a grid with cost and stock, orders on windows, and rules: percent, number, two kinds apart."""
+    """Lots on a grid with cost and stock, orders on windows, rules; the first lot's share is at least ``forced``."""
 
     values: list[list[Fraction]]
     cost: list[int]
@@ -32,14 +32,17 @@ class Ruled:
     amounts: list[int | None]
     most: int | None
     least: Fraction
+    forced: Fraction
 
     def findings(self) -> Findings:
         """The program's answers."""
         names = [f"C{j}" for j in range(len(self.values[0]))]
-        lines = [",".join(["lot", "cost", "stock", "material", *names])]
+        lines = [",".join(["lot", "cost", "stock", "material", "min share", *names])]
         for i, row in enumerate(self.values):
             stock = "unlimited" if self.stock[i] is None else str(self.stock[i])
-            lines.append(",".join([f"L{i}", str(self.cost[i]), stock, self.kinds[i], *(str(float(v)) for v in row)]))
+            share = f"{float(self.forced * 100):g}" if i == 0 and self.forced else ""
+            cells = [f"L{i}", str(self.cost[i]), stock, self.kinds[i], share, *(str(float(v)) for v in row)]
+            lines.append(",".join(cells))
         orders = [",".join(["order", "amount", *(f"{name} {side}" for name in names for side in ("min", "max"))])]
         for k, windows in enumerate(self.windows):
             cells = [f"O{k}", "" if self.amounts[k] is None else str(self.amounts[k])]
@@ -58,7 +61,7 @@ class Ruled:
             used
             for size in range(1, min(self.most or len(lots), len(lots)) + 1)
             for used in combinations(lots, size)
-            if not {"salt", "acid"} <= {self.kinds[i] for i in used}
+            if not {"salt", "acid"} <= {self.kinds[i] for i in used} and (0 in used or without == 0 or not self.forced)
         ]
 
     def row(self, used: tuple[int, ...], name: str, side: str, bound: Fraction) -> list[Fraction]:
@@ -74,7 +77,8 @@ class Ruled:
             for side, bound in zip(("low", "high"), window, strict=True)
             if bound is not None
         ]
-        least = [([self.least - (j == k) for j in range(len(used))], ZERO) for k in range(len(used))]
+        own = [max(self.least, self.forced) if i == 0 else self.least for i in used]
+        least = [([part - (j == k) for j in range(len(used))], ZERO) for k, part in enumerate(own)]
         return [*rows, *least]
 
     def corners(
@@ -125,6 +129,7 @@ def draw(number: int) -> Ruled:
         amounts=[None if pick(0, 2) == 0 else pick(2, 12) * 5 for _ in windows],
         most=(None, 2, 3, 3)[pick(0, 3)],
         least=Fraction((0, 5, 15, 25)[pick(0, 3)], 100),
+        forced=Fraction((0, 0, 10)[pick(0, 2)], 100),
     )
 
 
@@ -139,6 +144,7 @@ def test_draws_cover_every_verdict() -> None:
 def test_every_question_is_answered_as_by_brute_force(first: int, number: int, monkeypatch: pytest.MonkeyPatch) -> None:
     """Verdict, greatest amount, least cost with and without each lot, room, curve and closest recipe are those of
     brute force, whether branches are followed or all sets gone through."""
+    monkeypatch.setattr(house, "FIRST_BRANCHES", 0)
     monkeypatch.setattr(narrowing, "FIRST", first)
     assert faults(draw(number)) == []
 

@@ -32,7 +32,7 @@ def draw(number: int, *, is_relative: bool = False) -> Choice:
         rows=tuple(rows),
         row_low=tuple(low),
         row_high=tuple(high),
-        lower=(ZERO,) * n,
+        lower=(*((ZERO,) * (n - 1)), Fraction(0 if is_relative else pick(0, 1), 10)),
         upper=tuple(Fraction(pick(1, 4), 1 if is_relative else 4) for _ in range(n)),
         cost=tuple(Fraction(-1 if is_relative else pick(0, 6)) for _ in range(n)),
     )
