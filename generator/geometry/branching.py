@@ -405,6 +405,8 @@ def _try_supports(search: _Search, wave: Sequence[_Node], proven: Certified) -> 
 def _try(search: _Search, used: list[int], like: _Node) -> None:
     marks = closed_box(used, search.choice.n).marks(search.choice.n)
     key = marks.tobytes()
-    if key not in search.tried and used:
+    # a point of the box uses all that is in
+    is_inside = set(np.flatnonzero(like.marks == IN).tolist()) <= set(used)
+    if key not in search.tried and used and is_inside:
         search.tried.add(key)
         search.push(-inf, marks, like, is_trial=True)
