@@ -23,6 +23,8 @@ from generator.geometry.stack import Floats
 DECIMALS = 6
 #: The integration's random lattice starts here, always, so that the same input gives the same bytes.
 LATTICE = 20100
+#: A row that fails less often than this is sure: in the joint normal it would cost time and digits, and change none.
+SURE = 1e-9
 
 
 @dataclass(frozen=True, slots=True)
@@ -171,9 +173,18 @@ def _blocks(correlation: Floats) -> list[list[int]]:
 
 
 def _inside(low: Floats, high: Floats, correlation: Floats) -> float:
-    """P(low ≤ z ≤ high) for standard normals of that correlation."""
+    """P(low ≤ z ≤ high) for standard normals of that correlation.
+
+    Two are integrated to rounding, more by a lattice: rows that are nearly multiples of each other and far from
+    their limits spoil that, so that sure ones are left out first.
+    """
     from scipy.special import ndtr
 
+    unsure = np.flatnonzero(ndtr(low) + ndtr(-high) >= SURE)
+    if unsure.size < low.size:
+        low, high, correlation = low[unsure], high[unsure], correlation[np.ix_(unsure, unsure)]
+    if low.size == 0:
+        return 1.0
     if low.size == 1:
         return float(ndtr(high[0]) - ndtr(low[0]))
     from scipy.stats import multivariate_normal

@@ -10,6 +10,7 @@ import numpy as np
 import pytest
 from scipy.optimize import minimize
 
+from generator.findings.conformity import _inside
 from generator.findings.records import OrderFinding
 from tests.findings.making import answers, only_order
 
@@ -152,6 +153,19 @@ def test_joint_conformity_agrees_with_simulation() -> None:
         blend += rng.standard_normal((n, 3)) * bias
         held = (blend[:, 0] >= 19) & (blend[:, 0] <= 22) & (blend[:, 1] >= 11) & (blend[:, 2] <= 5.6)
         assert recipe.conformity.all == pytest.approx(held.mean(), abs=0.004)
+
+
+def test_sure_rows_take_no_digits_from_the_joint_probability() -> None:
+    """Two sides of one ratio, 3.7 deviations away, hold together with Φ(3.74) + Φ(3.67) − 1, whatever else is sure.
+
+    With four sure rows that nearly repeat each other in it, a lattice gave 0.99988 for 0.99979.
+    """
+    high = np.array([3.74, 3.67, 16.0, 14.07, 13.03, 11.53])
+    signs = np.array([1.0, -1.0, -0.325, 0.325, -0.035, 0.035])
+    spread = np.outer(signs, signs)
+    spread[2:, 2:] = np.kron(np.eye(2), np.array([[1.0, -0.996], [-0.996, 1.0]]))
+    expected = NormalDist().cdf(3.74) + NormalDist().cdf(3.67) - 1
+    assert _inside(np.full(6, -np.inf), high, spread) == pytest.approx(expected, abs=1e-7)
 
 
 def test_assured_holds_its_confidence_and_costs_no_less_than_the_cheapest() -> None:
