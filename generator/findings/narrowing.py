@@ -19,7 +19,7 @@ from generator.geometry.program import Bound, Program, Unbounded, Vector
 ZERO = Fraction(0)
 
 #: Boxes searched before every set of lots is gone through instead, and those after which a question is given up.
-FIRST, MOST = 400, 20_000
+FIRST, MOST = 400, 8_000
 #: So few branches are asked about as they are, though a further aim could tell them apart.
 FEW = 3
 

@@ -29,12 +29,12 @@ from generator.intake.records import Campaign
 
 __all__ = ["MOST_IN_ALL", "PROGRAM", "TOGETHER", "UNTOLD", "Side", "explained", "grouped"]
 
-#: Replays for all changes of one revision: about half a minute at 2.5 ms each (tests/bench/bench_causes.py).
-MOST_IN_ALL = 12_000
+#: Replays for all changes of one revision: some fifteen seconds at 2.5 to 3.5 ms each (tests/bench/bench_causes.py).
+MOST_IN_ALL = 5_000
 #: Of these so many in a hundred are kept for changes whose cause can't be searched for to the end.
 _RESERVE = 20
 
-#: Of the plan's replays so many in a hundred as of all others: some fifteen seconds at worst.
+#: Of the plan's replays so many in a hundred as of all others: some five seconds at worst.
 _FOR_PLANS = 50
 NOT_PROVEN = "The plan was not proven best, so that no edit can be named for what it gives."
 
@@ -44,7 +44,7 @@ _BESIDES: Mapping[Question, int] = {"conformity": 19}
 #: The kinds of changes that have a cause, in the turns in which it is searched for.
 _TURNS: tuple[tuple[str, ...], ...] = (("verdict",), ("cost", "amount", "room", "conformity"), ("recipe",))
 #: House rules are kept by branching: with them solving takes about so many times as long (measured).
-_WITH_RULES = 30
+_WITH_RULES = 5
 #: A plan takes about so many plain replays, and as many more for every node of its search.
 _PLAN_PRICE = 100
 #: What stands for a number that isn't there.

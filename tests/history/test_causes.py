@@ -314,8 +314,13 @@ def test_a_system_from_kept_columns_is_the_same_as_a_new_one(seed: int, mask: in
 
 
 def without_rules(model: OrderModel | None) -> OrderModel | None:
-    """The system but for its measures, whose blend rules are functions and equal nothing but themselves."""
-    return None if model is None else replace(model, measures={})
+    """The system but for its measures, whose blend rules are functions and equal nothing but themselves.
+
+    The rows stand in one order: a limit that an edit adds stands last in a replay, in its column in a campaign.
+    """
+    if model is None:
+        return None
+    return replace(model, measures={}, rows=tuple(sorted(model.rows, key=lambda row: (row.on, row.side))))
 
 
 def test_a_moisture_reaches_all_other_columns() -> None:
