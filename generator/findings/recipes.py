@@ -39,6 +39,10 @@ from generator.geometry.program import Bound, Optimum, Program, Vector
 from generator.intake.records import Limit
 
 
+class NoSharesError(ValueError):
+    """No shares meet what is asked of them."""
+
+
 @dataclass(frozen=True, slots=True)
 class Staged:
     """The end of a lexicographic search: the point, and each stage's optimum in turn."""
@@ -233,7 +237,7 @@ def ask_best_shares(
     """Shares in the order's amount, within the house rules, best by each objective in turn.
 
     Ties by file order.  ``width`` columns in all: those beyond the lots are ≥ 0 and stand in ``extra``
-    rows only; ``rows`` stand for the model's own; ``on_widest`` as in ``house``.  ValueError if no shares
+    rows only; ``rows`` stand for the model's own; ``on_widest`` as in ``house``.  NoSharesError if no shares
     meet the limits and rules in that amount.
     """
     n = len(model.lots)
@@ -256,7 +260,7 @@ def ask_best_shares(
     guide = Guide(share_program(model, rows, (ZERO,) * (n + more), upper=upper, extra=extra), aims)
     found = yield from ask_best_within(model, ask, guide=guide, on_widest=on_widest)
     if found is None:
-        raise ValueError(f"no shares meet the limits of order {model.order.name} in its amount")
+        raise NoSharesError(f"no shares meet the limits of order {model.order.name} in its amount")
     return Best(found.answer, found.branch.model, not found.branch.path)
 
 

@@ -11,7 +11,7 @@ from generator.findings.house import Offer, ask_best_within
 from generator.findings.measures import Measure, blend_value, own_value, reports, stated
 from generator.findings.model import OrderModel, Row
 from generator.findings.programs import ONE, ZERO
-from generator.findings.recipes import ask_best_shares
+from generator.findings.recipes import NoSharesError, ask_best_shares
 from generator.findings.records import Nearest, WantedLot
 from generator.findings.room import Scales, weight_of_scale
 from generator.findings.values import Table
@@ -34,10 +34,11 @@ WHOLES = {
 
 def ask_nearest_blend(
     model: OrderModel, table: Table, measures: Mapping[str, Measure], scales: Scales
-) -> Asking[Nearest]:
+) -> Asking[Nearest | None]:
     """The blend that breaks the limits least: Σ row excess / (scale × mean carrier), exact limits too.
 
-    Stock is aside.  Of equal ones, the one that takes the lots in file order.
+    Stock is aside.  Of equal ones, the one that takes the lots in file order.  None where the share bounds and
+    house rules admit no blend at all, whatever its values.
     """
     n = len(model.lots)
     sides = [(row, scale, sign) for row, scale in zip(model.rows, scales.by_row, strict=True) for sign in _signs(row)]
@@ -51,7 +52,10 @@ def ask_nearest_blend(
     excess = (*((ZERO,) * n), *((ONE,) * len(sides)))
     # Stock is aside: the counter-offer is about composition.
     freed = replace(model, rows=(), stock=(None,) * n)
-    best = yield from ask_best_shares(freed, [excess], extra=extra, width=width)
+    try:
+        best = yield from ask_best_shares(freed, [excess], extra=extra, width=width)
+    except NoSharesError:
+        return None
     shares = {lot: x for lot, x in zip(model.lots, best.staged.x, strict=False) if x}
     names = dict(zip(model.lots, model.names, strict=True))
     values = {name: blend_value(measure, table, model.lots, shares) for name, measure in measures.items()}

@@ -168,3 +168,11 @@ def test_an_imitation_that_would_join_kept_apart_lots_is_not_shown() -> None:
     findings = answers(assays, "order,N\n1,>= 15\n", '[house]\nkeep_apart = [["A", "B"]]\n')
     middle = findings.lots[2]
     assert (middle.role, middle.imitated_by) == ("inner", None)
+
+
+@pytest.mark.parametrize("limit, verdict", [("10.4..10.6", "barred"), (">= 30", "unreachable")])
+def test_a_forced_lot_that_no_rule_lets_fill_an_order_leaves_no_nearest_blend(limit: str, verdict: str) -> None:
+    """One lot at most, and one that must be in but may not fill the order: no blend at all, and that is an answer."""
+    assays = "lot,cost,min share,max share,N\nA,1,,,16\nB,2,5,60,10\nC,3,,,5\n"
+    order = only_order(answers(assays, f"order,N\n1,{limit}\n", "[house]\nmax_lots = 1\n"))
+    assert (order.verdict, order.nearest, order.room) == (verdict, None, None)
