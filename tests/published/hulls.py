@@ -33,7 +33,7 @@ def _polytope(points: list[tuple[int, ...]], volume: float, facets: int) -> Hull
     axes = [f"c{axis}" for axis in range(len(points[0]))]
     rows = [f"{number},{','.join(map(str, point))}" for number, point in enumerate(points)]
     return HullCase(
-        source="Ziegler (1995), Lectures on Polytopes; Coxeter, Regular Polytopes",
+        source="Coxeter, Regular Polytopes; Ziegler (1995), Graduate Texts in Mathematics 152",
         status=MEMORY,
         assays="\n".join([f"lot,{','.join(axes)}", *rows, ""]),
         targets=f"order,{','.join(axes)}\no{',<= 1' * len(axes)}\n",
