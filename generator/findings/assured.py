@@ -97,7 +97,7 @@ def _ask_tried_within(
     tried: dict[Box, bool] = {}
     best: tuple[Offer[T], Branch] | None = None
     for _ in range(MOST_TRIED):
-        boxes = yield from ask_open_boxes(Guide(_with_rows(program, tuple(tangents)), aims), model.rules, None)
+        boxes = yield from ask_open_boxes(Guide(program.at_most(tuple(tangents), ZERO), aims), model.rules, None)
         if boxes is None:
             break
         untried = [box for box in boxes if box not in tried]
@@ -117,19 +117,9 @@ def _ask_tried_within(
     return (yield from ask_best_within(model, lambda branch: ask_nothing(attempt(branch).offer)))
 
 
-def _with_rows(program: Program, rows: Sequence[Vector]) -> Program:
-    """The program with further rows ≤ 0."""
-    return replace(
-        program,
-        rows=(*program.rows, *rows),
-        row_low=(*program.row_low, *((None,) * len(rows))),
-        row_high=(*program.row_high, *((ZERO,) * len(rows))),
-    )
-
-
 def _sided_program(model: OrderModel, rows: Sequence[UncertainRow], chances: Sequence[Chance]) -> Program:
     """Least cost over what all chances ask on their means."""
-    return _with_rows(_certain_program(model, rows), [side for chance in chances for side in chance.sides])
+    return _certain_program(model, rows).at_most([side for chance in chances for side in chance.sides], ZERO)
 
 
 def _held(

@@ -199,7 +199,7 @@ def _along(model: OrderModel, path: Sequence[Box]) -> Branch:
     named = {lots: name for pair in model.rules.apart for lots, name in pair.sides()}
     for box in path:
         for i in sorted(box.inside - before.inside):
-            branch = branch.with_in(i, model.rules.least[i], _words_in(model, i))
+            branch = branch.with_in(i, model.rules.least[i], _words_in(model.names[i], model.rules.least[i]))
         gone = box.out - before.out
         if gone and len(box.out) + len(box.inside) == len(model.names):
             alone = ", ".join(model.names[i] for i in sorted(box.inside))
@@ -211,9 +211,8 @@ def _along(model: OrderModel, path: Sequence[Box]) -> Branch:
     return branch
 
 
-def _words_in(model: OrderModel, lot: int) -> str:
-    least = model.rules.least[lot]
-    return f"with {model.names[lot]}" if least is None else f"{model.names[lot]} at least {float(least * 100):g} %"
+def _words_in(name: str, least: Fraction | None) -> str:
+    return f"with {name}" if least is None else f"{name} at least {float(least * 100):g} %"
 
 
 def split(branch: Branch, rules: Rules, shares: Sequence[Fraction]) -> list[Branch]:
@@ -232,10 +231,9 @@ def split(branch: Branch, rules: Rules, shares: Sequence[Fraction]) -> list[Bran
     for i in sorted(used):
         least = rules.least[i]
         if least is not None and shares[i] < least:
-            percent = f"{float(least * 100):g} %"
             return [
                 branch.with_out(frozenset([i]), f"without {names[i]}"),
-                _closed_to_others(branch.with_in(i, least, f"{names[i]} at least {percent}"), rules),
+                _closed_to_others(branch.with_in(i, least, _words_in(names[i], least)), rules),
             ]
     if rules.max_lots is not None and len(used) > rules.max_lots:
         return _halves_by_count(branch, rules, used, shares)

@@ -13,10 +13,9 @@ from fractions import Fraction
 
 from generator.findings.ask import Asking, ask_all_best
 from generator.findings.house_rules import Rules
+from generator.findings.programs import ZERO
 from generator.geometry.choice import Box, Choice, Left
-from generator.geometry.program import Bound, Program, Unbounded, Vector
-
-ZERO = Fraction(0)
+from generator.geometry.program import Program, Unbounded, Vector
 
 #: Boxes searched before every set of lots is gone through instead, and those after which a question is given up.
 FIRST, MOST = 400, 8_000
@@ -123,5 +122,4 @@ def _ask_values(choice: Choice, boxes: Sequence[Box]) -> Asking[list[Fraction | 
 def _held_at(program: Program, aim: Vector, value: Fraction) -> Program:
     """The program with the aim at most that value."""
     row = (*aim, *((ZERO,) * (len(program.cost) - len(aim))))
-    low: tuple[Bound, ...] = (*program.row_low, None)
-    return replace(program, rows=(*program.rows, row), row_low=low, row_high=(*program.row_high, value))
+    return program.at_most([row], value)

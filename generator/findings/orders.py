@@ -35,7 +35,7 @@ from generator.findings.worth import ask_lot_prices, ask_worths, has_all_costs
 from generator.geometry.asked import Point
 from generator.geometry.program import Program
 from generator.intake.records import Campaign, Order
-from generator.problems import Problem
+from generator.problems import Problem, Severity
 
 MET = ("makeable", "edge")
 LOST = ("unreachable", "barred")
@@ -207,24 +207,23 @@ def _ask_lifted(desk: Desk, model: OrderModel) -> Asking[tuple[Verdict, float | 
 
 
 def _undecided(order: Order, undecided: UndecidedError) -> Problem:
-    return Problem(
-        file=order.place.file,
-        row=order.place.row,
-        found=order.name,
-        message=f"the house rules leave too many ways to decide this order ({undecided})",
-        remedy="raise max_lots, lower least_if_used, or name the order's lots",
-        severity="drops",
-    )
+    remedy = "raise max_lots, lower least_if_used, or name the order's lots"
+    return _too_many_ways(order, f"this order ({undecided})", remedy, "drops")
 
 
 def _left_out(order: Order, part: str) -> Problem:
+    what = f"{part} of this order, which is left out"
+    return _too_many_ways(order, what, "raise max_lots, or name the order's lots", "note")
+
+
+def _too_many_ways(order: Order, what: str, remedy: str, severity: Severity) -> Problem:
     return Problem(
         file=order.place.file,
         row=order.place.row,
         found=order.name,
-        message=f"the house rules leave too many ways to decide {part} of this order, which is left out",
-        remedy="raise max_lots, or name the order's lots",
-        severity="note",
+        message=f"the house rules leave too many ways to decide {what}",
+        remedy=remedy,
+        severity=severity,
     )
 
 

@@ -87,7 +87,7 @@ def assured(
         raise ValueError(f"a probability from 0.5 up to, not including, 1 is needed, found {wanted}")
     if any(low is None or low < 0 for low in program.lower):
         raise ValueError("columns must be ≥ 0")
-    linear = _with_rows(program, [side for chance in chances for side in chance.sides])
+    linear = program.at_most([side for chance in chances for side in chance.sides], _ZERO)
     if plain is None:
         first = decide(linear)
         if isinstance(first, Infeasible):
@@ -114,7 +114,7 @@ def surest(program: Program, chances: Sequence[Chance], precision: float = 1e-6)
     not, or where more than 1 − 10⁻⁹ can be had).
     """
     linear = replace(
-        _with_rows(program, [side for chance in chances for side in chance.sides]), cost=(_ZERO,) * len(program.cost)
+        program.at_most([side for chance in chances for side in chance.sides], _ZERO), cost=(_ZERO,) * len(program.cost)
     )
     first = decide(linear)
     if not isinstance(first, Optimum):
@@ -142,17 +142,6 @@ def surest(program: Program, chances: Sequence[Chance], precision: float = 1e-6)
 def _common(chances: Sequence[Chance], x: Vector) -> float:
     """The quantile of the least probability."""
     return min(_SURE, float(ndtri(min(probability(chance, x) for chance in chances))))
-
-
-def _with_rows(program: Program, rows: Sequence[Vector]) -> Program:
-    """The program with further rows ≤ 0."""
-    more = len(rows)
-    return replace(
-        program,
-        rows=(*program.rows, *rows),
-        row_low=(*program.row_low, *(None,) * more),
-        row_high=(*program.row_high, *(_ZERO,) * more),
-    )
 
 
 def _all_hold(chances: Sequence[Chance], x: Vector, wanted: float) -> bool:

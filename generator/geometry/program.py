@@ -14,7 +14,7 @@ bound that holds row k.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from fractions import Fraction
 
 Bound = Fraction | None
@@ -45,6 +45,15 @@ class Program:
             raise ValueError(f"{n} columns, but {len(self.lower)} lower and {len(self.upper)} upper bounds")
         if any(len(row) != n for row in self.rows):
             raise ValueError(f"a row has not {n} entries")
+
+    def at_most(self, rows: Sequence[Vector], top: Fraction) -> Program:
+        """The program with further rows (n entries each) that are at most ``top``."""
+        return replace(
+            self,
+            rows=(*self.rows, *rows),
+            row_low=(*self.row_low, *(None,) * len(rows)),
+            row_high=(*self.row_high, *(top,) * len(rows)),
+        )
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
